@@ -1,0 +1,1 @@
+"""Definitions of parts: loading, checking, packages and pin maps; knows no rig."""

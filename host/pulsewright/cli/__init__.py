@@ -1,0 +1,1 @@
+"""The commands: they print, they never compute."""

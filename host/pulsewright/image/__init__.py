@@ -1,0 +1,1 @@
+"""Image files: formats, shaping, checksums, comparing."""

@@ -1,0 +1,1 @@
+"""Identify, read, blank check, erase, burn, verify; the records they leave."""

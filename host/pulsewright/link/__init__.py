@@ -1,0 +1,1 @@
+"""Transports and session: the only code that talks to a rig."""

@@ -1,0 +1,1 @@
+"""What a person reads afterwards: pinout, timing diagram, record page, label."""

@@ -1,0 +1,1 @@
+"""The rig as data: rig file, calibration, rail arithmetic."""

@@ -1,0 +1,1 @@
+"""The virtual rig: reference interpreter, bench and the waveform judge."""

@@ -1,0 +1,1 @@
+"""Chip models, their limits typed by hand from data sheets, never from a definition."""

@@ -1,0 +1,1 @@
+"""Tables made from firmware/wire.toml; encoding and decoding of frames and ops."""
