@@ -1,0 +1,235 @@
+"""What a definition file says, as plain values: no reading, no checking, no rig.
+
+Loading (load.py) and checking (check.py) make these; the compiler and the proof read them. Times are integers of
+picoseconds, voltages of millivolts, currents of microamperes. Every piece carries the place in the file it came from.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+from pulsewright.errors import Where
+
+PACKAGE_PINS = {"DIP-24": 24, "DIP-28": 28, "DIP-32": 32, "DIP-40": 40}
+
+
+@dataclass(frozen=True)
+class SupplyStep:
+    """A named voltage of a supply, e.g. `VPP.program`; a source without limits gives typ ±5 % (common practice)."""
+
+    name: str  # "VPP.program"
+    typ_mv: int
+    min_mv: int
+    max_mv: int
+    limits_known: bool = True
+    current_ua: int | None = None  # what the part may draw; None: the source does not say
+    settle_ps: int = 0  # wait after the supply is good
+    source: str = ""  # "" = the chip's own source; "from memory" counts for H10
+    where: Where = field(default_factory=Where)
+
+    @property
+    def supply(self) -> str:
+        """The supply's name: "VPP" of "VPP.program"."""
+        return self.name.split(".", 1)[0]
+
+
+@dataclass(frozen=True)
+class Maximum:
+    """An absolute maximum of a pin: `mv`, or `mv` above whatever VCC is when `above_vcc`."""
+
+    mv: int
+    above_vcc: bool = False
+    source: str = ""
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class Window:
+    """A timing parameter; a limit the source does not give is None."""
+
+    name: str
+    min_ps: int | None = None
+    typ_ps: int | None = None
+    max_ps: int | None = None
+    source: str = ""
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class Mode:
+    """A row of the mode table.
+
+    `levels`: by pin role or pin alias ("CE", "OE", "VPP", "A9", "A" for all other address pins): "L", "H", "X", "Z", a
+    supply step ("VPP.program"), or "VCC" (whatever VCC is). `VCC` always names a step. Address pins not named carry the
+    address. `data`: "in", "out", "Z", or the constant the rig drives.
+    """
+
+    name: str
+    levels: Mapping[str, str]
+    vcc: str  # a step of VCC: "VCC.read"
+    data: str | int
+    access: str = ""  # timing parameter that bounds "D valid after the mode or the address changed"; "" = tACC, tCE, tOE
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class IdCell:
+    """One ID byte: read at word address `at`, it `is_` this; `what` says which."""
+
+    at: int
+    is_: int
+    what: str = ""
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class MakerRow:
+    """A maker's ID (several alternatives are allowed) and the leaves that differ from the rest of the file."""
+
+    maker: str
+    ids: tuple[tuple[IdCell, ...], ...] = ()
+    overrides: Mapping[str, object] = field(default_factory=dict)  # dotted key -> raw TOML value
+    source: str = ""
+    where: Where = field(default_factory=Where)
+
+
+# ---- the algorithm: a small vocabulary of steps -------------------------------------------------
+
+
+@dataclass(frozen=True)
+class ModeStep:
+    """{ mode = "program", D = "image" }: put the pins in a mode; `data` "image", a constant, or None (as the mode says)."""
+
+    mode: str
+    data: str | int | None = None
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class WaitStep:
+    """{ wait = "tAS" } or { wait = "2 us" }: at least this long; `timing` is the parameter's name or ""."""
+
+    timing: str
+    ps: int
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class PulseStep:
+    """{ pulse = "CE", to = "L", time = "tPW" }: from the pin's idle level to `to` for the parameter's typ, and back."""
+
+    pin: str
+    to: str  # "L" or "H"
+    timing: str  # name of a Window with min and max
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class ExpectStep:
+    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: sample D and compare; ends the repeat around it when equal."""
+
+    value: str | int
+    mask: int = 0xFF
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class EveryWord:
+    """until = { every = "word", mode = "erase_verify", is = 0xFF }: the whole range is read in `mode` and compared."""
+
+    mode: str
+    is_: int
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class RepeatStep:
+    """{ repeat = [steps], max = 25, until = "match" | { every = "word", ... } }: up to `max` times, then it has failed."""
+
+    steps: tuple[Step, ...]
+    max: int
+    until: EveryWord | None  # None: until the `expect` inside matches
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class EachStep:
+    """{ each = "word", steps = [...] }: once for each word of the image that is to be written."""
+
+    unit: str  # "word" (others: "page", "sector")
+    steps: tuple[Step, ...]
+    where: Where = field(default_factory=Where)
+
+
+Step = ModeStep | WaitStep | PulseStep | ExpectStep | RepeatStep | EachStep
+
+
+@dataclass(frozen=True)
+class Method:
+    """[program] or [erase]: which way bits change, the unit, the steps, and what to do at the end whatever happened."""
+
+    bits: str  # "1 to 0" | "both" | "to blank"
+    unit: str  # "word" | "page" | "sector" | "chip"
+    steps: tuple[Step, ...]
+    finally_: tuple[Step, ...] = ()
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class VerifyPass:
+    """A margin pass: the whole chip read in `mode` (a step of VCC of the read kind)."""
+
+    mode: str
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class Definition:
+    """One part for one maker row (or for the tightest over all rows), everything resolved."""
+
+    path: str
+    name: str
+    about: str
+    words: int
+    width: int  # 8 or 16
+    package: str
+    source: str
+    blank: int  # a word in the erased state
+    erase_kind: str  # "electrical" | "uv" | "none"
+    pins: Mapping[str, tuple[int, ...]]  # role -> package pins; A and D from bit 0 up
+    supplies: Mapping[str, SupplyStep]  # by full name
+    maxima: Mapping[str, Maximum]  # by role or alias; "other" for the rest
+    modes: Mapping[str, Mode]
+    timing: Mapping[str, Window]
+    identify: str  # "mode" (A9 level) | "command" | "none"
+    identify_mode: str  # name of the mode when identify == "mode"
+    makers: tuple[MakerRow, ...]
+    row: MakerRow | None  # the row this is resolved for; None: tightest over all
+    program: Method | None
+    erase: Method | None
+    verify: tuple[VerifyPass, ...]
+    notes: tuple[str, ...] = ()
+    digest: str = ""  # sha-256 of the resolved definition (file, methods, row), hex
+    raw: Mapping[str, object] = field(default_factory=dict)  # the resolved TOML tree
+
+    def pin_of(self, name: str) -> tuple[int, ...]:
+        """Package pins of a role ("CE") or of an alias of one address or data bit ("A9", "D0"); () if there is none."""
+        if name in self.pins:
+            return self.pins[name]
+        if len(name) > 1 and name[0] in "AD" and name[1:].isdigit():
+            bits = self.pins.get(name[0], ())
+            index = int(name[1:])
+            return (bits[index],) if index < len(bits) else ()
+        return ()
+
+    def role_of(self, pin: int) -> str:
+        """The role of a package pin as text: "A9", "D0", "CE", "VCC"; "" for a pin that is not named."""
+        for role, pins in self.pins.items():
+            if pin in pins:
+                return f"{role}{pins.index(pin)}" if role in ("A", "D") else role
+        return ""
+
+    def maximum_of(self, name: str) -> Maximum | None:
+        """The absolute maximum in force for a role or alias: its own, else `other`."""
+        return self.maxima.get(name) or self.maxima.get("other")
