@@ -1,1 +1,1 @@
-"""Image files: formats, shaping, checksums, comparing."""
+"""Images: the file formats, shaping to the chip, checksums, comparing. Knows no chip and no rig."""
