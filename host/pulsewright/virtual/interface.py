@@ -1,0 +1,126 @@
+"""The seams of the virtual rig: what a chip model is, what watches the pins.
+
+A chip model is the seat for strangers (`bench new --model FILE` loads a Python file that has `make_chip() -> ChipModel`),
+so this interface is small and fixed. Times `t` are ticks of 62.5 ns since the rig's start; levels are millivolts by
+package pin, index 0 unused, None for a pin that nothing drives.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from typing import Protocol
+
+Levels = Sequence[int | None]
+
+
+@dataclass(frozen=True)
+class PulseLimit:
+    """While the raised `pins` stand in their windows, `pin` may be at its active level only for min..max ticks."""
+
+    name: str
+    pin: int
+    active_low: bool
+    raised: Mapping[int, tuple[int, int]]  # pin -> (min_mv, max_mv) that mark this kind of pulse
+    min_ticks: int
+    max_ticks: int
+    setup_ticks: Mapping[str, int]  # "address", "data", "raised", "vcc" -> least time before the pulse
+    hold_ticks: Mapping[str, int]  # "address", "data", "raised" -> least time after it
+    vcc_mv: tuple[int, int]
+    data: int | None = None  # what must stand on D, None: anything driven
+    low_pins: tuple[int, ...] = ()  # pins that must be low meanwhile
+    source: str = ""
+
+
+@dataclass(frozen=True)
+class Limits:
+    """What the waveform judge watches for one part; typed by hand from a data sheet, never from a definition."""
+
+    package: str
+    maxima_mv: Mapping[int, int]  # absolute maximum by pin; pin 0: all others
+    minimum_mv: int  # lowest level of any pin, e.g. -600
+    vcc_pin: int
+    gnd_pins: tuple[int, ...]
+    address_pins: tuple[int, ...]
+    data_pins: tuple[int, ...]
+    enable_pins: tuple[int, ...]  # all low: outputs on (CE, OE)
+    raised_pins: tuple[int, ...]  # pins that may ever stand above VCC
+    pulses: tuple[PulseLimit, ...]
+    access_ticks: int  # address or enable to data valid, longest
+    float_ticks: int  # outputs off to D free, longest
+    rise_ticks: int  # least rise time of a raised pin
+    recovery_ticks: int  # raised pin gone to the next enable
+    vcc_read_mv: tuple[int, int]
+    vcc_steps_mv: tuple[tuple[int, int], ...] = ()  # every window in which VCC may be used
+    identify_mv: tuple[int, int] | None = None  # window of the identify level
+    identify_pin: int | None = None
+    source: str = ""
+
+
+class ChipModel(Protocol):
+    """A modelled chip. `outputs` are the pins it can drive, in the order of the bits of `drive`."""
+
+    name: str
+    pins: int
+    outputs: tuple[int, ...]
+    limits: Limits
+    cells: bytearray  # width 8: one byte a word; width 16: two, low byte first
+    erased_word: int
+
+    def pins_changed(self, t: int, levels: Levels) -> None:
+        """Levels at the pins are now these (after one group of edges); `levels` may not be kept or changed."""
+
+    def drive(self, t: int) -> tuple[int, int]:
+        """(mask, bits) over `outputs`: which it drives now, and to what; what is not valid yet is wrong on purpose."""
+
+    def draw_ua(self, t: int, pin: int) -> int:
+        """Current into a supply or raised pin now, microamperes."""
+
+    def state(self) -> dict[str, object]:
+        """What a bench file keeps besides the cells: JSON values (damage, stress, counters)."""
+
+    def restore(self, state: Mapping[str, object]) -> None:
+        """The reverse of `state`."""
+
+
+@dataclass
+class Violation:
+    """Something a data sheet forbids, seen at the pins."""
+
+    rule: str
+    pin: int
+    at_us: int
+    wanted: str
+    got: str
+
+
+class Watcher(Protocol):
+    """Something that sees every group of edges at the chip's pins."""
+
+    def edges(self, t: int, levels: Levels, changed: Sequence[int], driven: Sequence[int] | None = None) -> None:
+        """Pins `changed` (package pins) have new levels at t; a ramp is two calls, its begin and its end."""
+
+    def sampled(self, t: int) -> None:
+        """The rig samples D at t and means what it reads."""
+
+    def rig_drives(self, t: int, driving: bool) -> None:
+        """The rig begins or ends to drive D."""
+
+
+@dataclass
+class PinHistory:
+    """What a pin has seen."""
+
+    max_mv: int = 0
+    min_mv: int = 0
+
+
+@dataclass
+class BenchReport:
+    """What `bench show --json` tells of the pins."""
+
+    pins: dict[int, PinHistory] = field(default_factory=dict)
+    violations: list[Violation] = field(default_factory=list)
+    stressed: list[str] = field(default_factory=list)
+    probe_wrote: list[str] = field(default_factory=list)
+    damaged: bool = False
