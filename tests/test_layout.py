@@ -14,7 +14,7 @@ AT_THE_TOP = {"README.md", "DEVELOPERS.md", "pyproject.toml", "host", "firmware"
 
 
 def kept_files(*folders: str) -> list[Path]:
-    """Every file that git keeps, or would keep, under the folders, as paths from the top; without those just deleted."""
+    """Every file under the folders that git keeps, or would keep, as paths from the top; without those just deleted."""
     command = ["git", "-C", str(REPOSITORY), "ls-files", "-z", "--cached", "--others", "--exclude-standard", *folders]
     listed = subprocess.run(command, capture_output=True, text=True, check=True).stdout
     return sorted({Path(name) for name in listed.split("\0") if name and (REPOSITORY / name).is_file()})
