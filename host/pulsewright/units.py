@@ -1,7 +1,7 @@
 """Volts, amperes, times and addresses: parse and print, exactly.
 
-Inside the program a voltage is an integer of millivolts (`_mv`), a current of microamperes (`_ua`), a time an integer of
-picoseconds (`_ps`) where it comes from a data sheet and an integer of 62.5 ns ticks (`_ticks`) where it goes on the wire.
+Inside the program a voltage is an integer of millivolts (`_mv`), a current of microamperes (`_ua`), a time an integer
+of picoseconds (`_ps`) where it comes from a data sheet and of 62.5 ns ticks (`_ticks`) where it goes on the wire.
 """
 
 from __future__ import annotations

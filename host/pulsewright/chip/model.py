@@ -69,7 +69,7 @@ class Mode:
     levels: Mapping[str, str]
     vcc: str  # a step of VCC: "VCC.read"
     data: str | int
-    access: str = ""  # timing parameter that bounds "D valid after the mode or the address changed"; "" = tACC, tCE, tOE
+    access: str = ""  # timing parameter that bounds "D valid after mode or address changed"; "" = tACC, tCE, tOE
     where: Where = field(default_factory=Where)
 
 
@@ -99,7 +99,7 @@ class MakerRow:
 
 @dataclass(frozen=True)
 class ModeStep:
-    """{ mode = "program", D = "image" }: put the pins in a mode; `data` "image", a constant, or None (as the mode says)."""
+    """{ mode = "program", D = "image" }: pins into a mode; `data` "image", a constant, or None (as the mode says)."""
 
     mode: str
     data: str | int | None = None
@@ -127,7 +127,7 @@ class PulseStep:
 
 @dataclass(frozen=True)
 class ExpectStep:
-    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: sample D and compare; ends the repeat around it when equal."""
+    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: sample and compare D; ends the repeat around it if equal."""
 
     value: str | int
     mask: int = 0xFF
@@ -145,7 +145,7 @@ class EveryWord:
 
 @dataclass(frozen=True)
 class RepeatStep:
-    """{ repeat = [steps], max = 25, until = "match" | { every = "word", ... } }: up to `max` times, then it has failed."""
+    """{ repeat = [steps], max = 25, until = "match" | { every = "word", ... } }: up to `max` times, then failed."""
 
     steps: tuple[Step, ...]
     max: int

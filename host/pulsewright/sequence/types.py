@@ -10,7 +10,7 @@ from pulsewright.wire.permit import Permit
 
 @dataclass(frozen=True)
 class Origin:
-    """Where an op comes from: its byte offset, what it is for, and the definition's line (empty for the frame of rules).
+    """Where an op comes from: its byte offset, what it is for, the definition's line (empty for the frame of rules).
 
     `part` groups ops for messages: "seating", "gate", "power", "work".
     """
