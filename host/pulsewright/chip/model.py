@@ -127,7 +127,7 @@ class PulseStep:
 
 @dataclass(frozen=True)
 class ExpectStep:
-    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: sample and compare D; ends the repeat around it if equal."""
+    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: compare D; if equal, ends the repeat around it."""
 
     value: str | int
     mask: int = 0xFF

@@ -1,7 +1,7 @@
 """The seams of the virtual rig: what a chip model is, what watches the pins.
 
-A chip model is the seat for strangers (`bench new --model FILE` loads a Python file with `make_chip() -> ChipModel`), so
-this interface is small and fixed. Times `t` are ticks of 62.5 ns since the rig's start; levels are millivolts by
+A chip model is the seat for strangers (`bench new --model FILE` loads a Python file with `make_chip() -> ChipModel`),
+so this interface is small and fixed. Times `t` are ticks of 62.5 ns since the rig's start; levels are millivolts by
 package pin, index 0 unused, None for a pin that nothing drives.
 """
 
