@@ -11,6 +11,8 @@ git ls-files -z | tar --null --files-from=- --create --file=- | tar --extract --
 awk '/^```/ { if (inside) exit; inside = ($0 == "```sh"); next } inside' README.md >"$work/command"
 grep -q 'pulsewright burn' "$work/command" || { echo "README.md: its first block burns nothing" >&2; exit 1; }
 cd "$work/copy"
-unset PYTHONPATH VIRTUAL_ENV XDG_DATA_HOME XDG_CONFIG_HOME XDG_STATE_HOME XDG_CACHE_HOME
-HOME=$work/home PIP_DISABLE_PIP_VERSION_CHECK=1 bash -euo pipefail "$work/command" </dev/null
+unset PYTHONPATH VIRTUAL_ENV
+# Records go to a home of their own; HOME itself stays, pip may need its settings.
+export XDG_DATA_HOME=$work/home XDG_STATE_HOME=$work/home PIP_DISABLE_PIP_VERSION_CHECK=1
+bash -euo pipefail "$work/command" </dev/null
 echo "README's first command: $((SECONDS - begun)) s"

@@ -9,8 +9,7 @@ begun=$SECONDS
 work=$(mktemp -d)
 trap 'rm -rf "$work"' EXIT
 unset PYTHONPATH VIRTUAL_ENV
-export HOME=$work/home PIP_DISABLE_PIP_VERSION_CHECK=1
-unset XDG_DATA_HOME XDG_CONFIG_HOME XDG_STATE_HOME XDG_CACHE_HOME
+export PIP_DISABLE_PIP_VERSION_CHECK=1
 mkdir -p "$work/home" "$work/elsewhere"
 
 /usr/bin/python3 -m venv "$work/env"
@@ -32,6 +31,8 @@ print(f"the wheel carries all {len(wanted)} files")
 PYTHON
 
 cd "$work/elsewhere"
+export HOME=$work/home # records go there; pip above may need the real one's settings
+unset XDG_DATA_HOME XDG_CONFIG_HOME XDG_STATE_HOME XDG_CACHE_HOME
 found=$("$work/env/bin/python" -c 'from pulsewright.chip.shipped import shipped_folder; print(shipped_folder())')
 case $found in
     "$work"/env/*) ;;
