@@ -74,7 +74,7 @@ def test_a_failed_write_leaves_the_old_file(
 
 def test_a_missing_folder_is_a_plain_error(tmp_path: Path) -> None:
     """A folder that is not there is named, with exit 2."""
-    with pytest.raises(FileMistake, match="cannot write .*nowhere/dump.bin: No such file or directory") as caught:
+    with pytest.raises(FileMistake, match=r"cannot write .*nowhere/dump\.bin: No such file or directory") as caught:
         write_whole(tmp_path / "nowhere" / "dump.bin", b"1")
     assert caught.value.exit_code == 2
 
@@ -102,5 +102,5 @@ def test_a_pipe_is_written_to_and_stays_a_pipe(tmp_path: Path) -> None:
 
 def test_a_missing_file_is_a_plain_error(tmp_path: Path) -> None:
     """A file that is not there is named when it is read."""
-    with pytest.raises(FileMistake, match="cannot read .*none.bin: No such file or directory"):
+    with pytest.raises(FileMistake, match=r"cannot read .*none\.bin: No such file or directory"):
         read_whole(tmp_path / "none.bin")

@@ -80,8 +80,10 @@ WORKED = {
         {0x30: "902BB4FD"},
     ),
     "classic sample of 64 bytes, from memory": (
-        ":10010000214601360121470136007EFE09D2190140\n:100110002146017E17C20001FF5F16002148011928\n"
-        ":10012000194E79234623965778239EDA3F01B2CAA7\n:100130003F0156702B5E712B722B732146013421C7\n",
+        (
+            ":10010000214601360121470136007EFE09D2190140\n:100110002146017E17C20001FF5F16002148011928\n"
+            ":10012000194E79234623965778239EDA3F01B2CAA7\n:100130003F0156702B5E712B722B732146013421C7\n"
+        ),
         {
             0x100: "214601360121470136007EFE09D219012146017E17C20001FF5F160021480119"
             "194E79234623965778239EDA3F01B2CA3F0156702B5E712B722B732146013421"
@@ -106,7 +108,14 @@ def test_worked_records_give_their_bytes(records: str, wanted: dict[int, str]) -
         ":04003000902BB4FD60\n:0000000000\n:00000001FF\n",
         ":04003000902BB4FD60\n:00003001CF\n",
     ],
-    ids=["crlf", "lower case", "blank lines", "end-of-text padding", "an empty data record", "start address at the end"],
+    ids=[
+        "crlf",
+        "lower case",
+        "blank lines",
+        "end-of-text padding",
+        "an empty data record",
+        "start address at the end",
+    ],
 )
 def test_harmless_variants_are_taken(text: str) -> None:
     """Line ends, case, blank lines, padding and unused address fields do not matter."""

@@ -218,9 +218,7 @@ def _short(record: str) -> str:
     return repr(record if len(record) <= 24 else record[:24] + "...")
 
 
-def _mistake(
-    state: _State, line: int, key: str, what: str, *, wanted: str, got: str, hint: str = ""
-) -> ImageMistake:
+def _mistake(state: _State, line: int, key: str, what: str, *, wanted: str, got: str, hint: str = "") -> ImageMistake:
     return ImageMistake(what, where=Where(state.name, line, key), wanted=wanted, got=got, hint=hint)
 
 

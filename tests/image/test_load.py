@@ -1,0 +1,110 @@
+"""The format of an image file is told from its content, so that a damaged HEX file is never burnt as raw bytes."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from pulsewright.errors import FileMistake, ImageMistake, UsageMistake
+from pulsewright.image.intel_hex import write_intel_hex
+from pulsewright.image.load import INTEL_HEX, RAW, load, save, tell_format
+from pulsewright.image.memory import Segment, image_of
+
+RECORDS = b":04003000902BB4FD60\n:00000001FF\n"
+
+
+@pytest.mark.parametrize(
+    ("content", "name", "wanted"),
+    [
+        (RECORDS, "a.bin", INTEL_HEX),
+        (b" \r\n" + RECORDS, "a", INTEL_HEX),
+        (b"\xef\xbb\xbf" + RECORDS, "a.txt", INTEL_HEX),
+        (b":0400\xb030009", "a.hex", INTEL_HEX),
+        (b":04zz3000902BB4FD60\n", "a.bin", INTEL_HEX),
+        (b"04003000902BB4FD60\n", "a.HEX", INTEL_HEX),
+        (b"04003000902BB4FD60\n", "a.bin", RAW),
+        (b":\x00\x01\x02", "a.bin", RAW),
+        (b"\x3a0400\xff\x00", "a.bin", RAW),
+        (b"\x55\xaa\x01", "a.hex", RAW),
+        (b"\x00", "a.bin", RAW),
+        (b"S1 is not a record\n", "a.bin", RAW),
+    ],
+)
+def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) -> None:
+    """Records are HEX whatever the name; the name decides only about text that would be a damaged HEX file."""
+    assert tell_format(content, name) == wanted
+
+
+def test_s_records_are_not_burnt_as_text() -> None:
+    """A file of S-records is refused by that name (the record is a published one), not taken for raw bytes."""
+    with pytest.raises(ImageMistake, match="S-records"):
+        tell_format(b"S0030000FC\r\nS1090100010203040506E0\r\nS9030000FC\r\n", "a.s19")
+
+
+def test_a_hex_file_loads(tmp_path: Path) -> None:
+    """A HEX file gives its bytes at their addresses, and its name."""
+    (tmp_path / "a.hex").write_bytes(b"\xef\xbb\xbf" + RECORDS)
+    image = load(tmp_path / "a.hex")
+    assert image.segments == (Segment(0x30, bytes.fromhex("902BB4FD")),)
+    assert str(image.where(0x31)) == f"{tmp_path / 'a.hex'}:1"
+
+
+def test_a_raw_file_loads_from_address_0(tmp_path: Path) -> None:
+    """A raw file gives its bytes from address 0, every value kept."""
+    (tmp_path / "a.bin").write_bytes(bytes(range(256)))
+    assert load(str(tmp_path / "a.bin")).segments == (Segment(0, bytes(range(256))),)
+
+
+def test_a_named_format_wins(tmp_path: Path) -> None:
+    """A format the user names is not doubted."""
+    (tmp_path / "a.hex").write_bytes(RECORDS)
+    assert load(tmp_path / "a.hex", format=RAW).segments == (Segment(0, RECORDS),)
+    with pytest.raises(UsageMistake, match="not an image format"):
+        load(tmp_path / "a.hex", format="hex")
+
+
+@pytest.mark.parametrize("name", ["a.hex", "a.bin"])
+@pytest.mark.parametrize("content", [b"", b"\n\r\n ", b"\xef\xbb\xbf"])
+def test_an_empty_file_is_an_error(tmp_path: Path, name: str, content: bytes) -> None:
+    """An empty file is refused by that name, in either format."""
+    (tmp_path / name).write_bytes(content)
+    with pytest.raises(ImageMistake, match="image file is empty"):
+        load(tmp_path / name)
+
+
+def test_a_damaged_hex_file_names_its_line(tmp_path: Path) -> None:
+    """A flipped bit that makes a digit a stranger byte is reported where it stands."""
+    (tmp_path / "a.hex").write_bytes(RECORDS.replace(b"902B", b"9\xb02B"))
+    with pytest.raises(ImageMistake, match="no hex digit") as caught:
+        load(tmp_path / "a.hex")
+    assert str(caught.value.where) == f"{tmp_path / 'a.hex'}:1 column 11"
+
+
+def test_a_missing_file_is_a_plain_error(tmp_path: Path) -> None:
+    """A file that is not there is named."""
+    with pytest.raises(FileMistake, match="cannot read"):
+        load(tmp_path / "none.hex")
+
+
+@pytest.mark.parametrize("name", ["a.hex", "a.IHX"])
+def test_saving_by_a_hex_name_writes_hex(tmp_path: Path, name: str) -> None:
+    """A name that ends in .hex or .ihx gets Intel HEX, which begins at address 0."""
+    save(tmp_path / name, b"\x01")
+    assert (tmp_path / name).read_bytes() == b":0100000001FE\n:00000001FF\n"
+
+
+def test_saving_by_another_name_writes_raw(tmp_path: Path) -> None:
+    """Any other name gets the bytes as they are; a named format wins."""
+    save(tmp_path / "a.bin", b"\x01\x0d\x0a")
+    assert (tmp_path / "a.bin").read_bytes() == b"\x01\x0d\x0a"
+    save(tmp_path / "b.hex", b"\x01", format=RAW)
+    assert (tmp_path / "b.hex").read_bytes() == b"\x01"
+
+
+@given(st.binary(min_size=1, max_size=300))
+def test_hex_is_told_from_raw_whatever_the_bytes(data: bytes) -> None:
+    """HEX that was written from any bytes is told as HEX under any name."""
+    assert tell_format(write_intel_hex(image_of(data)).encode("ascii"), "a.bin") == INTEL_HEX
