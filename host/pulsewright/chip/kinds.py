@@ -267,7 +267,8 @@ class Table(Kind):
     others: Kind | None = None
     names: str = ""  # pattern of the other names
     what: str = "key"  # what a name in here is: key, table, mode, pin ...
-    wanted: str = ""  # what is wanted of a name, when no list of words says it
+    wanted: str = ""  # what is wanted of a name, when the keys alone do not say it
+    words: tuple[str, ...] = ()  # names to offer besides the keys, when one is misspelt
 
     def fits(self, value: object) -> bool:
         return isinstance(value, Mapping)
@@ -278,9 +279,11 @@ class Table(Kind):
             return _ABSENT
         cleaned: dict[str, object] = {}
         for name, one in value.items():
+            if one is None:
+                continue  # a parameter that was not given: told where it is wanted
             kind = self._kind_of(name)
             if kind is None:
-                close = nearest(name, self.keys)
+                close = nearest(name, (*self.keys, *self.words))
                 to.report((*path, name), f"unknown {self.what}", found=name, wanted=self._key_list(), nearest=close)
                 continue
             result = kind.examine(one, (*path, name), to)
@@ -340,8 +343,3 @@ class Tables(Kind):
 
     def json(self) -> dict[str, object]:
         return {"anyOf": [table.described() for table in self.by_key.values()]}
-
-
-def present(value: object) -> bool:
-    """Whether an examined value was right."""
-    return value is not _ABSENT

@@ -1,4 +1,4 @@
-"""Where in a TOML text each key stands: tomllib gives values but no lines, and a mistake without its line is hard to find.
+"""Where in a TOML text each key stands: tomllib gives values without lines, and a mistake wants its line.
 
 A key's path is a tuple of names and array indices: `("program", "steps", 0, "mode")`, printed `program.steps[0].mode`.
 The scanner trusts that the text is TOML (tomllib has read it before); on a text that is not, it stops early and keeps
@@ -10,6 +10,7 @@ from __future__ import annotations
 import re
 import tomllib
 from collections.abc import Mapping
+from contextlib import suppress
 from dataclasses import dataclass
 
 from pulsewright.errors import Where
@@ -168,10 +169,8 @@ class _Scanner:
 def scan(text: str) -> dict[KeyPath, int]:
     """The line (from 1) of every key, table and array element of a TOML text."""
     scanner = _Scanner(text)
-    try:
+    with suppress(_Lost, tomllib.TOMLDecodeError):  # not TOML: what was found so far is still right
         scanner.document()
-    except (_Lost, tomllib.TOMLDecodeError):
-        pass  # not TOML: what was found so far is still right
     return scanner.lines
 
 
@@ -216,6 +215,10 @@ class Places:
                 inside = (*mount.target, *path[len(mount.prefix) :])
                 if not mount.exact or inside in mount.source.lines:
                     return _nearest(mount.source, inside)
+        return self.main_where(path)
+
+    def main_where(self, path: KeyPath) -> Where:
+        """The place of a key in the definition file itself."""
         return _nearest(self.main, path)
 
 

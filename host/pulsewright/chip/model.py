@@ -42,6 +42,7 @@ class Maximum:
     above_vcc: bool = False
     source: str = ""
     where: Where = field(default_factory=Where)
+    min_mv: int | None = None  # deepest undershoot, where the sheet gives it
 
 
 @dataclass(frozen=True)

@@ -1,0 +1,268 @@
+"""From an examined tree to a `Definition`. What is missing or was wrong is left out: the checker has told of it, and
+`load` refuses such a file, so only the checker ever sees a definition with gaps.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import re
+from collections.abc import Iterable, Mapping
+from typing import Any
+
+from pulsewright import units
+from pulsewright.chip.lines import KeyPath
+from pulsewright.chip.model import (
+    Definition,
+    EachStep,
+    EveryWord,
+    ExpectStep,
+    IdCell,
+    MakerRow,
+    Maximum,
+    Method,
+    Mode,
+    ModeStep,
+    PulseStep,
+    RepeatStep,
+    Step,
+    SupplyStep,
+    VerifyPass,
+    WaitStep,
+    Window,
+)
+from pulsewright.chip.source import Tree, flattened, overrides_of
+
+_TOLERANCE_PERCENT = 5  # of a step whose source gives no limits (common practice)
+_MAXIMUM = re.compile(r"\s*(VCC)?\s*(?:([+-])?\s*(\d.*))?\Z")
+
+
+def five_percent_mv(typ_mv: int) -> tuple[int, int]:
+    """Lowest and highest whole millivolts inside typ ±5 %: never more than 5 % on either side."""
+    low = -(-typ_mv * (100 - _TOLERANCE_PERCENT) // 100)
+    high = typ_mv * (100 + _TOLERANCE_PERCENT) // 100
+    return low, high
+
+
+def build(tree: Tree) -> Definition:
+    """The definition an examined tree describes."""
+    plain = tree.plain
+    chip = plain.get("chip", {})
+    width = chip.get("width", 8)
+    identify = plain.get("identify", {})
+    rows = _rows(tree)
+    return Definition(
+        path=str(tree.parsed.path),
+        name=chip.get("name", ""),
+        about=chip.get("about", ""),
+        words=chip.get("words", 0),
+        width=width,
+        package=chip.get("package", ""),
+        source=chip.get("source", ""),
+        blank=chip.get("blank", (1 << width) - 1),
+        erase_kind=chip.get("erase", "electrical" if "erase" in plain else "none"),
+        pins={role: _pins(value) for role, value in plain.get("pins", {}).items()},
+        supplies=_supplies(tree),
+        maxima=_maxima(tree),
+        modes=_modes(tree),
+        timing=_timing(tree),
+        identify="none" if "kind" in identify else "mode",
+        identify_mode=identify.get("mode", ""),
+        makers=rows,
+        row=rows[tree.row] if tree.row is not None and tree.row < len(rows) else None,
+        program=_method(tree, "program"),
+        erase=_method(tree, "erase"),
+        verify=_passes(tree),
+        notes=tuple(note for note in chip.get("notes", ()) if note),
+        digest=digest_of(tree),
+        raw=tree.merged,
+    )
+
+
+def digest_of(tree: Tree) -> str:
+    """SHA-256 over canonical JSON of the resolved tree: values, sources, methods, all rows, and which row is chosen."""
+    content = {"row": tree.row, "tree": tree.merged}
+    text = json.dumps(content, sort_keys=True, separators=(",", ":"), ensure_ascii=False, default=str)
+    return hashlib.sha256(text.encode("utf-8")).hexdigest()
+
+
+def _pins(value: object) -> tuple[int, ...]:
+    if isinstance(value, list):
+        return tuple(pin for pin in value if isinstance(pin, int))
+    return (value,) if isinstance(value, int) else ()
+
+
+def _supplies(tree: Tree) -> dict[str, SupplyStep]:
+    steps = {}
+    for supply, table in tree.plain.get("supplies", {}).items():
+        for name, entry in table.items():
+            path = ("supplies", supply, name)
+            step = supply_step(f"{supply}.{name}", entry, tree, path) if isinstance(entry, Mapping) else None
+            if step is not None:
+                steps[step.name] = step
+    return steps
+
+
+def supply_step(name: str, entry: Mapping[str, str], tree: Tree, path: KeyPath) -> SupplyStep | None:
+    """One named voltage, None while its values do not say its window."""
+    unknown = "limits" in entry
+    if "typ" not in entry or (not unknown and not ("min" in entry and "max" in entry)):
+        return None
+    typ_mv = units.parse_mv(entry["typ"])
+    low, high = five_percent_mv(typ_mv) if unknown else (units.parse_mv(entry["min"]), units.parse_mv(entry["max"]))
+    return SupplyStep(
+        name=name,
+        typ_mv=typ_mv,
+        min_mv=low,
+        max_mv=high,
+        limits_known=not unknown,
+        current_ua=units.parse_ua(entry["current"]) if "current" in entry else None,
+        settle_ps=units.parse_ps(entry["settle"]) if "settle" in entry else 0,
+        source=tree.source_of(path),
+        where=tree.places.where(path),
+    )
+
+
+def parse_maximum(text: str) -> tuple[int, bool]:
+    """Millivolts of "14.5 V" or "VCC + 0.5 V", and whether they stand above VCC; UnitMistake otherwise."""
+    match = _MAXIMUM.match(text)
+    if match is None or not (match[1] or match[3]):
+        raise units.UnitMistake('a voltage such as "14.5 V" or "VCC + 0.5 V"')
+    mv = units.parse_mv(match[3]) if match[3] else 0
+    return (-mv if match[2] == "-" else mv), bool(match[1])
+
+
+def _maxima(tree: Tree) -> dict[str, Maximum]:
+    maxima = {}
+    for role, entry in tree.plain.get("maxima", {}).items():
+        path = ("maxima", role)
+        table = entry if isinstance(entry, Mapping) else {"max": entry}
+        if "max" not in table:
+            continue
+        mv, above_vcc = parse_maximum(table["max"])
+        low = units.parse_mv(table["min"]) if "min" in table else None
+        maxima[role] = Maximum(mv, above_vcc, tree.source_of(path), tree.places.where(path), min_mv=low)
+    return maxima
+
+
+def _modes(tree: Tree) -> dict[str, Mode]:
+    modes = {}
+    for name, entry in tree.plain.get("modes", {}).items():
+        if not isinstance(entry, Mapping) or "VCC" not in entry or "D" not in entry:
+            continue
+        levels = {role: level for role, level in entry.items() if role not in ("VCC", "D", "access", "from")}
+        access = entry.get("access", "")
+        modes[name] = Mode(name, levels, entry["VCC"], entry["D"], access, tree.places.where(("modes", name)))
+    return modes
+
+
+def _timing(tree: Tree) -> dict[str, Window]:
+    windows = {}
+    for name, entry in tree.plain.get("timing", {}).items():
+        if not isinstance(entry, Mapping):
+            continue
+        limits = {f"{key}_ps": units.parse_ps(entry[key]) for key in ("min", "typ", "max") if key in entry}
+        path = ("timing", name)
+        windows[name] = Window(name, **limits, source=tree.source_of(path), where=tree.places.where(path))
+    return windows
+
+
+def _rows(tree: Tree) -> tuple[MakerRow, ...]:
+    rows = []
+    for index, entry in enumerate(tree.plain.get("makers", ())):
+        path: KeyPath = ("makers", index)
+        if not isinstance(entry, Mapping):
+            rows.append(MakerRow("", where=tree.places.where(path)))
+            continue
+        listed = entry.get("id", [])
+        alternatives = [listed] if listed and all(isinstance(one, Mapping) for one in listed) else listed
+        nested = bool(listed) and alternatives is listed
+        ids = tuple(
+            _cells(cells, (*path, "id", number) if nested else (*path, "id"), tree)
+            for number, cells in enumerate(alternatives)
+            if isinstance(cells, list)
+        )
+        overrides = flattened(overrides_of(tree.parsed.tree["makers"][index]))
+        row = MakerRow(entry.get("maker", ""), ids, overrides, tree.source_of((*path, "id")), tree.places.where(path))
+        rows.append(row)
+    return tuple(rows)
+
+
+def _cells(cells: Iterable[Any], path: KeyPath, tree: Tree) -> tuple[IdCell, ...]:
+    return tuple(
+        IdCell(cell["at"], cell["is"], cell.get("what", ""), tree.places.where((*path, index)))
+        for index, cell in enumerate(cells)
+        if isinstance(cell, Mapping) and "at" in cell and "is" in cell
+    )
+
+
+def _passes(tree: Tree) -> tuple[VerifyPass, ...]:
+    listed = tree.plain.get("verify", {}).get("passes", ())
+    return tuple(
+        VerifyPass(entry["mode"], tree.places.where(("verify", "passes", index)))
+        for index, entry in enumerate(listed)
+        if isinstance(entry, Mapping) and "mode" in entry
+    )
+
+
+# ---- steps --------------------------------------------------------------------------------------
+
+
+def _method(tree: Tree, name: str) -> Method | None:
+    table = tree.plain.get(name)
+    if not isinstance(table, Mapping):
+        return None
+    builder = _Steps(tree)
+    return Method(
+        bits=table.get("bits", ""),
+        unit=table.get("unit", ""),
+        steps=builder.steps(table.get("steps", ()), (name, "steps")),
+        finally_=builder.steps(table.get("finally", ()), (name, "finally")),
+        where=tree.places.where((name,)),
+    )
+
+
+class _Steps:
+    """Builds steps; a step with a part missing is left out."""
+
+    def __init__(self, tree: Tree) -> None:
+        self.tree = tree
+        self.timing = _timing(tree)
+
+    def steps(self, entries: Iterable[Any], path: KeyPath) -> tuple[Step, ...]:
+        built = [self.step(entry, (*path, index)) for index, entry in enumerate(entries) if isinstance(entry, Mapping)]
+        return tuple(step for step in built if step is not None)
+
+    def step(self, entry: Mapping[str, Any], path: KeyPath) -> Step | None:
+        where = self.tree.places.where(path)
+        if "repeat" in entry:
+            inner = self.steps(entry["repeat"], (*path, "repeat"))
+            return RepeatStep(inner, entry.get("max", 1), self.until(entry.get("until"), (*path, "until")), where)
+        if "each" in entry:
+            return EachStep(entry["each"], self.steps(entry.get("steps", ()), (*path, "steps")), where)
+        if "pulse" in entry:
+            complete = "to" in entry and "time" in entry
+            return PulseStep(entry["pulse"], entry["to"], entry["time"], where) if complete else None
+        if "expect" in entry:
+            width = self.tree.plain.get("chip", {}).get("width", 8)
+            return ExpectStep(entry["expect"], entry.get("mask", (1 << width) - 1), where)
+        if "wait" in entry:
+            return self.wait(entry["wait"], path)
+        return ModeStep(entry["mode"], entry.get("D"), where) if "mode" in entry else None
+
+    def until(self, entry: object, path: KeyPath) -> EveryWord | None:
+        if isinstance(entry, Mapping) and "mode" in entry and "is" in entry:
+            return EveryWord(entry["mode"], entry["is"], self.tree.places.where(path))
+        return None
+
+    def wait(self, text: str, path: KeyPath) -> WaitStep | None:
+        """At least the parameter's minimum; where only the chip's own maximum is given, at least that."""
+        where = self.tree.places.where((*path, "wait"))
+        window = self.timing.get(text)
+        if window is not None:
+            known = (window.min_ps, window.max_ps, window.typ_ps)
+            return WaitStep(text, next((ps for ps in known if ps is not None), 0), where)
+        try:
+            return WaitStep("", units.parse_ps(text), where)
+        except units.UnitMistake:
+            return None
