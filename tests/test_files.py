@@ -72,6 +72,16 @@ def test_a_failed_write_leaves_the_old_file(
     assert names(tmp_path) == ["dump.bin"]
 
 
+def test_a_reader_never_sees_half_a_file(tmp_path: Path) -> None:
+    """Who has the old file open goes on reading the old contents: the new ones are another file that takes the name."""
+    path = tmp_path / "dump.bin"
+    path.write_bytes(b"old contents")
+    with path.open("rb", buffering=0) as reader:
+        assert reader.read(4) == b"old "
+        write_whole(path, b"new")
+        assert reader.read() == b"contents"
+
+
 def test_a_missing_folder_is_a_plain_error(tmp_path: Path) -> None:
     """A folder that is not there is named, with exit 2."""
     with pytest.raises(FileMistake, match=r"cannot write .*nowhere/dump\.bin: No such file or directory") as caught:

@@ -24,6 +24,7 @@ RECORDS = b":04003000902BB4FD60\n:00000001FF\n"
         (b"\xef\xbb\xbf" + RECORDS, "a.txt", INTEL_HEX),
         (b":0400\xb030009", "a.hex", INTEL_HEX),
         (b":04zz3000902BB4FD60\n", "a.bin", INTEL_HEX),
+        (b":04\xb03000902BB4FD60\n" + RECORDS * 3, "a.bin", INTEL_HEX),
         (b"04003000902BB4FD60\n", "a.HEX", INTEL_HEX),
         (b"04003000902BB4FD60\n", "a.bin", RAW),
         (b":\x00\x01\x02", "a.bin", RAW),

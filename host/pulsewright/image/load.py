@@ -50,9 +50,12 @@ def tell_format(data: bytes, name: str = "") -> str:
     start = data.removeprefix(_MARK_OF_UTF8).lstrip(_BLANKS)
     if _RECORD_START.match(start):
         return INTEL_HEX
-    text = not _NOT_TEXT.search(start)
+    strange = len(_NOT_TEXT.findall(start))
+    text = strange == 0
     named_hex = Path(name).suffix.lower() in HEX_SUFFIXES
-    if (start.startswith(b":") and (text or named_hex)) or (text and named_hex):
+    if start.startswith(b":") and (named_hex or strange * 100 <= len(start)):
+        return INTEL_HEX  # a few damaged bytes do not make raw data of a HEX file
+    if text and named_hex:
         return INTEL_HEX
     if text and _S_RECORDS.fullmatch(start):
         raise ImageMistake(
