@@ -1,0 +1,150 @@
+"""A program under construction: ops with their origins, waits that add up what must settle, and what stands at the pins."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from typing import Any
+
+from pulsewright.chip.model import Definition
+from pulsewright.errors import Where
+from pulsewright.rig.model import RailStep, Rig
+from pulsewright.sequence.pinmap import PinMap
+from pulsewright.sequence.types import Origin
+from pulsewright.units import Rounding, ticks
+from pulsewright.wire.ops import Header, Instruction, Label, assemble, ins, line_byte
+from pulsewright.wire.tables import Fail, Level, Op
+
+US = 10**6  # picoseconds
+
+
+@dataclass
+class PinState:
+    """What the compiler knows to stand at the pins at this point of the program."""
+
+    lines: dict[str, Level] = field(default_factory=dict)
+    data: str = "Z"  # "Z" released, "driven"
+    outputs: bool = False  # the chip may drive D
+    switches: int = 0
+    vcc: RailStep | None = None
+    raised: RailStep | None = None
+    high_driven: bool = False
+    mode: str = ""
+
+
+class Builder:
+    """Collects ops. `part` and `where` go with each op into its Origin."""
+
+    def __init__(self, definition: Definition, rig: Rig) -> None:
+        self.definition = definition
+        self.rig = rig
+        self.pins = PinMap(definition, rig)
+        self.state = PinState()
+        self.items: list[tuple[Instruction | Label, Origin]] = []
+        self.depth = 0
+        self._part = "seating"
+        self._text = ""
+        self._where = Where()
+        self._settle_ps = 0
+        self._labels = 0
+
+    # ---- ops and their origins --------------------------------------------------------------------
+
+    @contextmanager
+    def about(self, text: str, *, part: str = "", where: Where | None = None) -> Iterator[None]:
+        """Ops emitted inside carry this text, part and place."""
+        kept = self._part, self._text, self._where
+        self._part, self._text = part or self._part, text
+        self._where = where if where is not None else self._where
+        yield
+        self._part, self._text, self._where = kept
+
+    def emit(self, op: Op, **args: Any) -> None:
+        """Appends an op."""
+        self.items.append((ins(op, **args), Origin(0, self._part, self._text, self._where)))
+
+    def label(self) -> Label:
+        """A new label, not placed yet."""
+        self._labels += 1
+        return Label(f"L{self._labels}")
+
+    def place(self, label: Label) -> None:
+        """Puts a label here."""
+        self.items.append((label, Origin(0, self._part, self._text, self._where)))
+
+    def fail_unless(self, why: Fail) -> None:
+        """Ends the sequence with `why` where the flag is clear."""
+        good = self.label()
+        self.emit(Op.BRANCH, when=1, depth=self.depth, to=good.name)
+        self.emit(Op.FAIL, why=why)
+        self.place(good)
+
+    # ---- time -------------------------------------------------------------------------------------
+
+    def edge(self, settle_ps: int = 0) -> None:
+        """The op just emitted moved pins; they need `settle_ps` before any time counts."""
+        self._settle_ps = max(self._settle_ps, settle_ps)
+
+    def wait(self, ps: int) -> None:
+        """At least `ps` after everything that moved has settled; joins a wait that stands just before."""
+        total = self._settle_ps + ps
+        self._settle_ps = 0
+        last = self.items[-1][0] if self.items else None
+        if isinstance(last, Instruction) and last.op is Op.WAIT:
+            count = last.args["ticks"] + ticks(total, Rounding.AT_LEAST)
+            self.items[-1] = (ins(Op.WAIT, ticks=count), self.items[-1][1])
+        elif total:
+            self.emit(Op.WAIT, ticks=ticks(total, Rounding.AT_LEAST))
+
+    @property
+    def line_settle_ps(self) -> int:
+        """How long a line needs to its level, whichever way, as H is made now and at this VCC."""
+        if self.state.high_driven:
+            return max(self.rig.driven_rise_ps, self.rig.line_fall_ps)
+        step = self.state.vcc.number if self.state.vcc else 0
+        return max(self.rig.released_rise_ps.get(step, 0), self.rig.line_fall_ps)
+
+    def access_ps(self, mode: str) -> int:
+        """Longest time from a settled address or enable to valid data in a mode."""
+        named = self.definition.modes[mode].access
+        names = (named,) if named else ("tACC", "tCE", "tOE")
+        times = [self.definition.timing[name].max_ps for name in names if name in self.definition.timing]
+        return max((time for time in times if time is not None), default=0)
+
+    def timing_max_ps(self, name: str) -> int:
+        """The maximum of a timing parameter, 0 where there is none."""
+        window = self.definition.timing.get(name)
+        return window.max_ps or 0 if window else 0
+
+    # ---- lines and data ---------------------------------------------------------------------------
+
+    def set_lines(self, levels: Mapping[str, Level]) -> None:
+        """Moves the control lines that differ, as one group."""
+        moved = {role: level for role, level in levels.items() if self.state.lines.get(role) != level}
+        if not moved:
+            return
+        self.emit(Op.LINES, lines=bytes(line_byte(self.pins.line(role), level) for role, level in moved.items()))
+        self.state.lines.update(moved)
+        self.edge(self.line_settle_ps)
+
+    def address(self, at: int) -> None:
+        """Address lines to a constant."""
+        self.emit(Op.ADDRESS, at=at)
+        self.edge(self.line_settle_ps)
+
+    def release(self) -> None:
+        """Data released, if it was driven."""
+        if self.state.data != "Z":
+            self.emit(Op.RELEASE)
+            self.edge()
+            self.state.data = "Z"
+
+    # ---- the end ----------------------------------------------------------------------------------
+
+    def assemble(self, header: Header) -> tuple[bytes, tuple[Origin, ...]]:
+        """The encoded program and its origins with their byte offsets."""
+        code, offsets = assemble(header, [item for item, _ in self.items])
+        bare = [origin for item, origin in self.items if isinstance(item, Instruction)]
+        origins = [Origin(at, o.part, o.text, o.where) for at, o in zip(offsets, bare, strict=True)]
+        return code, tuple(origins)

@@ -1,0 +1,192 @@
+"""Definition and rig to sequences: the five kinds of closed work on a chip. Pure: nothing is read, nothing is sent.
+
+Every sequence powers the chip up, checks its seat, passes the gate, works, and ends safe. Compile time does not grow
+with the image: data is named by range and hash only. All raise CannotMake where the rig has no step that serves.
+"""
+
+from __future__ import annotations
+
+from pulsewright.chip.model import Definition, EachStep, EveryWord, Method, RepeatStep, Step
+from pulsewright.errors import CannotMake
+from pulsewright.rig.model import RailStep, Rig
+from pulsewright.sequence.build import Builder
+from pulsewright.sequence.fuse import fuse
+from pulsewright.sequence.identity import pass_gate
+from pulsewright.sequence.levels import choose_vcc
+from pulsewright.sequence.lower import Lowering, enter, move_vcc, prove_level, raised_modes
+from pulsewright.sequence.permits import make_permit
+from pulsewright.sequence.seating import power_up
+from pulsewright.sequence.types import Sequence
+from pulsewright.units import Rounding, show_address, show_mv, ticks
+from pulsewright.wire.ops import Header
+from pulsewright.wire.tables import PROGRAM_BYTES, Fail, Flow, Op
+
+BLOCK_BYTES = 256  # a block of this many data bytes: 27 ms of 100 us pulses, or 2.6 ms of line at 1 Mbaud
+
+
+def _start(definition: Definition, rig: Rig) -> Builder:
+    b = Builder(definition, rig)
+    power_up(b)
+    pass_gate(b)
+    return b
+
+
+def _until_modes(steps: tuple[Step, ...]) -> list[str]:
+    names: list[str] = []
+    for step in steps:
+        if isinstance(step, RepeatStep) and isinstance(step.until, EveryWord):
+            names.append(step.until.mode)
+        if isinstance(step, RepeatStep | EachStep):
+            names += _until_modes(step.steps)
+    return names
+
+
+def _vcc_used(definition: Definition, rig: Rig, modes: list[str]) -> dict[str, RailStep]:
+    names = ["standby", "read", *modes]
+    if definition.identify == "mode":
+        names.append(definition.identify_mode)
+    used = {}
+    for name in names:
+        step = definition.supplies[definition.modes[name].vcc]
+        used[step.name] = choose_vcc(definition, rig, step)
+    return used
+
+
+def _finish(
+    b: Builder,
+    *,
+    kind: str,
+    title: str,
+    modes: list[str],
+    first: int,
+    last: int,
+    flow: Flow,
+    extra_vcc: dict[str, RailStep] | None = None,
+    data_sha256: str = "",
+) -> Sequence:
+    definition = b.definition
+    vcc_mv = b.state.vcc.mv if b.state.vcc else 0
+    with b.about("end: everything down in order", part="power"):
+        b.emit(Op.END)
+    b.items = fuse(b.items)
+    words = last - first + 1 if flow is not Flow.NONE else 0
+    block_words = BLOCK_BYTES * 8 // definition.width
+    code, origins = b.assemble(Header(definition.width, flow, b.pins.address_lines, words, block_words))
+    if len(code) > PROGRAM_BYTES:
+        biggest = origins[-1]
+        raise CannotMake(
+            f"{title}: the program is longer than a board's memory",
+            wanted=f"at most {PROGRAM_BYTES} bytes",
+            got=f"{len(code)} bytes",
+            where=biggest.where,
+        )
+    raised = [name for name in modes if b.pins.raised_levels(definition.modes[name])]
+    used = _vcc_used(definition, b.rig, modes)
+    permit = make_permit(b, raised, used | (extra_vcc or {}), code)
+    return Sequence(
+        kind=kind,
+        title=title,
+        code=code,
+        permit=permit,
+        origins=origins,
+        first=first,
+        last=last,
+        vcc_mv=vcc_mv,
+        data_sha256=data_sha256,
+        notes=_notes(definition),
+    )
+
+
+def _notes(definition: Definition) -> tuple[str, ...]:
+    unknown = [step.name for step in definition.supplies.values() if not step.limits_known]
+    if not unknown:
+        return ()
+    return (f"limits of {', '.join(unknown)} are not published: typ ±5 % is taken (common practice)",)
+
+
+def _span(definition: Definition, first: int, last: int) -> str:
+    return f"{show_address(first, definition.words)}..{show_address(last, definition.words)}"
+
+
+def compile_identify(definition: Definition, rig: Rig) -> Sequence:
+    """Seating check and ID bytes, nothing else."""
+    b = _start(definition, rig)
+    last = definition.words - 1
+    return _finish(b, kind="identify", title="identify", modes=[], first=0, last=last, flow=Flow.NONE)
+
+
+def compile_read(
+    definition: Definition,
+    rig: Rig,
+    first: int,
+    last: int,
+    *,
+    mode: str = "read",
+    rail_step: RailStep | None = None,
+) -> Sequence:
+    """Reads a range to the host, in a mode's VCC or at a rail step that lies inside that step's window."""
+    b = _start(definition, rig)
+    step = definition.supplies[definition.modes[mode].vcc]
+    with b.about(f"read words {_span(definition, first, last)}", part="work", where=definition.modes[mode].where):
+        if rail_step is not None:
+            move_vcc(b, step, rail_step)
+            b.set_lines(b.pins.control_levels(definition.modes[mode]))
+            b.state.outputs, b.state.mode = True, mode
+        else:
+            enter(b, mode)
+        b.wait(0)
+        b.emit(Op.READ_RUN, wait=ticks(b.line_settle_ps + b.access_ps(mode), Rounding.AT_LEAST))
+    at = b.state.vcc.mv if b.state.vcc else step.typ_mv
+    title = f"read {_span(definition, first, last)} at {step.name} ({show_mv(at)})"
+    extra = {step.name: rail_step} if rail_step is not None else None
+    return _finish(b, kind="read", title=title, modes=[mode], first=first, last=last, flow=Flow.READ, extra_vcc=extra)
+
+
+def compile_blank(definition: Definition, rig: Rig, first: int, last: int) -> Sequence:
+    """Every word of a range compared with the erased state, in the firmware."""
+    b = _start(definition, rig)
+    mode = definition.modes["read"]
+    with b.about(f"every word reads {definition.blank:0{definition.width // 4}X}", part="work", where=mode.where):
+        enter(b, "read", at=first)
+        b.wait(0)
+        access = ticks(b.line_settle_ps + b.access_ps("read"), Rounding.AT_LEAST)
+        b.emit(Op.SCAN, first=first, count=last - first + 1, word=definition.blank, wait=access)
+        b.fail_unless(Fail.NOT_BLANK)
+    title = f"blank check {_span(definition, first, last)}"
+    return _finish(b, kind="blank", title=title, modes=["read"], first=first, last=last, flow=Flow.NONE)
+
+
+def _work(b: Builder, method: Method, first: int, last: int, failure: Fail) -> list[str]:
+    """A method's steps, its raised rail made and measured first; the modes it goes to."""
+    modes = raised_modes(method.steps)
+    for name in modes:
+        if b.pins.raised_levels(b.definition.modes[name]):
+            with b.about("", part="power"):
+                prove_level(b, name)
+    enter(b, "standby")
+    b.wait(0)
+    Lowering(b, first, last, failure).run(method.steps)
+    Lowering(b, first, last, failure).run(method.finally_)
+    return modes + _until_modes(method.steps)
+
+
+def compile_erase(definition: Definition, rig: Rig) -> Sequence:
+    """The data sheet's erase, to the last word proven blank; CannotMake for a part without one."""
+    if definition.erase is None:
+        raise CannotMake(f"{definition.name} has no electrical erase", did="was not asked: nothing was sent")
+    b = _start(definition, rig)
+    last = definition.words - 1
+    modes = _work(b, definition.erase, 0, last, Fail.ERASE)
+    return _finish(b, kind="erase", title="erase the chip", modes=modes, first=0, last=last, flow=Flow.NONE)
+
+
+def compile_burn(definition: Definition, rig: Rig, first: int, last: int, data_sha256: str) -> Sequence:
+    """Burns the words of a range that the host marks, each read back; CannotMake for a part that cannot be burnt."""
+    if definition.program is None:
+        raise CannotMake(f"{definition.name} cannot be programmed", did="was not asked: nothing was sent")
+    b = _start(definition, rig)
+    modes = _work(b, definition.program, first, last, Fail.PROGRAM)
+    title = f"burn {_span(definition, first, last)}"
+    return _finish(
+        b, kind="burn", title=title, modes=modes, first=first, last=last, flow=Flow.WRITE, data_sha256=data_sha256
+    )
