@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from functools import cache
+from typing import Any, cast
 
 from pulsewright.wire.fields import WireMistake, pack, unpack
 from pulsewright.wire.tables import (
@@ -19,17 +20,18 @@ from pulsewright.wire.tables import (
 _HEAD = (("kind", "u8"), ("permit", "u16"), ("index", "u16"))
 _HEAD_BYTES = 5
 _LONGEST = 1024  # a stretch without a zero that is longer than any frame is noise
-_crc: Callable[[bytes], int] | None = None
+
+
+@cache
+def _crc_function() -> Callable[[bytes], int]:
+    from crcmod.predefined import mkPredefinedCrcFun  # at first use: start-up of a command stays short
+
+    return cast("Callable[[bytes], int]", mkPredefinedCrcFun("x-25"))
 
 
 def crc16(data: bytes) -> int:
     """CRC-16/IBM-SDLC (ISO/IEC 13239): reflected 1021, init FFFF, xorout FFFF; "123456789" gives 906E."""
-    global _crc  # the library is imported at first use: start-up of a command stays short
-    if _crc is None:
-        from crcmod.predefined import mkPredefinedCrcFun
-
-        _crc = mkPredefinedCrcFun("x-25")
-    return _crc(data)
+    return _crc_function()(data)
 
 
 @dataclass(frozen=True)
