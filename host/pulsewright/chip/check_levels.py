@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Mapping
 
 from pulsewright.chip.findings import VCC_RAISED_ABOVE_MV, Findings
 from pulsewright.chip.kinds import nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Maximum, Mode, SupplyStep
-from pulsewright.chip.schema import MEANT_TIMINGS
+from pulsewright.chip.schema import MEANT_TIMINGS, TIMING_NAME
 from pulsewright.units import show_mv, show_ps
 
 
@@ -239,7 +240,7 @@ def _timing(found: Findings) -> None:
         found.at(("timing", "tDF"), "nothing says when the outputs float", wanted="tDF")
     used = _used_timings(found)
     for name in written:
-        if name not in MEANT_TIMINGS and name not in used:
+        if name not in MEANT_TIMINGS and name not in used and re.fullmatch(TIMING_NAME, name):
             close = nearest(name, MEANT_TIMINGS)
             what = "a timing parameter that nothing uses"
             found.at(("timing", name), what, found=name, wanted="a name with a meaning", nearest=close, warning=True)

@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
 from pulsewright.chip.kinds import any_of, nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Definition, SupplyStep
-from pulsewright.chip.schema import UNDRIVEN_ROLES
+from pulsewright.chip.schema import ROLE_NAME, UNDRIVEN_ROLES
 from pulsewright.chip.source import Tree
 from pulsewright.errors import Problem, Where
 
@@ -48,7 +49,8 @@ class Findings:
 
     def control_roles(self) -> list[str]:
         """Roles a mode must set: all but A, D, VCC, GND and pins nobody drives; a VPP pin of its own is one."""
-        return [role for role in self.defn.pins if role not in ("A", "D", *UNDRIVEN_ROLES)]
+        passive = ("A", "D", *UNDRIVEN_ROLES)
+        return [role for role in self.tree.names("pins") if role not in passive and re.fullmatch(ROLE_NAME, role)]
 
     def read_max_mv(self) -> int:
         """The read step's maximum: what stands above it is raised."""

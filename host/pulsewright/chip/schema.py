@@ -37,7 +37,7 @@ RESPONSE_TIMINGS = ("tACC", "tCE", "tOE", "tDF", "tWC")
 DATA_WORDS = ("in", "out", "Z")
 
 _IDENT = r"[a-z][a-z0-9_]*"
-_ROLE = "|".join(ROLES) + r"|(?:CE|OE|WE|CS)[0-9]"
+_ROLE = ROLE_NAME = "|".join(ROLES) + r"|(?:CE|OE|WE|CS)[0-9]"
 _ALIAS = r"[AD][0-9]{1,2}"
 _LEVEL = rf"L|H|X|Z|VCC|(?:{'|'.join(SUPPLIES)})\.{_IDENT}"
 _VOLTAGE = r"\s*[+-]?\d+(?:\.\d+)?\s*(?:V|mV)\s*"
@@ -69,7 +69,7 @@ _SUPPLY_STEP = Table(
 )
 _SUPPLY = Table(
     keys={},
-    others=_SUPPLY_STEP,
+    others=Named("supply_step"),
     names=_IDENT,
     what="step name",
     wanted="a name in small letters, such as read or program",
@@ -180,7 +180,16 @@ def _method(bits: tuple[str, ...]) -> Table:
     )
 
 
-KINDS: Mapping[str, Kind] = {"step": _STEP, "steps": ListOf(Named("step")), "every": _EVERY}
+KINDS: Mapping[str, Kind] = {
+    "step": _STEP,
+    "steps": ListOf(Named("step")),
+    "every": _EVERY,
+    "supply_step": _SUPPLY_STEP,
+    "maximum": _MAXIMUM_KIND,
+    "mode": _MODE,
+    "window": _WINDOW,
+}
+_WHOLE_IN_ROWS = ("step", "steps", "every", "maximum")  # a row replaces these as a whole
 
 _TABLES: dict[str, Kind] = {
     "chip": Table(
@@ -214,25 +223,25 @@ _TABLES: dict[str, Kind] = {
     ),
     "maxima": Table(
         about="absolute maximum ratings; nothing may ever exceed them",
-        keys={"other": _MAXIMUM_KIND, "VCC": _MAXIMUM_KIND},
+        keys={"other": Named("maximum"), "VCC": Named("maximum")},
         required=("VCC", "other"),
-        others=_MAXIMUM_KIND,
+        others=Named("maximum"),
         names=rf"{_ROLE}|{_ALIAS}",
         what="pin",
         wanted="a pin such as OE or A9, or other",
         words=ROLES,
     ),
     "modes": Table(
-        keys={"read": _MODE, "standby": _MODE},
+        keys={"read": Named("mode"), "standby": Named("mode")},
         required=("read", "standby"),
-        others=_MODE,
+        others=Named("mode"),
         names=_IDENT,
         what="mode",
         wanted="a name in small letters, such as read or erase_verify",
     ),
     "timing": Table(
-        keys=dict.fromkeys(MEANT_TIMINGS, _WINDOW),
-        others=_WINDOW,
+        keys={name: Named("window") for name in MEANT_TIMINGS},
+        others=Named("window"),
         names=TIMING_NAME,
         what="timing parameter",
         wanted="a name such as tAS or tPW",
@@ -256,6 +265,8 @@ def _partial(kind: Kind) -> Kind:
         others = None if kind.others is None else _partial(kind.others)
         keys = {name: _partial(one) for name, one in kind.keys.items()}
         return replace(kind, keys=keys, required=(), others=others)
+    if isinstance(kind, Named) and kind.name not in _WHOLE_IN_ROWS:
+        return Named(f"{kind.name}_in_row")
     return kind
 
 
@@ -286,7 +297,14 @@ def json_schema() -> dict[str, object]:
         "$schema": "https://json-schema.org/draft/2020-12/schema",
         "title": "Definition of a part",
         **DEFINITION.json(),
-        "$defs": {name: kind.described() for name, kind in KINDS.items()},
+        "$defs": {
+            **{name: kind.described() for name, kind in KINDS.items()},
+            **{
+                f"{name}_in_row": _partial(kind).described()
+                for name, kind in KINDS.items()
+                if name not in _WHOLE_IN_ROWS
+            },
+        },
     }
 
 

@@ -60,9 +60,12 @@ class Tree:
         """The names written in a table, the wrong ones included: a reference to those is no further mistake."""
         node: Any = self.written
         for part in path:
-            if not isinstance(node, Mapping) or part not in node:
+            if isinstance(node, Mapping) and part in node:
+                node = node[part]
+            elif isinstance(node, list) and isinstance(part, int) and part < len(node):
+                node = node[part]
+            else:
                 return ()
-            node = node[part]
         return tuple(node) if isinstance(node, Mapping) else ()
 
 
@@ -263,13 +266,12 @@ def _parameter_values(
         where = places.where(path) if isinstance(declared, Mapping) else Where(text.file, 0, "parameters")
         problems.append(Problem(where, "not a value for this key", shown(found), "a table of parameters"))
         return {}
-    values: dict[str, object] = {}
+    values: dict[str, object] = dict.fromkeys(declared)
     for name, rule in declared.items():
         if isinstance(rule, Mapping) and rule.get("required") is True:
             if name not in given:
                 what = f"a parameter of method {Path(text.file).stem} is missing"
                 problems.append(Problem(places.where((*path, name)), what, wanted=name))
-                values[name] = None
         else:
             values[name] = rule.get("default") if isinstance(rule, Mapping) else rule
     for name, value in given.items():

@@ -114,5 +114,5 @@ def _maximum(maxima: Sequence[Maximum], vcc: Sequence[SupplyStep], problems: lis
             chosen = above
         elif above.mv + min(step.min_mv for step in vcc) < fixed.mv:
             texts = [show_mv(fixed.mv), f"VCC + {show_mv(above.mv)}"]
-            problems.append(_nothing_fits(above.where, "a maximum", texts))
+            problems.append(_nothing_fits(maxima[-1].where, "a maximum", texts))
     return replace(chosen or maxima[0], source=source)
