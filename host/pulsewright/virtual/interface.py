@@ -54,6 +54,7 @@ class Limits:
     vcc_steps_mv: tuple[tuple[int, int], ...] = ()  # every window in which VCC may be used
     identify_mv: tuple[int, int] | None = None  # window of the identify level
     identify_pin: int | None = None
+    verify_access_ticks: int = 0  # CE low to data valid after a raised level or below the read VCC; 0: as access
     source: str = ""
 
 

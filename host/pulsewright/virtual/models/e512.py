@@ -1,0 +1,388 @@
+"""A 27E512-type chip: 64K x 8, programmed at 12 V, erased at 14 V on OE/VPP and A9.
+
+Every limit is typed by hand from the published facts and none comes from a definition file. Marks: S37 = mode table
+text of a sibling part number of the same maker; S38 = page 1 of two sibling sheets (June 2000, Nov 1999); S18 = a
+512K EPROM sheet with shared OE/VPP; "from memory" = recalled, not read; "common practice" = a rule of the trade;
+"invented" = the sheet says nothing and a model must do something.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+from pulsewright.virtual.faults import ChipFaults
+from pulsewright.virtual.interface import Levels, Limits, PulseLimit
+
+# The pins [S38].
+A = (10, 9, 8, 7, 6, 5, 4, 3, 25, 24, 21, 23, 2, 26, 27, 1)
+D = (11, 12, 13, 15, 16, 17, 18, 19)
+CE, OE, A9, GND, VCC = 20, 22, 24, 14, 28
+NOT_A9 = tuple(pin for pin in A if pin != A9)
+
+# Levels, mV
+VIL, VIH = 800, 2000  # TTL levels: common practice
+VCC_5V = (4750, 5250)  # 5 V in every mode [S37], limits unknown: +-5 %, common practice
+VCC_VERIFY = (3563, 3937)  # 3.75 V [S37], limits unknown: +-5 %, common practice
+VPP_PROGRAM = (11750, 12250)  # 12 V [S37], limits from memory
+VPE = (13750, 14250)  # 14 V on OE/VPP and on A9 [S37], limits from memory
+VHH = (11500, 12500)  # 12 V on A9 [S37], limits from memory
+MOST_RAISED = 14500  # A9 and OE/VPP, absolute maximum: from memory
+MOST = 7000  # VCC, absolute maximum: from memory; taken for all others too
+LEAST = -600  # lowest level of a pin: common practice
+POWERED = 3000  # the part does nothing below: invented
+LOW_VCC = 4500  # below, a half-erased cell still reads its old 0: invented
+
+# Times, ticks of 62.5 ns
+ACCESS = 3  # 150 ns, slowest grade, from address and CE [S38]
+VERIFY_ACCESS = 16  # CE low to data 1 us while verifying: from memory
+FLOAT = 3  # outputs float at most 130 ns after CE or OE high: from memory
+SETUP = 32  # 2 us class throughout, set-up and hold: from memory
+RECOVERY = 32  # 2 us from the raised level gone to the next enable [S18], "2 us class" from memory
+RISE = 1  # at least 50 ns, as on other parts with a shared OE/VPP [S18]
+PROGRAM_PULSE = (1_520, 1_680)  # 95..105 us: from memory
+ERASE_PULSE = (1_520_000, 1_680_000)  # 95..105 ms: from memory
+
+# Currents, uA: 30 mA at most, active and programming, 1 mA standby [S38]; A9 as a 28F020 takes it; the rest invented
+ICC_ACTIVE, ICC_STANDBY = 20_000, 1_000
+IPP_PULSE, IPP_STANDING = 30_000, 100
+IA9 = 200
+
+ID = (0xDA, 0x08)  # [S37]
+_NONE, _PROGRAM, _ERASE = 0, 1, 2
+_SETUPS = {"address": SETUP, "data": SETUP, "raised": SETUP, "vcc": SETUP}
+_HOLDS = {"address": SETUP, "data": SETUP, "raised": SETUP}
+
+LIMITS = Limits(
+    package="DIP-28",
+    maxima_mv={0: MOST, VCC: MOST, OE: MOST_RAISED, A9: MOST_RAISED},
+    minimum_mv=LEAST,
+    vcc_pin=VCC,
+    gnd_pins=(GND,),
+    address_pins=A,
+    data_pins=D,
+    enable_pins=(CE, OE),
+    raised_pins=(OE, A9),
+    pulses=(
+        PulseLimit(
+            name="program",
+            pin=CE,
+            active_low=True,
+            raised={OE: VPP_PROGRAM},
+            min_ticks=PROGRAM_PULSE[0],
+            max_ticks=PROGRAM_PULSE[1],
+            setup_ticks=_SETUPS,
+            hold_ticks=_HOLDS,
+            vcc_mv=VCC_5V,
+            source="levels S37, widths and times from memory",
+        ),
+        PulseLimit(
+            name="erase",
+            pin=CE,
+            active_low=True,
+            raised={OE: VPE, A9: VPE},
+            min_ticks=ERASE_PULSE[0],
+            max_ticks=ERASE_PULSE[1],
+            setup_ticks=_SETUPS,
+            hold_ticks=_HOLDS,
+            vcc_mv=VCC_5V,
+            data=0xFF,
+            low_pins=NOT_A9,
+            source="levels, addresses low and D high S37, widths and times from memory",
+        ),
+    ),
+    access_ticks=ACCESS,
+    verify_access_ticks=VERIFY_ACCESS,
+    float_ticks=FLOAT,
+    rise_ticks=RISE,
+    recovery_ticks=RECOVERY,
+    vcc_read_mv=VCC_5V,
+    vcc_steps_mv=(VCC_5V, VCC_VERIFY),
+    identify_mv=VHH,
+    identify_pin=A9,
+    source="S37, S38 and from memory, value by value in this file",
+)
+
+
+class E512:
+    """The model. Cells change as the pulses at its pins have the time, the levels and the data to change them."""
+
+    def __init__(self) -> None:
+        self.name = "27e512"
+        self.pins = 28
+        self.outputs = D
+        self.limits = LIMITS
+        self.cells = bytearray(b"\xff" * 65_536)
+        self.erased_word = 0xFF
+        self.damaged = False
+        self.stressed: list[str] = []
+        self.program_pulses = 0
+        self.erase_pulses = 0
+        self._id = ID
+        self._stuck: dict[int, tuple[int, int]] = {}  # address -> mask, bits
+        self._slow_percent = 0
+        self._slow_pulses = 1
+        self._begun: dict[int, tuple[int, int]] = {}  # address -> ticks at the program level so far, with which data
+        self._erased_ticks = 0  # at the erase levels since the last program pulse
+        # Any, not int | None: comparisons with None are caught once, in _address, instead of asked for 16 times
+        self._levels: Any = (None,) * 29
+        self._harmless: set[int | None] = {None}
+        self._ce: int | None = None
+        self._oe: int | None = None
+        self._a9: int | None = None
+        self._vcc: int | None = None
+        self._a9_raised = False
+        self._ce_low = False
+        self._enabled = False
+        self._verifying = False
+        self._valid_at = 0
+        self._float_until = 0
+        self._word = -1
+        self._mode = _NONE
+        self._pulse_from = 0
+        self._pulse_at = 0
+
+    def take_faults(self, faults: ChipFaults) -> None:
+        """Makes this a faulty chip: another ID, cells that are stuck, cells that are slow."""
+        if faults.wrong_id is not None:
+            self._id = (faults.wrong_id[0] & 0xFF, faults.wrong_id[1] & 0xFF)
+        self._stuck = {at & 0xFFFF: (mask & 0xFF, bits & 0xFF) for at, mask, bits in faults.stuck}
+        self._slow_percent, self._slow_pulses = faults.slow_percent, faults.slow_pulses
+        self._keep_stuck()
+
+    def state(self) -> dict[str, object]:
+        return {
+            "damaged": self.damaged,
+            "stressed": list(self.stressed),
+            "program_pulses": self.program_pulses,
+            "erase_pulses": self.erase_pulses,
+            "erased_ticks": self._erased_ticks,
+            "begun": {str(at): list(begun) for at, begun in self._begun.items()},
+        }
+
+    def restore(self, state: Mapping[str, Any]) -> None:
+        self.damaged = bool(state.get("damaged", False))
+        self.stressed = [str(text) for text in state.get("stressed", [])]
+        self.program_pulses = int(state.get("program_pulses", 0))
+        self.erase_pulses = int(state.get("erase_pulses", 0))
+        self._erased_ticks = int(state.get("erased_ticks", 0))
+        self._begun = {int(at): (int(begun[0]), int(begun[1])) for at, begun in state.get("begun", {}).items()}
+
+    # ---- the pins; these run a million times a burn, so they look first at what usually did not change ----
+
+    def pins_changed(self, t: int, levels: Levels) -> None:
+        if not self._harmless.issuperset(levels):
+            self._look_at_levels(levels)
+        self._levels = levels[:]
+        self._word = -1
+        a9 = levels[A9]
+        if levels[CE] == self._ce and levels[OE] == self._oe and levels[VCC] == self._vcc:
+            if a9 == self._a9 or not (self._a9_raised or a9 is None or a9 > MOST):
+                self._a9 = a9
+                self._valid_at = max(self._valid_at, t + ACCESS)
+                if self._mode:
+                    self._moved_in_pulse(t)
+                return
+        self._control(t, levels[CE], levels[OE], a9, levels[VCC])
+
+    def drive(self, t: int) -> tuple[int, int]:
+        if self._enabled:
+            word = self._word
+            if word < 0:
+                word = self._word = self._read()
+            return (0xFF, word) if t >= self._valid_at else (0xFF, word ^ 0xFF)
+        if t < self._float_until:
+            return 0xFF, 0x5A  # going off: whatever; invented
+        return 0, 0
+
+    def draw_ua(self, t: int, pin: int) -> int:
+        if pin == VCC:
+            return (ICC_ACTIVE if self._ce_low else ICC_STANDBY) if self._vcc else 0
+        if pin == OE and self._oe is not None and self._oe > MOST:
+            return IPP_PULSE if self._mode else IPP_STANDING
+        if pin == A9 and self._a9_raised:
+            return IA9
+        return 0
+
+    def _control(self, t: int, ce: int | None, oe: int | None, a9: int | None, vcc: int | None) -> None:
+        powered = vcc is not None and vcc >= POWERED
+        ce_low = powered and ce is not None and ce <= VIL
+        enabled = ce_low and oe is not None and oe <= VIL
+        if not powered:
+            self._verifying = False
+        elif oe is not None and oe > MOST:
+            self._verifying = True  # from the first raised level to power-down reads are verifies
+        low_vcc = vcc is not None and vcc < LOW_VCC
+        access = VERIFY_ACCESS if ce_low and not self._ce_low and (self._verifying or low_vcc) else ACCESS
+        self._valid_at = max(self._valid_at, t + access)
+        if self._enabled and not enabled:
+            self._float_until = t + FLOAT
+        self._ce, self._oe, self._a9, self._vcc = ce, oe, a9, vcc
+        self._a9_raised = a9 is not None and a9 > MOST
+        self._ce_low, self._enabled = ce_low, enabled
+        mode = self._pulse_mode() if ce_low else _NONE
+        if mode != self._mode:
+            if self._mode:
+                self._end_pulse(t)
+            self._mode = mode
+            if mode:
+                self._begin_pulse(t)
+        elif mode:
+            self._moved_in_pulse(t)
+
+    def _pulse_mode(self) -> int:
+        oe, a9, vcc = self._oe, self._a9, self._vcc
+        if oe is None or vcc is None or not VCC_5V[0] <= vcc <= VCC_5V[1]:
+            return _NONE
+        if VPP_PROGRAM[0] <= oe <= VPP_PROGRAM[1] and not self._a9_raised:
+            return _PROGRAM
+        if VPE[0] <= oe <= VPE[1] and a9 is not None and VPE[0] <= a9 <= VPE[1]:
+            return _ERASE
+        return _NONE
+
+    def _address(self) -> int:
+        v = self._levels
+        try:
+            address: int = (
+                (v[10] >= VIH)
+                | (v[9] >= VIH) << 1
+                | (v[8] >= VIH) << 2
+                | (v[7] >= VIH) << 3
+                | (v[6] >= VIH) << 4
+                | (v[5] >= VIH) << 5
+                | (v[4] >= VIH) << 6
+                | (v[3] >= VIH) << 7
+                | (v[25] >= VIH) << 8
+                | (v[24] >= VIH) << 9
+                | (v[21] >= VIH) << 10
+                | (v[23] >= VIH) << 11
+                | (v[2] >= VIH) << 12
+                | (v[26] >= VIH) << 13
+                | (v[27] >= VIH) << 14
+                | (v[1] >= VIH) << 15
+            )
+            return address
+        except TypeError:  # an input that nothing drives reads as high: invented
+            return sum((v[pin] is None or v[pin] >= VIH) << bit for bit, pin in enumerate(A))
+
+    def _data(self) -> int:
+        """What stands on D; a pin that nothing drives counts as low, so that a missing drive shows in the cell."""
+        v = self._levels
+        return sum((v[pin] is not None and v[pin] >= VIH) << bit for bit, pin in enumerate(D))
+
+    def _read(self) -> int:
+        address = self._address()
+        a9 = self._a9
+        if self._a9_raised and a9 is not None and VHH[0] <= a9 <= VHH[1]:
+            return self._id[address & 1]  # A0 alone selects: from memory
+        word = self.cells[address]
+        half_erased = ERASE_PULSE[0] <= self._erased_ticks < ERASE_PULSE[0] * self._slow_pulses
+        if half_erased and self._is_slow(address) and self._vcc is not None and self._vcc >= LOW_VCC:
+            word = 0xFF  # looks erased, and at low VCC it is not
+        if address in self._stuck:
+            mask, bits = self._stuck[address]
+            word = word & ~mask | bits
+        return word
+
+    # ---- pulses ----
+
+    def _begin_pulse(self, t: int) -> None:
+        self._pulse_from = t
+        self._pulse_at = self._address()
+
+    def _moved_in_pulse(self, t: int) -> None:
+        """Something moved inside a pulse: another address is another, shorter pulse on other cells."""
+        if self._mode == _PROGRAM and self._address() != self._pulse_at:
+            self._stress("the address moved inside a program pulse")
+            self._end_pulse(t)
+            self._begin_pulse(t)
+        elif self._mode == _ERASE and not self._erase_pattern():
+            self._stress("addresses or D moved inside an erase pulse")
+
+    def _end_pulse(self, t: int) -> None:
+        width = t - self._pulse_from
+        if self._mode == _PROGRAM:
+            self._program(width)
+        else:
+            self._erase(width)
+
+    def _program(self, width: int) -> None:
+        at, data = self._pulse_at, self._data()
+        self.program_pulses += 1
+        if width > PROGRAM_PULSE[1]:
+            self._stress("a program pulse longer than 105 us")
+        self._erased_ticks = 0  # an erase that was not finished is lost: invented
+        if width >= PROGRAM_PULSE[0] and not self._is_slow(at):
+            self.cells[at] &= data
+        else:
+            ticks, begun = self._begun.get(at, (0, data))
+            ticks = ticks + width if begun == data else width
+            if ticks >= PROGRAM_PULSE[0] * (self._slow_pulses if self._is_slow(at) else 1):
+                self.cells[at] &= data
+                self._begun.pop(at, None)
+            else:
+                self._begun[at] = (ticks, data)
+        if at in self._stuck:
+            self._keep_stuck()
+
+    def _erase_pattern(self) -> bool:
+        v = self._levels
+        return self._data() == 0xFF and all(v[pin] is not None and v[pin] <= VIL for pin in NOT_A9)
+
+    def _erase(self, width: int) -> None:
+        self.erase_pulses += 1
+        if not self._erase_pattern():
+            self._stress("an erase pulse without all addresses low and D high")
+            return
+        if width > ERASE_PULSE[1]:
+            self._stress("an erase pulse longer than 105 ms")
+        self._erased_ticks += width
+        if self._erased_ticks < ERASE_PULSE[0]:
+            return
+        self._begun.clear()
+        if self._slow_percent == 0 or self._erased_ticks >= ERASE_PULSE[0] * self._slow_pulses:
+            self.cells[:] = b"\xff" * len(self.cells)
+        else:
+            cells = self.cells
+            for at in range(len(cells)):
+                if not self._is_slow(at):
+                    cells[at] = 0xFF
+        self._keep_stuck()
+
+    def _is_slow(self, address: int) -> bool:
+        """Whether the fault "slow" struck this cell: the same ones each time, spread over the chip by a hash."""
+        if self._slow_percent == 0:
+            return False
+        return ((address * 2_654_435_761 & 0xFFFFFFFF) >> 12) % 100 < self._slow_percent
+
+    def _keep_stuck(self) -> None:
+        for at, (mask, bits) in self._stuck.items():
+            self.cells[at] = self.cells[at] & ~mask | bits
+
+    # ---- what must not happen ----
+
+    def _look_at_levels(self, levels: Levels) -> None:
+        """Some level was not seen before, or is raised: is one past the pin's absolute maximum?"""
+        for pin in range(1, self.pins + 1):
+            level = levels[pin]
+            if level is None:
+                continue
+            if level <= MOST:
+                self._harmless.add(level)
+            elif level > (MOST_RAISED if pin in {OE, A9} else MOST):
+                self._destroy(pin, level)
+
+    def _destroy(self, pin: int, level: int) -> None:
+        if not self.damaged:
+            self.damaged = True
+            self.stressed.append(f"pin {pin} stood at {level} mV: the cells are lost")
+        self.cells[:] = bytes(len(self.cells))
+
+    def _stress(self, what: str) -> None:
+        if what not in self.stressed:
+            self.stressed.append(what)
+
+
+def make_chip() -> E512:
+    """A fresh, erased chip."""
+    return E512()
