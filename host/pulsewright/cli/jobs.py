@@ -1,0 +1,221 @@
+"""identify, read, blank-check, erase, burn, verify: the jobs on a chip."""
+
+from __future__ import annotations
+
+import argparse
+from collections.abc import Callable
+from contextlib import ExitStack
+from typing import TYPE_CHECKING
+
+from pulsewright.cli.desk import (
+    HIGH_VOLTAGE,
+    LICENSED,
+    RIG_HELP,
+    STATIC,
+    UV,
+    Desk,
+    Handler,
+    Parser,
+    Stop,
+    add,
+    address,
+    address_range,
+    byte,
+    count,
+    prompt,
+)
+
+if TYPE_CHECKING:
+    from pulsewright.chip.model import Definition
+    from pulsewright.image.memory import Fitted
+    from pulsewright.jobs.context import JobContext, JobResult
+
+Commands = argparse._SubParsersAction
+
+
+def _common(parser: Parser) -> None:
+    parser.add_argument("chip", metavar="CHIP", help="a shipped part (see `chips`) or the path of a definition")
+    parser.add_argument("--rig", metavar="RIG", help=RIG_HELP)
+    parser.add_argument("--maker", metavar="NAME", help="the maker row, where the ID alone does not tell")
+    parser.add_argument(
+        "--range", metavar="FIRST..LAST", type=address_range, help="the words to work on, such as 0x0000..0x7FFF"
+    )
+    parser.add_argument(
+        "--accept-voltages",
+        metavar="HASH",
+        default="",
+        help="agree to the voltages of the definition with this hash (a refusal prints both)",
+    )
+
+
+def _image_options(parser: Parser) -> None:
+    parser.add_argument("image", metavar="IMAGE", help="Intel HEX or raw binary")
+    parser.add_argument(
+        "--origin", metavar="ADDR", type=address, default=0, help="image address that lands at chip address 0 (default 0)"
+    )
+    parser.add_argument(
+        "--fill", metavar="BYTE", type=byte, help="what belongs in words the image does not give (default: left alone)"
+    )
+
+
+def _changing(parser: Parser) -> None:
+    parser.add_argument("--no-save", action="store_true", help="do not keep a file of what the chip held")
+    parser.add_argument(
+        "--vouch", metavar="TEXT", default="", help="what is printed on the chip: only for parts without electronic ID"
+    )
+
+
+def add_commands(commands: Commands[Parser]) -> None:
+    """The commands of this group."""
+    raised = [HIGH_VOLTAGE, STATIC]
+
+    def one(name: str, handler: Handler, what: str, example: str, more: str = "", last: tuple[str, ...] = ()) -> Parser:
+        parser = add(
+            commands, name, handler, what=what, example=f"pulsewright {example}", more=more, cautions=[*raised, *last]
+        )
+        _common(parser)
+        return parser
+
+    one("identify", _identify, "seating check and ID bytes", "identify 27e512 --rig virtual")
+    reading = one("read", _read, "read a chip into a file", "read 27e512 --rig virtual --passes 2 -o saved.bin")
+    reading.add_argument("-o", metavar="FILE", dest="out", required=True, help="the file: .hex or .ihx, else raw binary")
+    reading.add_argument("--passes", metavar="N", type=count, default=1, help="read so often, and compare (default 1)")
+    one("blank-check", _blank, "is every word in the erased state", "blank-check 27e512 --rig virtual")
+    erasing = one(
+        "erase",
+        _erase,
+        "erase a chip to blank, proven",
+        "erase 27e512 --rig virtual",
+        "What the chip holds is read in two passes and saved first.",
+        (UV,),
+    )
+    _changing(erasing)
+    burning = one(
+        "burn",
+        _burn,
+        "burn an image, and verify it",
+        "burn 27e512 image.hex --rig virtual --erase",
+        "The chip is read in two passes and saved first; words that are right already are skipped. Each word is read back\n"
+        "as it is burnt, then the whole is verified at margins of VCC.",
+        (UV, LICENSED),
+    )
+    _image_options(burning)
+    burning.add_argument("--erase", action="store_true", help="erase first, if a word needs a 0 to become a 1")
+    _changing(burning)
+    verifying = one(
+        "verify", _verify, "compare a chip with an image", "verify 27e512 image.hex --rig virtual:tower", "", (LICENSED,)
+    )
+    _image_options(verifying)
+
+
+def _fitted(args: argparse.Namespace, definition: Definition) -> Fitted:
+    from pulsewright.image.load import load as load_image
+    from pulsewright.image.memory import fit
+
+    first, last = args.range or (0, None)
+    return fit(
+        load_image(args.image),
+        definition.words,
+        origin=args.origin,
+        fill=args.fill,
+        first=first,
+        last=last,
+        blank=definition.blank,
+        name=definition.name,
+    )
+
+
+def _run(
+    args: argparse.Namespace,
+    desk: Desk,
+    definition: Definition,
+    work: Callable[[JobContext], JobResult],
+) -> JobResult:
+    """Opens rig and session, runs one job, and closes both whatever happens."""
+    import sys
+
+    from pulsewright.cli.opening import opened
+    from pulsewright.jobs.context import JobContext, Options
+    from pulsewright.link.session import Session
+    from pulsewright.report.progress import LiveProgress, PlainProgress
+
+    first, last = args.range or (0, None)
+    options = Options(
+        first=first,
+        last=last,
+        passes=getattr(args, "passes", 1),
+        erase=getattr(args, "erase", False),
+        save=not getattr(args, "no_save", False),
+        vouch=getattr(args, "vouch", ""),
+        accepted=args.accept_voltages,
+    )
+    progress = LiveProgress(sys.stderr) if sys.stderr.isatty() else PlainProgress(sys.stderr)
+    with ExitStack() as stack:
+        rig_file, rig = stack.enter_context(opened(args.rig, definition.name, desk))
+        stop = stack.enter_context(Stop(desk))
+        session = Session(rig.transport, interrupted=stop, on_progress=progress.link)
+        session.connect()
+        context = JobContext(definition, rig_file, rig, session, options, progress, stop, prompt(desk))
+        return work(context)
+
+
+def _definition(args: argparse.Namespace) -> Definition:
+    from pulsewright.chip.load import load
+
+    return load(args.chip, maker=args.maker)
+
+
+def _answer(desk: Desk, result: JobResult) -> int:
+    return desk.answer(result.lines, result.facts)
+
+
+def _identify(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.identify import identify
+
+    return _answer(desk, _run(args, desk, _definition(args), identify))
+
+
+def _read(args: argparse.Namespace, desk: Desk) -> int:
+    from dataclasses import replace
+
+    from pulsewright.image.load import save
+    from pulsewright.jobs.read import read
+
+    result = _run(args, desk, _definition(args), read)
+    save(args.out, result.data)
+    return _answer(
+        desk, replace(result, lines=(*result.lines, f"written to {args.out}"), facts={**result.facts, "file": args.out})
+    )
+
+
+def _blank(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.blank import blank
+
+    return _answer(desk, _run(args, desk, _definition(args), blank))
+
+
+def _erase(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.erase import check_erasable, erase
+
+    definition = _definition(args)
+    check_erasable(definition)
+    return _answer(desk, _run(args, desk, definition, erase))
+
+
+def _burn(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.burn import burn
+    from pulsewright.jobs.erase import check_erasable
+
+    definition = _definition(args)
+    fitted = _fitted(args, definition)
+    if args.erase:
+        check_erasable(definition)
+    return _answer(desk, _run(args, desk, definition, lambda context: burn(context, fitted)))
+
+
+def _verify(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.verify import verify
+
+    definition = _definition(args)
+    fitted = _fitted(args, definition)
+    return _answer(desk, _run(args, desk, definition, lambda context: verify(context, fitted)))

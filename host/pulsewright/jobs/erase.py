@@ -1,0 +1,98 @@
+"""Erase: the part's own electrical erase, what was in it saved first."""
+
+from __future__ import annotations
+
+from pulsewright.chip.model import Definition
+from pulsewright.errors import UsageMistake, Where
+from pulsewright.jobs.context import JobContext, JobResult, job
+from pulsewright.jobs.identify import id_facts
+from pulsewright.jobs.plan import tries_of
+from pulsewright.jobs.read import read_agreed
+from pulsewright.jobs.record import crc_text, save_dump
+from pulsewright.link.results import RunResult
+from pulsewright.sequence.compile import compile_erase
+from pulsewright.units import show_mv
+
+# STMicroelectronics M2716 and M27C family sheets, section "Erasure operation": 15 W-s/cm2 at 253.7 nm.
+UV_DOSE = "at least 15 W·s/cm² at 253.7 nm: 15 to 20 minutes under a lamp of 12 mW/cm² at 2.5 cm, window bare and clean"
+
+
+def check_erasable(definition: Definition) -> None:
+    """UsageMistake for a part that no electrical erase clears; for a UV part it explains lamp and dose."""
+    if definition.erase is not None:
+        return
+    if definition.erase_kind == "uv":
+        raise UsageMistake(
+            f"{definition.name} is erased by UV light through its window, not by a rig",
+            where=Where(definition.path),
+            facts=[UV_DOSE, "UV-C harms eyes and skin within minutes: only in a closed box with a switch in its lid"],
+            hint="take it out of the socket, give it the dose, then blank-check",
+        )
+    raise UsageMistake(
+        f"{definition.name} has no erase in its definition",
+        where=Where(definition.path, key="erase"),
+        hint="a one-time part cannot be erased; else copy the data sheet's erase algorithm into the definition",
+    )
+
+
+def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[str, object], list[str]]:
+    """What the chip holds before it changes: read in two passes that agree, kept in a file unless the operator said no.
+
+    Gives the last pass, the facts and the lines of text.
+    """
+    result = read_agreed(ctx, "saving what the chip holds" if ctx.options.save else "first look", 2, first, last)
+    facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
+    if not ctx.options.save:
+        return result, facts, []
+    path = save_dump(ctx.definition, result.data, first)
+    ctx.progress.fact(f"saved to {path}")
+    facts["saved"] = str(path)
+    if ctx.record is not None:
+        ctx.record.content.update(facts)
+    return result, facts, [f"what the chip held (CRC-32 {crc_text(result.data)}) is saved in {path}"]
+
+
+def erase_whole(ctx: JobContext) -> tuple[str, dict[str, object]]:
+    """The erase itself: a line of text and facts; ChipFault when the pulses are used up."""
+    definition = ctx.definition
+    check_erasable(definition)
+    method = definition.erase
+    assert method is not None
+    ctx.progress.begin("erase", 0)
+    result = ctx.run(compile_erase(definition, ctx.rig))
+    most = tries_of(method)
+    verify = definition.modes.get("erase_verify", definition.modes["read"])
+    vcc_mv = definition.supplies[verify.vcc].typ_mv
+    pulses = result.tries
+    word = ctx.hex(definition.blank)
+    line = f"erased in {pulses} of {most} pulses; {definition.words} words read {word} at VCC {show_mv(vcc_mv)}"
+    ctx.progress.fact(line)
+    return line, {
+        **id_facts(definition, result),
+        "erase_pulses": pulses,
+        "erase_pulses_allowed": most,
+        "erase_verify_vcc_mv": vcc_mv,
+    }
+
+
+def _work(ctx: JobContext) -> JobResult:
+    definition = ctx.definition
+    _, facts, lines = save_first(ctx, 0, definition.words - 1)
+    line, more = erase_whole(ctx)
+    return JobResult((line, *lines), {**facts, **more, "words": definition.words})
+
+
+def erase(ctx: JobContext) -> JobResult:
+    """Erases the whole chip, proven word by word; UsageMistake for a part that light erases."""
+    check_erasable(ctx.definition)
+    whole = (ctx.first, ctx.last) == (0, ctx.definition.words - 1)
+    method = ctx.definition.erase
+    if not whole and method is not None and method.unit == "chip":
+        raise UsageMistake(
+            f"{ctx.definition.name} erases as a whole: a part of it cannot be erased",
+            where=method.where,
+            wanted="no --range",
+            got=ctx.span(),
+            hint="read what is to stay, erase, then burn it again",
+        )
+    return job(ctx, "erase", _work)

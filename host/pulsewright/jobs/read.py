@@ -1,0 +1,86 @@
+"""Read: the range in any number of passes, and which bytes the passes disagree about."""
+
+from __future__ import annotations
+
+from pulsewright.errors import Difference
+from pulsewright.jobs.context import JobContext, JobResult, job
+from pulsewright.jobs.identify import id_facts
+from pulsewright.jobs.plan import BLOCK_WORDS, unchanging_lines
+from pulsewright.jobs.record import crc_text
+from pulsewright.link.blocks import requests
+from pulsewright.link.results import RunResult
+from pulsewright.rig.model import RailStep
+from pulsewright.sequence.compile import compile_read
+from pulsewright.units import show_address
+
+LISTED = 16
+
+
+def read_once(
+    ctx: JobContext, title: str, first: int, last: int, *, mode: str = "read", rail_step: RailStep | None = None
+) -> RunResult:
+    """One pass over a range."""
+    ctx.progress.begin(title, last - first + 1)
+    sequence = compile_read(ctx.definition, ctx.rig, first, last, mode=mode, rail_step=rail_step)
+    return ctx.run(sequence, requests(first, last, BLOCK_WORDS))
+
+
+def disagreement(passes: list[bytes], first: int, words: int) -> list[str]:
+    """The bytes that the passes disagree about, as lines of text, at most LISTED and then how many more."""
+    places = [at for at, values in enumerate(zip(*passes, strict=True)) if len(set(values)) > 1]
+    lines = [
+        f"{show_address(first + at, words)}: " + ", ".join(f"{data[at]:02X}" for data in passes) for at in places[:LISTED]
+    ]
+    if len(places) > LISTED:
+        lines.append(f"and {len(places) - LISTED} more")
+    return lines
+
+
+def read_agreed(ctx: JobContext, why: str, passes: int, first: int, last: int) -> RunResult:
+    """A range read in so many passes that all agree; Difference lists the bytes where they do not."""
+    results = [
+        read_once(ctx, f"{why}, pass {number + 1} of {passes}" if passes > 1 else why, first, last)
+        for number in range(passes)
+    ]
+    lines = disagreement([result.data for result in results], first, ctx.definition.words)
+    if lines:
+        raise Difference(
+            f"{passes} passes do not agree",
+            wanted="the same bytes in every pass",
+            facts=lines,
+            did="VCC off; nothing was written",
+            hint="clean the contacts and read again; a chip whose bits fade reads differently at other VCC steps",
+        )
+    return results[-1]
+
+
+def _work(ctx: JobContext) -> JobResult:
+    definition = ctx.definition
+    result = read_agreed(ctx, "read", ctx.options.passes, ctx.first, ctx.last)
+    data = result.data
+    step = definition.supplies["VCC.read"].typ_mv
+    lines = [
+        f"{len(data)} words read, {ctx.span()}, {ctx.options.passes} "
+        f"{'passes, all agree' if ctx.options.passes > 1 else 'pass'}; CRC-32 {crc_text(data)}"
+    ]
+    blank = data.count(definition.blank)
+    lines.append(f"{blank} of them are {ctx.hex(definition.blank)}, the erased state")
+    still = unchanging_lines(data) if ctx.words == definition.words else []
+    if still:
+        names = ", ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in still)
+        lines.append(f"the data never changes with {names}: open pin or repeated image")
+    facts: dict[str, object] = {
+        **id_facts(definition, result),
+        "words": len(data),
+        "passes": ctx.options.passes,
+        "crc32": crc_text(data),
+        "blank_words": blank,
+        "unchanging_lines": [f"A{bit}" for bit in still],
+        "vcc_mv": step,
+    }
+    return JobResult(tuple(lines), facts, data)
+
+
+def read(ctx: JobContext) -> JobResult:
+    """The range's words in `data`; Difference if the passes disagree."""
+    return job(ctx, "read", _work)

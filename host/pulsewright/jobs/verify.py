@@ -1,0 +1,81 @@
+"""Verify: the chip against an image, at the margins of VCC that the definition names or the rig can make."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+
+from pulsewright.errors import CannotMake, Difference, PulsewrightError
+from pulsewright.image.compare import Comparison, compare
+from pulsewright.image.memory import Fitted
+from pulsewright.jobs.context import JobContext, JobResult, job
+from pulsewright.jobs.identify import id_facts
+from pulsewright.jobs.plan import VerifyStep, verify_steps
+from pulsewright.jobs.read import read_once
+from pulsewright.jobs.record import crc_text
+
+# A fading 0 shows first at a high VCC, an under-erased or slow 1 at a low one (design rule of the trade, common practice).
+FADING = "0s that read 1 show first at a high VCC: charge fades or the burn was too weak"
+UNDER_ERASED = "1s that read 0 show first at a low VCC: under-erased or slow"
+
+
+def verdicts(comparison: Comparison) -> list[str]:
+    """What the direction of the differences says."""
+    found = []
+    if comparison.burn_missing:
+        found.append(FADING)
+    if comparison.needs_erase:
+        found.append(UNDER_ERASED)
+    return found
+
+
+def passes_of(ctx: JobContext) -> tuple[VerifyStep, ...]:
+    """The passes; CannotMake where the rig has no step inside the window of VCC.read."""
+    steps = verify_steps(ctx.definition, ctx.rig)
+    if not steps:
+        raise CannotMake(
+            f"no VCC step of {ctx.rig.name} lies inside VCC.read of {ctx.definition.name} with its error",
+            did="nothing was sent",
+            hint="rig show lists the steps",
+        )
+    return steps
+
+
+def verify_passes(
+    ctx: JobContext, fitted: Fitted, first: int, last: int, failure: Callable[..., PulsewrightError]
+) -> tuple[list[str], dict[str, object]]:
+    """Reads a range at each pass and compares the used words; `failure` makes the error where one differs."""
+    want, used = fitted.data[first : last + 1], fitted.used[first : last + 1]
+    lines: list[str] = []
+    facts: dict[str, object] = {}
+    names = []
+    for step in passes_of(ctx):
+        result = read_once(ctx, f"verify, {step.text}", first, last, mode=step.mode, rail_step=step.rail_step)
+        facts = {**id_facts(ctx.definition, result), "after_crc32": crc_text(result.data)}
+        comparison = compare(bytes(first) + want, bytes(first) + result.data, bytes(first) + used)
+        if not comparison.equal:
+            raise failure(
+                f"{comparison.differing} of {comparison.compared} words differ at {step.text}",
+                facts=[*comparison.lines()[1:], *verdicts(comparison)],
+                did="VCC off",
+            )
+        lines.append(f"{comparison.compared} words verified at {step.text}")
+        names.append({"vcc": step.text, "words": comparison.compared})
+    return lines, {**facts, "verified": names}
+
+
+def check_against(ctx: JobContext, fitted: Fitted) -> JobResult:
+    """The verify job's work, without its record."""
+    crc = crc_text(fitted.data[ctx.first : ctx.last + 1])
+    if ctx.record is not None:
+        ctx.record.content["image_crc32"] = crc
+    lines, facts = verify_passes(ctx, fitted, ctx.first, ctx.last, _difference)
+    return JobResult(tuple(lines), {**facts, "image_crc32": crc, "words": len(fitted.used) - fitted.used.count(0)})
+
+
+def _difference(what: str, *, facts: list[str], did: str) -> PulsewrightError:
+    return Difference(what, facts=facts, did=did, hint="read --passes 2 tells whether the chip reads steadily")
+
+
+def verify(ctx: JobContext, fitted: Fitted) -> JobResult:
+    """Compares the used words of an image with the chip at every pass; Difference with classes of mismatch."""
+    return job(ctx, "verify", lambda context: check_against(context, fitted))
