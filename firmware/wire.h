@@ -2,7 +2,7 @@
 #ifndef PW_WIRE_H
 #define PW_WIRE_H
 
-#define PW_FINGERPRINT 0xA4572FA2ul
+#define PW_FINGERPRINT 0xA395DEEDul
 #define PW_LAYOUT 1u
 #define PW_ABORT_RUN 4u
 #define PW_HELLO_BAUD 38400ul

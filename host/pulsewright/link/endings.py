@@ -37,6 +37,7 @@ def result_of(outcome: Outcome, trouble: Trouble | None, rest: bytes, window: Wi
         data=window.data,
         blocks=tuple(sorted(window.results, key=lambda block: block.index)),
         counters=counters,
+        tries=done["tries"],
     )
 
 

@@ -80,7 +80,7 @@ class Counters:
 @dataclass(frozen=True)
 class RunResult:
     """How a sequence ended and what it brought. `readings`: (offset of the measure op, raw count); `matched`: which
-    of the permit's alternatives the ID bytes were (as the rig counts them)."""
+    of the permit's alternatives the ID bytes were (as the rig counts them); `tries`: the turn in which the last loop was left."""
 
     outcome: Outcome
     trouble: Trouble | None
@@ -90,6 +90,7 @@ class RunResult:
     data: bytes
     blocks: tuple[BlockDone, ...]
     counters: Counters
+    tries: int = 0
 
 
 @dataclass(frozen=True)

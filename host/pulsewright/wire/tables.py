@@ -226,7 +226,7 @@ class PollKind(IntEnum):
     TOGGLE_6_LIMIT_5 = 3
 
 
-FINGERPRINT: Final = 0xA4572FA2
+FINGERPRINT: Final = 0xA395DEED
 LAYOUT: Final = 1
 ABORT_RUN: Final = 4
 HELLO_BAUD: Final = 38400
@@ -362,7 +362,7 @@ FRAME_FIELDS: Final[dict[Frame, Fields]] = {
 }
 BLOBS: Final[dict[str, Fields]] = {
     'fault': (('code', 'u8'), ('op', 'u8'), ('pc', 'u16'), ('tick', 'u32'), ('got', 'u16'), ('low', 'u16'), ('high', 'u16'), ('address', 'u32'), ('sample', 'u16'), ('kept', 'u16'), ('pulsing', 'u8')),
-    'run_done': (('matched', 'u8'), ('blocks', 'u16'), ('words', 'u32')),
+    'run_done': (('matched', 'u8'), ('blocks', 'u16'), ('words', 'u32'), ('tries', 'u16')),
     'run_tail': (('id', 'u8*'), ('readings', 'bytes')),
     'status': (('state', 'u8'), ('gate', 'u8'), ('damaged', 'u16'), ('dropped', 'u16'), ('repeated', 'u16'), ('boot', 'u32')),
     'describe': (('board', 'u8*'), ('window_blocks', 'u8'), ('block_bytes', 'u16'), ('program_bytes', 'u16'), ('receive_bytes', 'u16'), ('driven_from', 'u16'), ('off_below', 'u16'), ('clear_above_vcc', 'u16'), ('fall_limit', 'u32'), ('off_limit', 'u32'), ('lines', 'u8'), ('data_lines', 'u8*'), ('rails', 'u8'), ('steps', 'u8'), ('switches', 'u8*'), ('vcc_switches', 'u8*'), ('top_baud', 'u32')),
