@@ -59,7 +59,8 @@ class Problem:
     warning: bool = False
 
     def __str__(self) -> str:
-        parts = [f"{self.where}: {'warning: ' if self.warning else ''}{self.what}"]
+        place = f"{self.where}: " if str(self.where) else ""
+        parts = [f"{place}{'warning: ' if self.warning else ''}{self.what}"]
         if self.found:
             parts.append(f"found {self.found}")
         if self.wanted:
