@@ -150,7 +150,7 @@ def _modes(tree: Tree) -> dict[str, Mode]:
     for name, entry in tree.plain.get("modes", {}).items():
         if not isinstance(entry, Mapping) or "VCC" not in entry or "D" not in entry:
             continue
-        levels = {role: level for role, level in entry.items() if role not in ("VCC", "D", "access", "from")}
+        levels = {role: level for role, level in entry.items() if role not in ("VCC", "D", "access")}
         access = entry.get("access", "")
         modes[name] = Mode(name, levels, entry["VCC"], entry["D"], access, tree.places.where(("modes", name)))
     return modes
@@ -183,8 +183,8 @@ def _rows(tree: Tree) -> tuple[MakerRow, ...]:
             if isinstance(cells, list)
         )
         overrides = flattened(overrides_of(tree.parsed.tree["makers"][index]))
-        row = MakerRow(entry.get("maker", ""), ids, overrides, tree.source_of((*path, "id")), tree.places.where(path))
-        rows.append(row)
+        source = tree.sources.get(path) or tree.source_of((*path, "id"))
+        rows.append(MakerRow(entry.get("maker", ""), ids, overrides, source, tree.places.where(path)))
     return tuple(rows)
 
 

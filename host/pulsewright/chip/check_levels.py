@@ -21,6 +21,7 @@ def check(found: Findings) -> None:
         _maxima(found, name, mode)
         _one_rail(found, name)
     _drives_against_outputs(found)
+    _plain_modes(found)
     _identify_mode(found)
     _timing(found)
 
@@ -180,6 +181,21 @@ def _drives_against_outputs(found: Findings) -> None:
             pattern = ", ".join(f"{role} {level}" for role, level in control_pattern(found, mode).items())
             what = "a mode that drives D against enabled outputs"
             found.at(("modes", name), what, found=f"{pattern}, as in {out}", wanted='D = "out" or "Z", or other levels')
+
+
+def _plain_modes(found: Findings) -> None:
+    """Reading and standby are where every job starts and ends: the chip drives D, or nobody, and nothing is raised."""
+    for name, data in (("read", "out"), ("standby", "Z")):
+        mode = found.defn.modes.get(name)
+        if mode is None:
+            continue
+        if mode.data != data:
+            found.at(
+                ("modes", name), f"{name} has another use of D", found=f"D = {mode.data!r}", wanted=f'D = "{data}"'
+            )
+        raised = ", ".join(f"{role} {step.name}" for role, step in found.raised_levels(name).items())
+        if raised:
+            found.at(("modes", name), f"{name} raises a level", found=raised, wanted="no raised level")
 
 
 def _identify_mode(found: Findings) -> None:

@@ -308,23 +308,26 @@ def _data_values(found: Findings, node: object, path: KeyPath, values: list[tupl
         for index, one in enumerate(node):
             if isinstance(one, int):
                 if not pair or index:
-                    _data(values, one, (*path, index))
+                    _data(found, values, one, (*path, index))
             else:
                 _data_values(found, one, (*path, index), values)
     elif isinstance(node, Mapping):
         for key, one in node.items():
             if isinstance(one, int):
-                if key in ("D", "data"):
-                    _data(values, one, (*path, key))
+                if key in ("D", "data", "value", "byte"):
+                    _data(found, values, one, (*path, key))
             elif key == "mode" and isinstance(one, str) and "D" not in node:
                 mode = found.defn.modes.get(one)
                 if mode is not None and isinstance(mode.data, int):
-                    _data(values, mode.data, (*path, key))
+                    _data(found, values, mode.data, (*path, key))
             else:
                 _data_values(found, one, (*path, key), values)
 
 
-def _data(values: list[tuple[int, KeyPath]], value: int, path: KeyPath) -> None:
-    """The same value held over several steps counts once."""
+def _data(found: Findings, values: list[tuple[int, KeyPath]], value: int, path: KeyPath) -> None:
+    """The same value held over several steps counts once; what is wider than a word is an address."""
+    if value >= 1 << found.defn.width:
+        return
+    value &= 0xFF  # word-wide parts take the code in the low byte
     if not values or values[-1][0] != value:
         values.append((value, path))

@@ -90,6 +90,14 @@ def _row_of(parsed: Parsed, maker: str) -> int:
     )
 
 
+def maker_needed(defn: Definition) -> list[str]:
+    """The makers for --maker to choose from, where no ID tells rows apart that differ in more than words; else []."""
+    harmful = any(not key.startswith("chip.") for row in defn.makers for key in row.overrides)
+    if defn.row is None and len(defn.makers) > 1 and harmful and any(not row.ids for row in defn.makers):
+        return [row.maker for row in defn.makers]
+    return []
+
+
 def shipped() -> list[Shipped]:
     """Every shipped definition by name, without reading more than its [chip] table."""
     return [_glance(path) for path in sorted(shipped_folder().glob("*.toml"))]

@@ -52,17 +52,22 @@ class Tree:
     written: Node = field(default_factory=dict)  # as `plain`, before wrong values were taken out
 
     def source_of(self, path: KeyPath) -> str:
-        """The source noted at a key or at one below it; `from memory` outweighs any other, "" is the chip's own."""
+        """The source noted at a key or below it, else at the nearest table around it; "" is the chip's own.
+
+        `from memory` outweighs any other below a key: a window is as good as its weakest limit.
+        """
         below = [text for at, text in self.sources.items() if at[: len(path)] == path]
-        return next((text for text in below if _MEMORY in text), below[0] if below else "")
+        if below:
+            return next((text for text in below if _MEMORY in text), below[0])
+        around = (self.sources.get(path[:length]) for length in range(len(path) - 1, 0, -1))
+        return next((text for text in around if text), "")
 
     def names(self, *path: str | int) -> tuple[str, ...]:
         """The names written in a table, the wrong ones included: a reference to those is no further mistake."""
         node: Any = self.written
         for part in path:
-            if isinstance(node, Mapping) and part in node:
-                node = node[part]
-            elif isinstance(node, list) and isinstance(part, int) and part < len(node):
+            in_list = isinstance(node, list) and isinstance(part, int) and part < len(node)
+            if in_list or (isinstance(node, Mapping) and part in node):
                 node = node[part]
             else:
                 return ()
@@ -117,14 +122,18 @@ def overrides_of(row: object) -> Node:
     return {key: value for key, value in row.items() if key in DEFINITION.keys and key not in ("makers", "format")}
 
 
-def flattened(tree: Mapping[str, Any], before: KeyPath = ()) -> dict[str, object]:
+def flattened(tree: Mapping[str, Any]) -> dict[str, object]:
     """Leaves of nested tables by dotted key."""
-    leaves: dict[str, object] = {}
+    return {dotted(path): value for path, value in _leaves(tree).items()}
+
+
+def _leaves(tree: Mapping[str, Any], before: KeyPath = ()) -> dict[KeyPath, object]:
+    leaves: dict[KeyPath, object] = {}
     for key, value in tree.items():
         if isinstance(value, Mapping) and value:
-            leaves.update(flattened(value, (*before, key)))
+            leaves.update(_leaves(value, (*before, key)))
         else:
-            leaves[dotted((*before, key))] = value
+            leaves[*before, key] = value
     return leaves
 
 
@@ -141,6 +150,8 @@ def resolve_tree(parsed: Parsed, row: int | None) -> Tree:
         if isinstance(merged.get(name), dict):
             _expand_method(merged[name], (name,), parsed, places, problems)
     sources: dict[KeyPath, str] = {}
+    if row is not None and isinstance(source := parsed.tree["makers"][row].get("from"), str):
+        sources.update(dict.fromkeys(_leaves(overrides_of(parsed.tree["makers"][row])), source))
     plain = _unwrapped(merged, (), sources)
     return Tree(parsed, row, merged, plain, sources, places, problems, plain)
 
@@ -191,7 +202,8 @@ def _unwrapped(value: Any, path: KeyPath, sources: dict[KeyPath, str]) -> Any:
             sources[path] = value["from"]
         if "value" in value and set(value) <= {"value", "from"}:
             return _unwrapped(value["value"], path, sources)
-        return {key: _unwrapped(one, (*path, key), sources) for key, one in value.items()}
+        rest = {key: one for key, one in value.items() if key != "from" or not isinstance(one, str)}
+        return {key: _unwrapped(one, (*path, key), sources) for key, one in rest.items()}
     if isinstance(value, list):
         return [_unwrapped(one, (*path, index), sources) for index, one in enumerate(value)]
     return value
