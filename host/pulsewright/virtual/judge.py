@@ -3,11 +3,6 @@
 It knows only `Limits`, typed by hand from the data sheet, and sees only levels and times; how the rig came to them is
 none of its business. A ramp is two calls: its begin, in which the pin is named with the level it still has, and its
 end. Times are ticks of 62.5 ns, levels millivolts.
-
-Rules, as named in a violation: absolute maximum, lowest level, above VCC (H11), supply order (H1, H4), rise time,
-raised window, unknown pulse, pulse width, pulse vcc, pulse data, pulse address, address / data / raised / vcc setup,
-address / data / raised hold, address / data in pulse, data not driven, floating input, recovery, access time,
-float time, identify level, bus fight (H6).
 """
 
 from __future__ import annotations
@@ -20,6 +15,13 @@ from pulsewright.virtual.judge_pulse import LONG_AGO, VIL_MV, PulseWatch
 
 ABOVE_VCC_MV = 300  # H11: no other pin stands more than this above VCC
 POWERED_MV = 500  # below, a chip drives nothing
+# every rule by the name a violation gives it
+RULES = (
+    *("absolute maximum", "lowest level", "above VCC", "supply order", "rise time", "raised window", "recovery"),
+    *("unknown pulse", "pulse width", "pulse vcc", "pulse data", "pulse address", "data not driven", "floating input"),
+    *("address setup", "data setup", "raised setup", "vcc setup", "address hold", "data hold", "raised hold"),
+    *("address in pulse", "data in pulse", "access time", "float time", "identify level", "bus fight"),
+)
 KEPT = 200  # violations kept in full; all are counted
 _ADDRESS, _DATA, _CONTROL = 1, 2, 4
 _NO_LEVEL = 1 << 30
@@ -57,6 +59,7 @@ class Judge:
         self._raised_windows = {pin: _windows_of(limits, pin) for pin in limits.raised_pins}
         self._watch = PulseWatch(limits, self._report)
         self._access = limits.access_ticks
+        self._vcc_pin = 0 if misplaced else limits.vcc_pin
         self._vcc_mv = 0
         self._vcc_window: tuple[int, int] | None = None
         self._vcc_t = LONG_AGO  # since when VCC stands in its window
@@ -96,6 +99,8 @@ class Judge:
     # ---- what the socket tells; each of these runs a million times a burn ----
 
     def edges(self, t: int, levels: Levels, changed: Sequence[int], driven: Sequence[int] | None = None) -> None:
+        if self._vcc_pin in changed:
+            self._vcc_edge(t, levels, changed)
         lo, hi, kind_of = self._lo, self._hi, self._kind_of
         kinds = 0
         for pin in changed:
@@ -173,15 +178,14 @@ class Judge:
     # ---- supplies, raised levels, enables ----
 
     def _control(self, t: int, levels: Levels, changed: Sequence[int]) -> None:
-        if self.limits.vcc_pin in changed:
-            self._vcc_edge(t, levels)
         for pin in changed:
             if pin in self._level:
                 self._raised_edge(t, pin, levels[pin])
         self._enables(t, levels)
-        self._watch.update(t, levels, self._raised, self._raised_t, self._vcc_t)
+        raised = self._raised if self._vcc_mv >= POWERED_MV else {}
+        self._watch.update(t, levels, raised, self._raised_t, self._vcc_t)
 
-    def _vcc_edge(self, t: int, levels: Levels) -> None:
+    def _vcc_edge(self, t: int, levels: Levels, changed: Sequence[int]) -> None:
         vcc = levels[self.limits.vcc_pin] or 0
         if vcc == self._vcc_mv:
             self._vcc_marker = t
@@ -204,6 +208,8 @@ class Judge:
             if level is not None and not self._lo[pin] <= level <= self._hi[pin]:
                 self._beyond(t, pin, level)
         for pin, level in self._level.items():
+            if pin in changed and levels[pin] != level:
+                continue  # moves with VCC: an edge of its own
             if level is None or level <= vcc + ABOVE_VCC_MV:
                 self._raised.pop(pin, None)
             elif pin not in self._raised:

@@ -110,7 +110,7 @@ class E512:
     def __init__(self) -> None:
         self.name = "27e512"
         self.pins = 28
-        self.outputs = D
+        self.outputs: tuple[int, ...] = D
         self.limits = LIMITS
         self.cells = bytearray(b"\xff" * 65_536)
         self.erased_word = 0xFF
