@@ -69,7 +69,11 @@ def _chip(args: argparse.Namespace, desk: Desk) -> int:
             lines += ["", f"{name}, by {method.unit}, bits {method.bits}", *algorithm(definition, method)]
     marked = memory_marked(definition)
     if marked:
-        lines += ["", "check against a data sheet before a chip that matters is burnt:", *(f"  {mark}" for mark in marked)]
+        lines += [
+            "",
+            "check against a data sheet before a chip that matters is burnt:",
+            *(f"  {mark}" for mark in marked),
+        ]
     return desk.answer(lines, _facts(definition, marked))
 
 
@@ -92,7 +96,12 @@ def _facts(definition: Definition, marked: list[str]) -> dict[str, object]:
         "package": definition.package,
         "pins": {role: list(pins) for role, pins in definition.pins.items()},
         "supplies": {
-            name: {"typ_mv": step.typ_mv, "min_mv": step.min_mv, "max_mv": step.max_mv, "limits_known": step.limits_known}
+            name: {
+                "typ_mv": step.typ_mv,
+                "min_mv": step.min_mv,
+                "max_mv": step.max_mv,
+                "limits_known": step.limits_known,
+            }
             for name, step in definition.supplies.items()
         },
         "makers": [row.maker for row in definition.makers],

@@ -5,38 +5,53 @@ from __future__ import annotations
 import argparse
 import json
 import os
+import re
 import signal
 import sys
 from collections.abc import Callable, Iterable, Mapping
 from types import FrameType
-from typing import NoReturn
+from typing import Any, NoReturn
 
 from pulsewright.errors import PulsewrightError, UsageMistake
 from pulsewright.units import UnitMistake, parse_address
 
 Handler = Callable[[argparse.Namespace, "Desk"], int]
 
-HIGH_VOLTAGE = (
-    "High voltage and hot parts: a rig raises pins to 12-14 V, others to 25 V. While its lamp says \"do not touch\", leave\n"
-    "chip, socket and wires alone. A chip that sat turned round can burn a finger."
-)
+HIGH_VOLTAGE = """\
+High voltage and hot parts: a rig raises pins to 12-14 V, for some parts to 25 V. While its lamp says "do not
+touch", leave chip, socket and wires alone. A chip that sat turned round can burn a finger."""
 STATIC = "Static: touch earth before a chip; seat and lift it only with the lamp off."
-UV = (
-    "UV-C: windowed parts are erased by a lamp that harms eyes and skin within minutes. Run it only in a closed box with\n"
-    "a switch in its lid, and never look at it."
-)
-LICENSED = (
-    "Where a failure can hurt someone - lifts, burners, brakes, medical devices - changing code is for licensed practice.\n"
-    "A proven burn says that the bytes are right, not that the machine is safe with them."
-)
+UV = """\
+UV-C: windowed parts are erased by a lamp that harms eyes and skin within minutes. Run it only in a closed box with
+a switch in its lid, and never look at it."""
+LICENSED = """\
+Where a failure can hurt someone - lifts, burners, brakes, medical devices - changing code is for licensed practice.
+A proven burn says that the bytes are right, not that the machine is safe with them."""
 
 
 class Parser(argparse.ArgumentParser):
-    """A parser whose complaints take the one form of all errors."""
+    """A parser whose complaints take the one form of all errors; `late` adds to its help what is costly to know."""
+
+    late: Callable[[], str] | None = None
+
+    def __init__(self, **settings: Any) -> None:
+        super().__init__(**settings, add_help=False)
+        self.add_argument("--help", action="help", help="show this text")
+
+    def format_help(self) -> str:
+        """The help, with the late part at its end."""
+        return super().format_help() + (f"\n{self.late()}\n" if self.late is not None else "")
 
     def error(self, message: str) -> NoReturn:
-        """UsageMistake instead of an exit of its own."""
-        raise UsageMistake(message, hint=f"{self.prog} --help")
+        """UsageMistake instead of an exit of its own, with the nearest right word where a word was not known."""
+        near = ""
+        unknown = re.search(r"invalid choice: '(.*?)' \(choose from (.*)\)", message)
+        if unknown:
+            import difflib
+
+            close = difflib.get_close_matches(unknown[1], re.findall(r"[\w-]+", unknown[2]), n=1)
+            near = f"{close[0]}, or " if close else ""
+        raise UsageMistake(message, hint=f"{near}{self.prog} --help")
 
 
 class Desk:
@@ -92,7 +107,9 @@ def add(
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )
-    parser.add_argument("--json", action="store_true", help="one JSON object on standard output, all else on standard error")
+    parser.add_argument(
+        "--json", action="store_true", help="one JSON object on standard output, all else on standard error"
+    )
     parser.set_defaults(handler=handler)
     return parser
 
@@ -129,8 +146,8 @@ def count(text: str) -> int:
 
 
 RIG_HELP = (
-    "where to work: a serial port (/dev/ttyACM0), a pySerial URL, `virtual` (a fresh virtual rig with the named chip, kept "
-    "nowhere) or `virtual:BENCH` (a kept one, see `bench new`)"
+    "where to work: a serial port (/dev/ttyACM0), a pySerial URL, `virtual` (a fresh virtual rig with the named chip, "
+    "kept nowhere) or `virtual:BENCH` (a kept one, see `bench new`)"
 )
 
 

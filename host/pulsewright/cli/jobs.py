@@ -51,7 +51,11 @@ def _common(parser: Parser) -> None:
 def _image_options(parser: Parser) -> None:
     parser.add_argument("image", metavar="IMAGE", help="Intel HEX or raw binary")
     parser.add_argument(
-        "--origin", metavar="ADDR", type=address, default=0, help="image address that lands at chip address 0 (default 0)"
+        "--origin",
+        metavar="ADDR",
+        type=address,
+        default=0,
+        help="image address that lands at chip address 0 (default 0)",
     )
     parser.add_argument(
         "--fill", metavar="BYTE", type=byte, help="what belongs in words the image does not give (default: left alone)"
@@ -78,7 +82,9 @@ def add_commands(commands: Commands[Parser]) -> None:
 
     one("identify", _identify, "seating check and ID bytes", "identify 27e512 --rig virtual")
     reading = one("read", _read, "read a chip into a file", "read 27e512 --rig virtual --passes 2 -o saved.bin")
-    reading.add_argument("-o", metavar="FILE", dest="out", required=True, help="the file: .hex or .ihx, else raw binary")
+    reading.add_argument(
+        "-o", metavar="FILE", dest="out", required=True, help="the file: .hex or .ihx, else raw binary"
+    )
     reading.add_argument("--passes", metavar="N", type=count, default=1, help="read so often, and compare (default 1)")
     one("blank-check", _blank, "is every word in the erased state", "blank-check 27e512 --rig virtual")
     erasing = one(
@@ -95,15 +101,20 @@ def add_commands(commands: Commands[Parser]) -> None:
         _burn,
         "burn an image, and verify it",
         "burn 27e512 image.hex --rig virtual --erase",
-        "The chip is read in two passes and saved first; words that are right already are skipped. Each word is read back\n"
-        "as it is burnt, then the whole is verified at margins of VCC.",
+        "The chip is read in two passes and saved first; words that are right already are skipped. Each word is read\n"
+        "back as it is burnt, then the whole is verified at margins of VCC.",
         (UV, LICENSED),
     )
     _image_options(burning)
     burning.add_argument("--erase", action="store_true", help="erase first, if a word needs a 0 to become a 1")
     _changing(burning)
     verifying = one(
-        "verify", _verify, "compare a chip with an image", "verify 27e512 image.hex --rig virtual:tower", "", (LICENSED,)
+        "verify",
+        _verify,
+        "compare a chip with an image",
+        "verify 27e512 image.hex --rig virtual:tower",
+        "",
+        (LICENSED,),
     )
     _image_options(verifying)
 

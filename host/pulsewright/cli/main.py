@@ -17,6 +17,7 @@ from pulsewright.errors import Interrupted, PulsewrightError
 TRACEBACK_VARIABLE = "PULSEWRIGHT_TRACEBACK"
 _PIPE_CLOSED = 0
 
+_EXAMPLE = "example, without any hardware:\n  pulsewright burn 27e512 image.hex --rig virtual --erase"
 _EXITS = (
     "exit codes: 0 done, 1 chip and image differ or a burn needs an erase, 2 wrong usage, file, image or definition,\n"
     "3 refused for safety, 4 the chip will not erase or program, 5 link or rig, 130 interrupted and made safe."
@@ -30,16 +31,7 @@ def make_parser() -> Parser:
     parser = Parser(
         prog="pulsewright",
         description="Burns EPROMs and EEPROMs with a programmer you build yourself, or on a virtual rig.",
-        epilog="\n\n".join(
-            [
-                "example, without any hardware:\n  pulsewright burn 27e512 image.hex --rig virtual --erase",
-                _EXITS,
-                HIGH_VOLTAGE,
-                STATIC,
-                UV,
-                LICENSED,
-            ]
-        ),
+        epilog=f"{_EXAMPLE}\n\n{_EXITS}\n\n{HIGH_VOLTAGE}\n\n{STATIC}\n\n{UV}\n\n{LICENSED}",
         formatter_class=argparse.RawDescriptionHelpFormatter,
         allow_abbrev=False,
     )

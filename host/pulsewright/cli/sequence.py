@@ -48,8 +48,8 @@ def _sequence(args: argparse.Namespace, desk: Desk) -> int:
     for one in sequences:
         proof = prove(one.code, one.permit, definition, rig)
         findings += len(proof.findings)
-        lines += [*sequence_lines(one, proof, rig), ""]
-        rows.append(sequence_facts(one, proof, rig))
+        lines += [*sequence_lines(one, proof, definition, rig), ""]
+        rows.append(sequence_facts(one, proof, definition, rig))
     summary = (
         f"{args.job} on {definition.name}: {len(sequences)} sequences, "
         f"{'all accepted by the proof' if not findings else f'{findings} findings of the proof'}"
@@ -79,4 +79,3 @@ def _hash(args: argparse.Namespace, definition: Definition) -> str:
         name=definition.name,
     )
     return sha256(fitted.data[first : definition.words if last is None else last + 1])
-

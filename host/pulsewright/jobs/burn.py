@@ -115,7 +115,9 @@ def _burn_words(ctx: JobContext, fitted: Fitted, to_write: bytes) -> tuple[str, 
 
 
 def _chip_fault(what: str, *, facts: list[str], did: str) -> PulsewrightError:
-    return ChipFault(f"burnt, but {what}", facts=facts, did=did, hint="erase and burn again; a chip that stays so is worn")
+    return ChipFault(
+        f"burnt, but {what}", facts=facts, did=did, hint="erase and burn again; a chip that stays so is worn"
+    )
 
 
 def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
@@ -148,7 +150,9 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     else:
         lines.append(f"nothing to burn: {needed.used} words are right already")
     verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault)
-    return JobResult((*lines, *verified, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing})
+    return JobResult(
+        (*lines, *verified, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
+    )
 
 
 def _prove_all(ctx: JobContext) -> None:
@@ -160,7 +164,7 @@ def _prove_all(ctx: JobContext) -> None:
 
 
 def burn(ctx: JobContext, fitted: Fitted) -> JobResult:
-    """Burns the used words of an image; Difference when an erase is needed and not asked for, ChipFault when it fails."""
+    """Burns the used words of an image; Difference: an erase is needed and was not asked for; ChipFault: it fails."""
     method_of(ctx)
     if ctx.options.erase:
         check_erasable(ctx.definition)

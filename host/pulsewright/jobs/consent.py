@@ -14,6 +14,7 @@ from pulsewright.files import read_whole, write_whole
 from pulsewright.jobs.state import consents_file, made
 from pulsewright.units import show_mv
 
+
 def voltages(definition: Definition) -> list[str]:
     """Every voltage of the mode table, in full: level, window, pin, absolute maximum, and where each is from."""
     lines = []
@@ -68,8 +69,8 @@ def check_consent(
 ) -> str:
     """H10: how the voltages were agreed to, as words for the record; ConsentNeeded when they were not.
 
-    `accepted` is the digest the operator gave; `ask` puts the question at a terminal, None where there is none. A digest
-    that is not this definition's is a UsageMistake: it was meant for another text.
+    `accepted` is the digest the operator gave; `ask` puts the question at a terminal, None where there is none. A
+    digest that is not this definition's is a UsageMistake: it was meant for another text.
     """
     if accepted and accepted.lower() != definition.digest:
         raise UsageMistake(

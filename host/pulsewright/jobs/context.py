@@ -249,20 +249,22 @@ def finding_text(sequence: Sequence, offset: int, text: str) -> str:
 def job(ctx: JobContext, name: str, work: Callable[[JobContext], JobResult]) -> JobResult:
     """Runs one job and leaves its record, whatever becomes of it; errors go on to the caller with the record's path."""
     record = Record(name, ctx.definition)
-    error: PulsewrightError | None = None
     try:
         ctx.ready(record)
         result = work(ctx)
-    except RunFailed as failed:
-        error = failed.error
-    except PulsewrightError as raised:
-        error = raised
-    finally:
         ctx.progress.end()
-    if error is not None:
-        path = record.write(error.what, error.exit_code, error)
-        error.facts = (*error.facts, f"record: {path}")
-        raise error
+    except RunFailed as failed:
+        raise _told(ctx, record, failed.error) from None
+    except PulsewrightError as error:
+        raise _told(ctx, record, error)  # noqa: B904 - it is the same error, raised on
     record.content.update(result.facts)
     path = record.write("; ".join(result.lines), 0)
     return JobResult(result.lines, {**result.facts, "record": str(path)}, result.data)
+
+
+def _told(ctx: JobContext, record: Record, error: PulsewrightError) -> PulsewrightError:
+    """The error, once its record is kept and named in it."""
+    ctx.progress.end()
+    path = record.write(error.what, error.exit_code, error)
+    error.facts = (*error.facts, f"record: {path}")
+    return error

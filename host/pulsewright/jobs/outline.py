@@ -13,9 +13,10 @@ from pulsewright.units import show_address
 
 
 def outline(definition: Definition, rig: Rig, job: str, first: int, last: int, data_sha256: str = "") -> list[Sequence]:
-    """Sequences of "identify", "read", "blank-check", "erase", "burn" or "verify"; CannotMake where the rig has no step.
+    """The sequences of "identify", "read", "blank-check", "erase", "burn" or "verify".
 
-    Saving reads twice with the same sequence: it stands once. UsageMistake: a range outside the chip, a UV part's erase.
+    Saving reads twice with the same sequence: it stands once. CannotMake: the rig has no such step; UsageMistake:
+    a range outside the chip, an erase of a UV part.
     """
     if not 0 <= first <= last < definition.words:
         raise UsageMistake(

@@ -92,10 +92,7 @@ def verify_steps(definition: Definition, rig: Rig) -> tuple[VerifyStep, ...]:
     chosen = [inside[0], inside[-1]] if inside else []
     if len(inside) == 1:
         chosen = inside
-    return tuple(
-        VerifyStep("read", step, f"VCC {show_mv(step.mv)} (±{show_mv(step.error_mv)})")
-        for step in chosen
-    )
+    return tuple(VerifyStep("read", step, f"VCC {show_mv(step.mv)} (±{show_mv(step.error_mv)})") for step in chosen)
 
 
 def _inside_read(definition: Definition, rig: Rig) -> list[RailStep]:

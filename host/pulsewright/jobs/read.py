@@ -29,7 +29,8 @@ def disagreement(passes: list[bytes], first: int, words: int) -> list[str]:
     """The bytes that the passes disagree about, as lines of text, at most LISTED and then how many more."""
     places = [at for at, values in enumerate(zip(*passes, strict=True)) if len(set(values)) > 1]
     lines = [
-        f"{show_address(first + at, words)}: " + ", ".join(f"{data[at]:02X}" for data in passes) for at in places[:LISTED]
+        f"{show_address(first + at, words)}: " + ", ".join(f"{data[at]:02X}" for data in passes)
+        for at in places[:LISTED]
     ]
     if len(places) > LISTED:
         lines.append(f"and {len(places) - LISTED} more")

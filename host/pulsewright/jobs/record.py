@@ -25,11 +25,10 @@ def crc_text(data: bytes) -> str:
 
 def source_marks(definition: Definition) -> list[str]:
     """Where the definition's numbers are from, each source once, the chip's own first."""
-    marks = [definition.source]
-    for entry in (*definition.supplies.values(), *definition.maxima.values(), *definition.timing.values()):
-        if entry.source and entry.source not in marks:
-            marks.append(entry.source)
-    return marks
+    sources = [entry.source for entry in definition.supplies.values()]
+    sources += [entry.source for entry in definition.maxima.values()]
+    sources += [entry.source for entry in definition.timing.values()]
+    return list(dict.fromkeys([definition.source, *(source for source in sources if source)]))
 
 
 @dataclass

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence as Many
+from collections.abc import Callable
+from collections.abc import Sequence as Many
 from dataclasses import dataclass
 
 from pulsewright.chip.model import Definition, IdCell
@@ -27,7 +28,9 @@ from pulsewright.wire.ops import Instruction, decode_instruction
 from pulsewright.wire.tables import Channel, Fail, Fault, Op, Outcome
 
 MADE_SAFE = "raised levels off, chip to its safe pattern, VCC off"
-IMITATION = "an image that imitates the ID has the same look: the 64 cells read alike with and without the identify level"
+IMITATION = (
+    "an image that imitates the ID has the same look: the 64 cells read alike with and without the identify level"
+)
 
 _TRIPS = {
     Fault.DEAD_MAN: "no word from this program for 500 ms",

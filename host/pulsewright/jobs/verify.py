@@ -13,7 +13,7 @@ from pulsewright.jobs.plan import VerifyStep, verify_steps
 from pulsewright.jobs.read import read_once
 from pulsewright.jobs.record import crc_text
 
-# A fading 0 shows first at a high VCC, an under-erased or slow 1 at a low one (design rule of the trade, common practice).
+# A fading 0 shows first at a high VCC, an under-erased or slow 1 at a low one (common practice).
 FADING = "0s that read 1 show first at a high VCC: charge fades or the burn was too weak"
 UNDER_ERASED = "1s that read 0 show first at a low VCC: under-erased or slow"
 

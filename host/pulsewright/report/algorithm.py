@@ -38,8 +38,11 @@ def _supplies(definition: Definition, mode: str) -> str:
 
 def _time(definition: Definition, name: str) -> str:
     window = definition.timing[name]
-    limits = [f"{word} {show_ps(limit)}" for word, limit in
-              (("at least", window.min_ps), ("at most", window.max_ps)) if limit is not None]
+    limits = [
+        f"{word} {show_ps(limit)}"
+        for word, limit in (("at least", window.min_ps), ("at most", window.max_ps))
+        if limit is not None
+    ]
     typ = f"{show_ps(window.typ_ps)} " if window.typ_ps is not None else ""
     return f"{typ}({name}: {', '.join(limits)})"
 

@@ -13,8 +13,10 @@ def table(head: Sequence[str], rows: Iterable[Sequence[str]]) -> list[str]:
     body = [list(row) for row in rows]
     widths = [max(len(row[column]) for row in [list(head), *body]) for column in range(len(head))]
     rule = ["-" * width for width in widths]
-    return ["  ".join(f"{cell:<{width}}" for cell, width in zip(row, widths, strict=True)).rstrip()
-            for row in [list(head), rule, *body]]
+    return [
+        "  ".join(f"{cell:<{width}}" for cell, width in zip(row, widths, strict=True)).rstrip()
+        for row in [list(head), rule, *body]
+    ]
 
 
 def _roles(definition: Definition) -> list[str]:
@@ -48,9 +50,14 @@ def mode_table(definition: Definition) -> list[str]:
 
 
 def window_text(step: SupplyStep) -> str:
-    """A step's voltage and window: "14.0 V (13.75 V to 14.25 V)"; says so where the limits are not published."""
-    window = f"{show_mv(step.typ_mv)} ({show_mv(step.min_mv)} to {show_mv(step.max_mv)})"
-    return window if step.limits_known else f"{window}, limits not published: typ ±5 % taken (common practice)"
+    """A step's voltage and window: "14.0 V (13.75 V to 14.25 V)"."""
+    return f"{show_mv(step.typ_mv)} ({show_mv(step.min_mv)} to {show_mv(step.max_mv)})"
+
+
+def source_text(step: SupplyStep) -> str:
+    """Where a step's numbers are from; says so where its limits are not published."""
+    unknown = "" if step.limits_known else "limits not published: typ ±5 % taken (common practice)"
+    return "; ".join(part for part in (step.source, unknown) if part)
 
 
 def supply_table(definition: Definition) -> list[str]:
@@ -60,7 +67,7 @@ def supply_table(definition: Definition) -> list[str]:
             step.name,
             window_text(step),
             show_ua(step.current_ua) if step.current_ua is not None else "not stated",
-            step.source,
+            source_text(step),
         ]
         for step in definition.supplies.values()
     ]
@@ -80,6 +87,8 @@ def timing_table(definition: Definition) -> list[str]:
     """The timing parameters: min, typ, max."""
     rows = []
     for window in definition.timing.values():
-        limits = [show_ps(limit) if limit is not None else "-" for limit in (window.min_ps, window.typ_ps, window.max_ps)]
+        limits = [
+            show_ps(limit) if limit is not None else "-" for limit in (window.min_ps, window.typ_ps, window.max_ps)
+        ]
         rows.append([window.name, *limits, window.source])
     return table(["timing", "min", "typ", "max", "from"], rows)

@@ -26,7 +26,7 @@ def pin_name(definition: Definition, pin: int) -> str:
 
 
 def positions_of(definition: Definition, rig: Rig) -> dict[int, int]:
-    """The position of the rig's first site that each package pin meets; empty when the site does not take the package."""
+    """The position of the rig's first site that each package pin meets; empty: the site does not take the package."""
     if definition.package not in rig.site.packages:
         return {}
     pins = PACKAGE_PINS[definition.package]

@@ -1,4 +1,4 @@
-"""How far a job is: a live line on a terminal, plain lines elsewhere. Facts only, words and time; colour says nothing."""
+"""How far a job is: a live line on a terminal, plain lines elsewhere. Words and time only; colour says nothing."""
 
 from __future__ import annotations
 
