@@ -76,7 +76,7 @@ class LiveProgress:
         self.end()
         self._title, self._words, self._done, self._began_s = title, words, 0, self._clock_s()
         self._live = Live(
-            get_renderable=self._text,
+            get_renderable=self.text,
             console=self._console,
             refresh_per_second=_REFRESHES_A_SECOND,
             transient=True,
@@ -85,7 +85,8 @@ class LiveProgress:
         )
         self._live.start()
 
-    def _text(self) -> str:
+    def text(self) -> str:
+        """The live line as it is now."""
         return progress_text(self._title, self._done, self._words, self._clock_s() - self._began_s)
 
     def link(self, progress: LinkProgress) -> None:

@@ -53,7 +53,9 @@ class Wording:
         if op is Op.RAIL:
             rail = self._rig.vcc if args["rail"] == RailNumber.VCC else self._rig.raised
             return f"rail {rail.name} to step {args['step']} ({show_mv(rail.step(args['step']).mv)})"
-        return " ".join([op.name.lower(), *(f"{name}={self._argument(op, name, value)}" for name, value in args.items())])
+        return " ".join(
+            [op.name.lower(), *(f"{name}={self._argument(op, name, value)}" for name, value in args.items())]
+        )
 
     def _argument(self, op: Op, name: str, value: object) -> str:
         if isinstance(value, bytes):
