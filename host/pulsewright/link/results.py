@@ -80,7 +80,8 @@ class Counters:
 @dataclass(frozen=True)
 class RunResult:
     """How a sequence ended and what it brought. `readings`: (offset of the measure op, raw count); `matched`: which
-    of the permit's alternatives the ID bytes were (as the rig counts them); `tries`: the turn in which the last loop was left."""
+    of the permit's alternatives the ID bytes were (as the rig counts them); `tries`: the turn in which the last loop
+    was left."""
 
     outcome: Outcome
     trouble: Trouble | None
