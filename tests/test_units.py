@@ -87,7 +87,7 @@ def test_a_printed_address_reads_back(at: int, words: int) -> None:
 
 @given(st.integers(0, 10**15))
 def test_rounding_goes_the_way_its_word_says(ps: int) -> None:
-    """At least is never shorter, at most never longer, nearest never off by more than half a tick; none by a whole one."""
+    """At least is never shorter, at most never longer, nearest off by half a tick at most; none by a whole tick."""
     exact = Fraction(ps, 62_500)
     at_least, at_most = units.ticks(ps, Rounding.AT_LEAST), units.ticks(ps, Rounding.AT_MOST)
     nearest = units.ticks(ps, Rounding.NEAREST)

@@ -1,4 +1,4 @@
-"""The 27E512 definition says what the fact table of the part says; the numbers below were typed from that table by hand.
+"""The 27E512 definition says what the fact table of the part says; the numbers were typed from that table by hand.
 
 Source: mode table of a sibling part number, first pages of two sibling sheets, and values recalled (`from memory`);
 the definition's own head and its `from` marks say which is which.
@@ -32,8 +32,9 @@ def test_size_and_package(part: Definition) -> None:
 
 def test_connection_diagram(part: Definition) -> None:
     """Each of the 28 pins has the role the sheet's drawing gives it."""
-    drawing = ("A15 A12 A7 A6 A5 A4 A3 A2 A1 A0 D0 D1 D2 GND D3 D4 D5 D6 D7 CE A10 OE A11 A9 A8 A13 A14 VCC").split()
-    assert [part.role_of(pin) for pin in range(1, 29)] == drawing
+    left = ["A15", "A12", *(f"A{bit}" for bit in range(7, -1, -1)), "D0", "D1", "D2", "GND"]
+    right = ["D3", "D4", "D5", "D6", "D7", "CE", "A10", "OE", "A11", "A9", "A8", "A13", "A14", "VCC"]
+    assert [part.role_of(pin) for pin in range(1, 29)] == left + right
     assert position_of(22, "DIP-28") == 24  # OE/VPP meets the raised position 24 of the byte-wide site
     assert position_of(24, "DIP-28") == 26  # A9 meets 26
 

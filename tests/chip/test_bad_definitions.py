@@ -1,7 +1,7 @@
 """Every mistake the checker knows, in a file of its own: the message stands as a comment on the offending line.
 
-`#! text` after a key: a problem on this very line whose message holds the text (several may follow one another, and a
-text that begins with a lower-case continuation is matched the same way). `#!file text`: a problem of the whole file.
+`#! text`: a problem on this very line whose message holds the text; several may follow one another. `#!file text`: a
+problem of the whole file.
 """
 
 from __future__ import annotations

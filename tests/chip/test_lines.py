@@ -6,6 +6,7 @@ import tomllib
 from pathlib import Path
 from typing import Any
 
+import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -150,9 +151,6 @@ def test_a_missing_key_gets_the_line_of_its_table() -> None:
 def test_where_tomllib_gives_up_is_the_line() -> None:
     """A syntax error has tomllib's line; at the end of the text, the last line that says something."""
     for text, wanted in (("a = 1\nb = = 2\n", 2), ("a = 1\na = 2\n", 2), ("a = 1\nb = [1,\n\n\n", 2)):
-        try:
+        with pytest.raises(tomllib.TOMLDecodeError) as caught:
             tomllib.loads(text)
-        except tomllib.TOMLDecodeError as mistake:
-            assert syntax_line(mistake, text)[0] == wanted
-        else:
-            raise AssertionError(text)
+        assert syntax_line(caught.value, text)[0] == wanted

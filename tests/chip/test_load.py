@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from dataclasses import replace
 from pathlib import Path
 
@@ -12,7 +13,7 @@ from hypothesis import strategies as st
 from pulsewright.chip.build import five_percent_mv, parse_maximum
 from pulsewright.chip.check import check_file
 from pulsewright.chip.load import find, is_shipped, load, maker_needed, memory_marked, shipped
-from pulsewright.chip.model import Definition, RepeatStep, Step
+from pulsewright.chip.model import Definition, EachStep, RepeatStep, Step
 from pulsewright.chip.shipped import shipped_folder
 from pulsewright.errors import DefinitionMistake, FileMistake, UsageMistake, Where
 from pulsewright.units import UnitMistake
@@ -311,7 +312,7 @@ def test_maxima_in_words() -> None:
 def test_the_tightest_window_lies_inside_each(
     tmp_path_factory: pytest.TempPathFactory, rows: list[tuple[int, int, int]]
 ) -> None:
-    """For drawn windows of two rows: the result is inside both and as wide as can be, or the checker says nothing fits."""
+    """The result for two drawn windows is inside both and as wide as can be, or the checker says nothing fits."""
     windows = [(low, low + up, low + up + more) for low, up, more in rows]
     (low, typ, high), (low2, typ2, high2) = windows
     text = TEXT.replace(
@@ -332,8 +333,6 @@ def test_the_tightest_window_lies_inside_each(
 
 def bare(steps: tuple[Step, ...]) -> list[str]:
     """Steps without their places."""
-    import re
-
     return [re.sub(r"where=Where\([^)]*\)", "", repr(step)) for step in steps]
 
 
@@ -381,7 +380,8 @@ def test_a_parameter_of_a_row_reaches_the_method(tmp_path: Path) -> None:
     def tries(part: Definition) -> int:
         assert part.program is not None
         [each] = part.program.steps
-        [repeat] = getattr(each, "steps", ())
+        assert isinstance(each, EachStep)
+        [repeat] = each.steps
         assert isinstance(repeat, RepeatStep)
         return repeat.max
 

@@ -314,7 +314,8 @@ class Table(Kind):
         if self.required:
             schema["required"] = list(self.required)
         if self.others is not None:
-            schema["patternProperties"] = {f"^(?:{self.names})$": self.others.described()}
+            known = "|".join(properties)  # a known key is not one of the others, even where its name fits
+            schema["patternProperties"] = {f"^(?!(?:{known})$)(?:{self.names})$": self.others.described()}
         return schema
 
 
