@@ -1,0 +1,167 @@
+"""A fault planted in the compiler for each safety rule that the proof can know: the proof refuses by that rule."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import replace
+from typing import Any
+
+import pytest
+
+from pulsewright.chip.load import load
+from pulsewright.chip.model import Definition, ExpectStep, Mode
+from pulsewright.rig.file import load_rig
+from pulsewright.rig.model import Rig
+from pulsewright.sequence import compile as compiler
+from pulsewright.sequence import lower, permits, seating
+from pulsewright.sequence.build import Builder
+from pulsewright.sequence.proof import prove
+from pulsewright.sequence.types import Sequence
+from pulsewright.units import Rounding, ticks
+from pulsewright.wire.permit import Permit
+from pulsewright.wire.tables import Identity, Op, Range
+
+Compile = Callable[[Definition, Rig], Sequence]
+
+
+def erase(definition: Definition, rig: Rig) -> Sequence:
+    return compiler.compile_erase(definition, rig)
+
+
+def burn(definition: Definition, rig: Rig) -> Sequence:
+    return compiler.compile_burn(definition, rig, 0, definition.words - 1, "")
+
+
+def forget_seated(patch: pytest.MonkeyPatch) -> None:
+    """H1: the looks with the bias, and `seated` itself, are left out."""
+
+    def idle(b: Builder) -> None:
+        b.set_lines(b.pins.control_levels(seating.standby(b)))
+        b.state.mode = "standby"
+
+    patch.setattr(seating, "bias_looks", idle)
+
+
+def forget_gate(patch: pytest.MonkeyPatch) -> None:
+    """H2: the work begins without the gate."""
+    patch.setattr(compiler, "pass_gate", lambda b: None)
+
+
+def step_too_high(patch: pytest.MonkeyPatch) -> None:
+    """H3: the raised rail's next higher step is taken."""
+    right = lower.choose_raised
+
+    def wrong(definition: Definition, rig: Rig, wanted: Any) -> Any:
+        return rig.raised.step(right(definition, rig, wanted).number + 1)
+
+    patch.setattr(lower, "choose_raised", wrong)
+
+
+def vcc_off_under_raised(patch: pytest.MonkeyPatch) -> None:
+    """H4: VCC is taken from the socket while a switch is closed."""
+    right = lower.close_switches
+
+    def wrong(b: Builder, mode: Mode) -> None:
+        right(b, mode)
+        b.emit(Op.RANGE, which=Range.OFF)
+
+    patch.setattr(lower, "close_switches", wrong)
+
+
+def wrong_permit(patch: pytest.MonkeyPatch, **changes: Any) -> None:
+    right = permits.make_permit
+
+    def wrong(*args: Any) -> Permit:
+        return replace(right(*args), **changes)
+
+    patch.setattr(compiler, "make_permit", wrong)
+
+
+def unsafe_pattern(patch: pytest.MonkeyPatch) -> None:
+    """H5: the permit's safe pattern is the one in which the chip drives D."""
+    wrong_permit(patch, safe=b"\x16\x18")
+
+
+def drive_against_outputs(patch: pytest.MonkeyPatch) -> None:
+    """H6: D is driven while the chip reads out."""
+    right = lower.Lowering._one
+
+    def wrong(self: lower.Lowering, step: Any) -> None:
+        if isinstance(step, ExpectStep):
+            self.b.emit(Op.DRIVE_WORD)
+        right(self, step)
+
+    patch.setattr(lower.Lowering, "_one", wrong)
+
+
+def pulse_too_long(patch: pytest.MonkeyPatch) -> None:
+    """H7: pulses are half as long again as the sheet allows."""
+
+    def wrong(ps: int, rounding: Rounding) -> int:
+        return ticks(ps, rounding) * 3 // 2 if rounding in (Rounding.NEAREST, Rounding.AT_MOST) else ticks(ps, rounding)
+
+    patch.setattr(lower, "ticks", wrong)
+
+
+def setup_too_short(patch: pytest.MonkeyPatch) -> None:
+    """H7: every wait is rounded down and halved."""
+
+    def wrong(self: Builder, ps: int) -> None:
+        self.emit(Op.WAIT, ticks=ps // 2 // 62_500)
+
+    patch.setattr(Builder, "wait", wrong)
+
+
+def level_unmeasured(patch: pytest.MonkeyPatch) -> None:
+    """H8: raised levels are used unmeasured."""
+    patch.setattr(lower, "measure_raised", lambda b, wanted: None)
+
+
+def identity_waived(patch: pytest.MonkeyPatch) -> None:
+    """H9: the permit asks for no identity though the part has one."""
+    wrong_permit(patch, identity=Identity.NONE)
+
+
+def vouch_smuggled(patch: pytest.MonkeyPatch) -> None:
+    """H9: the permit is vouched for though the part has an ID."""
+    wrong_permit(patch, identity=Identity.VOUCHED_NONE)
+
+
+PLANTED = [
+    ("H1", forget_seated, erase),
+    ("H2", forget_gate, burn),
+    ("H3", step_too_high, erase),
+    ("H3", step_too_high, burn),
+    ("H4", vcc_off_under_raised, erase),
+    ("H5", unsafe_pattern, burn),
+    ("H6", drive_against_outputs, burn),
+    ("H7", pulse_too_long, burn),
+    ("H7", pulse_too_long, erase),
+    ("H7", setup_too_short, burn),
+    ("H8", level_unmeasured, erase),
+    ("H8", level_unmeasured, burn),
+    ("H9", identity_waived, burn),
+    ("H9", vouch_smuggled, erase),
+]
+
+
+@pytest.mark.parametrize(("rule", "plant", "compile_it"), PLANTED, ids=lambda value: getattr(value, "__name__", value))
+def test_a_planted_fault_is_caught_by_its_rule(
+    rule: str, plant: Callable[[pytest.MonkeyPatch], None], compile_it: Compile, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """The proof accepts the true compiler's sequence, and refuses the faulty one's by the rule it breaks."""
+    definition, rig = load("27e512"), load_rig()
+    true = compile_it(definition, rig)
+    assert prove(true.code, true.permit, definition, rig).findings == ()
+    plant(monkeypatch)
+    faulty = compile_it(definition, rig)
+
+    assert rule in {finding.rule for finding in prove(faulty.code, faulty.permit, definition, rig).findings}
+
+
+def test_lines_kept_driven_into_a_low_vcc_are_caught() -> None:
+    """H11: compiled for a rig that drives high at any VCC, the erase is refused on the rig that does not."""
+    definition, rig = load("27e512"), load_rig()
+    faulty = compiler.compile_erase(definition, replace(rig, driven_from_mv=0))
+
+    assert "H11" in {finding.rule for finding in prove(faulty.code, faulty.permit, definition, rig).findings}
