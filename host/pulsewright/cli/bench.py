@@ -3,9 +3,135 @@
 from __future__ import annotations
 
 import argparse
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
 
 from pulsewright.cli.desk import Desk, Parser, add
+
+if TYPE_CHECKING:
+    from pulsewright.virtual.bench import Bench
+
+_SERVE = """\
+The rig's clock runs on by itself only to its next heartbeat or answer; --real-time paces it by the wall. The port's
+name is the first line of the answer; Ctrl-C ends it, and what the chip holds then is kept."""
 
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
+    group = commands.add_parser("bench", help="kept virtual sockets, each with a modelled chip", allow_abbrev=False)
+    inner = group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+    new = add(
+        inner,
+        "new",
+        _new,
+        what="make a kept bench: a virtual socket with a modelled chip, and faults if you like",
+        example="pulsewright bench new tower.bench --chip 27e512 --contents tower-dump.bin --fault slow=30,6",
+    )
+    new.add_argument("bench", metavar="BENCH", help="the file it is kept in; `--rig virtual:BENCH` then works on it")
+    new.add_argument("--chip", metavar="CHIP", required=True, help="the part whose model sits in the socket")
+    new.add_argument(
+        "--contents", metavar="WHAT", default="blank", help="blank (as it is without this), noise, noise:SEED, or an image file"
+    )
+    new.add_argument("--fault", metavar="NAME[=...]", action="append", default=[], help="a fault, as often as wanted")
+    new.add_argument("--model", metavar="FILE", help="a Python file with make_chip() -> ChipModel, instead of ours")
+    new.late = _faults_text
+    show = add(
+        inner,
+        "show",
+        _show,
+        what="show a bench's chip and contents, and all that its pins have seen",
+        example="pulsewright bench show tower.bench --json",
+    )
+    show.add_argument("bench", metavar="BENCH", help="the bench's file")
+    show.add_argument("--save", metavar="FILE", help="write the chip's contents: .hex or .ihx, else raw binary")
+    serve = add(
+        inner,
+        "serve",
+        _serve,
+        what="serve a bench's virtual rig behind a port of its own, for --rig",
+        example="pulsewright bench serve tower.bench",
+        more=_SERVE,
+    )
+    serve.add_argument("bench", metavar="BENCH", help="the bench's file")
+    serve.add_argument("--real-time", action="store_true", help="pace the rig's clock by the wall")
+
+
+def _faults_text() -> str:
+    from pulsewright.virtual.faults import FAULTS
+
+    names = {name: f"{name}={form}" if form else name for name, (form, _) in FAULTS.items()}
+    width = max(len(text) for text in names.values())
+    lines = [f"  {names[name]:<{width}}  {about}" for name, (_, about) in FAULTS.items()]
+    return "\n".join(["faults:", *lines])
+
+
+def _new(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.virtual.bench import Bench
+
+    name = _chip_name(args.chip)
+    contents: bytes | str = args.contents
+    if Path(args.contents).is_file():
+        contents = _image(args, name)
+    bench = Bench.new(args.bench, name, contents=contents, faults=args.fault, model=args.model)
+    facts = bench.report()
+    lines = [f"{args.bench}: {facts['chip']}, contents CRC-32 {facts['crc32']}"]
+    if args.fault:
+        lines.append(f"faults: {', '.join(args.fault)}")
+    return desk.answer(lines, {**facts, "bench": args.bench, "faults": args.fault})
+
+
+def _chip_name(given: str) -> str:
+    """The model's name: that of the definition, where a path is given."""
+    if not Path(given).is_file():
+        return given
+    from pulsewright.chip.load import load
+
+    return load(given).name
+
+
+def _image(args: argparse.Namespace, name: str) -> bytes:
+    from pulsewright.image.load import load as load_image
+    from pulsewright.image.memory import fit
+    from pulsewright.virtual.bench import Bench
+
+    chip = Bench(name, model=Path(args.model) if args.model else None).chip
+    return fit(load_image(args.contents), len(chip.cells), blank=chip.erased_word & 0xFF, name=name).data
+
+
+def _show(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.image.load import save
+    from pulsewright.virtual.bench import Bench
+
+    bench = Bench.load(args.bench)
+    facts = bench.report()
+    if args.save:
+        save(args.save, bytes(bench.chip.cells))
+        facts["saved"] = args.save
+    return desk.answer(_show_lines(bench, facts, args.save), {**facts, "faults": list(bench.faults.texts)})
+
+
+def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[str]:
+    from pulsewright.report.modes import table
+    from pulsewright.units import show_mv
+
+    lines = [f"{facts['chip']}, contents CRC-32 {facts['crc32']}"]
+    lines.append(f"faults: {', '.join(bench.faults.texts) or 'none'}")
+    rows = [[pin, show_mv(seen["max_mv"])] for pin, seen in facts["pins"].items()]
+    lines += table(["pin", "highest"], rows) if rows else ["its pins have seen nothing yet"]
+    lines.append(f"limits of the data sheet broken: {facts.get('violation_count', len(facts['violations']))}")
+    lines += [
+        f"  {one['rule']} at pin {one['pin']} after {one['at_us']} us: wanted {one['wanted']}, got {one['got']}"
+        for one in facts["violations"]
+    ]
+    lines += [f"stressed: {text}" for text in facts["stressed"]]
+    lines += [f"written by a probe: {text}" for text in facts["probe_wrote"]]
+    lines.append("the chip is damaged" if facts["damaged"] else "the chip is not damaged")
+    if saved:
+        lines.append(f"contents written to {saved}")
+    return lines
+
+
+def _serve(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.cli.opening import serve
+
+    return serve(args.bench, args.real_time, desk)
