@@ -46,6 +46,7 @@ _TRIPS = {
     Fault.BUS_CONFLICT: "data was to be driven while the chip may drive it",
     Fault.LINE_AT_RAISED: "a line at a raised position was at the wrong level",
     Fault.DRIVEN_TOO_LOW: "driven lines were wanted at a low VCC",
+    Fault.BIAS_REFUSED: "a weak pull was wanted that this moment does not allow",
     Fault.NOT_SEATED: "work was wanted before the seating check",
     Fault.NOT_MEASURED: "a raised level was wanted before its rail was measured",
 }
