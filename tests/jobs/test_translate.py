@@ -92,9 +92,7 @@ def test_a_failed_seating_names_the_contact(why: Fail, numbers: dict[str, int], 
 def test_a_measure_that_fails_while_seating_is_a_refusal_in_volts() -> None:
     """VCC pulled down through the probe resistor: wanted and got are volts by the rig's converter."""
     pc = measure_at(IDENTIFY, "seating", Channel.SOCKET_VCC)
-    error = error_of(
-        IDENTIFY, result(Outcome.TRIPPED, Fault.MEASURED_OUTSIDE, pc=pc, got=75, low=188, high=656)
-    )
+    error = error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.MEASURED_OUTSIDE, pc=pc, got=75, low=188, high=656))
     assert isinstance(error, SeatingRefused)
     assert error.got == "0.6 V (count 75)"
     assert error.wanted == "1.504 V to 5.248 V"

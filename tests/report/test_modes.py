@@ -11,8 +11,8 @@ def test_the_mode_table_shows_levels_where_the_definition_puts_them() -> None:
     """The erase row has 14 V at OE and A9, all addresses low, and FF on the data pins."""
     rows = {line.split()[0]: line.split() for line in mode_table(load("27e512"))}
     assert rows["mode"] == ["mode", "A", "CE", "OE", "A9", "VCC", "D"]
-    assert rows["erase"] == "erase L H 14.0 V VPP.erase 14.0 V VH.erase 5.0 V VCC.erase FF".split()
-    assert rows["read"] == "read address L L address 5.0 V VCC.read out".split()
+    assert rows["erase"] == ["erase", "L", "H", "14.0", "V", "VPP.erase", "14.0", "V", "VH.erase", "5.0", "V", "VCC.erase", "FF"]
+    assert rows["read"] == ["read", "address", "L", "L", "address", "5.0", "V", "VCC.read", "out"]
 
 
 def test_a_supply_without_published_limits_says_so() -> None:
@@ -28,8 +28,8 @@ def test_maxima_and_timing_show_their_limits_and_sources() -> None:
     """Each rating and window stands with its numbers, a limit that is not given as a dash."""
     assert "OE                14.5 V  from memory" in maxima_table(load("27e512"))
     rows = {line.split()[0]: line.split() for line in timing_table(load("27e512"))}
-    assert rows["tEW"] == "tEW 95 ms 100 ms 105 ms from memory".split()
-    assert rows["tACC"] == "tACC - - 150 ns".split()
+    assert rows["tEW"] == ["tEW", "95", "ms", "100", "ms", "105", "ms", "from", "memory"]
+    assert rows["tACC"] == ["tACC", "-", "-", "150", "ns"]
 
 
 def test_the_erase_algorithm_reads_as_numbered_steps() -> None:

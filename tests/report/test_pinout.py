@@ -7,8 +7,8 @@ from pulsewright.report.pinout import connection_diagram, pin_name
 from pulsewright.rig.file import load_rig
 
 # DIP-28 64K x 8, shared OE/VPP, from pin 1 down the left and from pin 28 down the right [S38, page 1].
-LEFT = "A15 A12 A7 A6 A5 A4 A3 A2 A1 A0 D0 D1 D2 GND".split()
-RIGHT = "VCC A14 A13 A8 A9 A11 OE/VPP A10 CE D7 D6 D5 D4 D3".split()
+LEFT = ["A15", "A12", "A7", "A6", "A5", "A4", "A3", "A2", "A1", "A0", "D0", "D1", "D2", "GND"]
+RIGHT = ["VCC", "A14", "A13", "A8", "A9", "A11", "OE/VPP", "A10", "CE", "D7", "D6", "D5", "D4", "D3"]
 
 
 def test_the_diagram_names_each_pin_as_the_data_sheet_does() -> None:

@@ -30,7 +30,10 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     new.add_argument("bench", metavar="BENCH", help="the file it is kept in; `--rig virtual:BENCH` then works on it")
     new.add_argument("--chip", metavar="CHIP", required=True, help="the part whose model sits in the socket")
     new.add_argument(
-        "--contents", metavar="WHAT", default="blank", help="blank (as it is without this), noise, noise:SEED, or an image file"
+        "--contents",
+        metavar="WHAT",
+        default="blank",
+        help="blank (as it is without this), noise, noise:SEED, or an image file",
     )
     new.add_argument("--fault", metavar="NAME[=...]", action="append", default=[], help="a fault, as often as wanted")
     new.add_argument("--model", metavar="FILE", help="a Python file with make_chip() -> ChipModel, instead of ours")

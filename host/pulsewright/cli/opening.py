@@ -1,0 +1,36 @@
+"""Rig file and rig together, for a command: opened, said what it is, closed whatever happens."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from contextlib import contextmanager
+from typing import TYPE_CHECKING
+
+from pulsewright.cli.desk import Desk
+from pulsewright.errors import UsageMistake
+
+if TYPE_CHECKING:
+    from pulsewright.link.open import OpenRig
+    from pulsewright.rig.model import Rig
+
+
+@contextmanager
+def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tuple[Rig, OpenRig]]:
+    """The rig file and the open rig of a `--rig` name; UsageMistake when none is given."""
+    if name is None:
+        raise UsageMistake(
+            "no rig is named, and none is configured",
+            wanted="--rig with a serial port, a pySerial URL, virtual, or virtual:BENCH",
+            hint="--rig virtual to try it without hardware",
+        )
+    from pulsewright.link.open import open_rig
+    from pulsewright.rig.file import load_rig
+
+    rig_file = load_rig()
+    rig = open_rig(name, chip_name)
+    try:
+        if rig.in_process:
+            desk.say("virtual rig: no hardware is touched")
+        yield rig_file, rig
+    finally:
+        rig.close()
