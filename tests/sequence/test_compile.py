@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
 import pytest
@@ -28,15 +29,18 @@ US = 16  # ticks
 
 @pytest.fixture(scope="module")
 def definition() -> Definition:
+    """The shipped definition."""
     return load("27e512")
 
 
 @pytest.fixture(scope="module")
 def rig() -> Rig:
+    """The reference rig."""
     return load_rig()
 
 
 def everything(definition: Definition, rig: Rig) -> list[Sequence]:
+    """All five sequences over the whole chip."""
     last = definition.words - 1
     return [
         compile_identify(definition, rig),
@@ -48,6 +52,7 @@ def everything(definition: Definition, rig: Rig) -> list[Sequence]:
 
 
 def ops_of(sequence: Sequence, op: Op) -> list[Instruction]:
+    """The instructions of one op."""
     return [instruction for _, instruction in decode_program(sequence.code).code if instruction.op is op]
 
 
@@ -66,8 +71,7 @@ def test_work_names_the_line_of_the_definition(definition: Definition, rig: Rig)
     origin = sequence.origin_at(offset)
 
     assert origin is not None
-    with open(definition.path) as file:
-        line = file.read().splitlines()[origin.where.line - 1]
+    line = Path(definition.path).read_text().splitlines()[origin.where.line - 1]
     assert '{ pulse = "CE", to = "L", time = "tEW" }' in line
 
 

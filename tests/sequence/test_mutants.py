@@ -12,7 +12,6 @@ from collections.abc import Callable
 from dataclasses import replace
 
 import pytest
-from tests.sequence.mutate import Mutant, mutants
 
 from pulsewright.chip.load import load
 from pulsewright.chip.model import Definition
@@ -33,6 +32,7 @@ from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Sequence
 from pulsewright.virtual.bench import Bench
 from pulsewright.wire.tables import Outcome
+from tests.sequence.mutate import Mutant, mutants
 
 LAST = 7  # reading and burning eight words shows what 65536 would
 DATA = bytes([0x00, 0xFF, 0x55, 0xAA, 0x01, 0x80, 0x7F, 0xFE])
@@ -47,6 +47,7 @@ KINDS: dict[str, Callable[[Definition, Rig], Sequence]] = {
 
 
 def blocks_for(kind: str) -> list[Block] | None:
+    """The host's blocks of a sequence; reading asks by itself."""
     return [Block(0, LAST + 1, None, DATA)] if kind == "burn" else None
 
 
@@ -117,7 +118,9 @@ def test_no_mutant_is_accepted_and_dirty(kind: str, capsys: pytest.CaptureFixtur
             wrong.append(str(mutant))
     with capsys.disabled():
         counts = ", ".join(f"{count} {name}" for name, count in sorted(tally.items()))
-        print(f"\n{kind}: {tally.total()} mutants: {counts}; clean yet wrong: {wrong or 'none'}")
+        print(  # noqa: T201 - the counts are part of what this test is for
+            f"\n{kind}: {tally.total()} mutants: {counts}; clean yet wrong: {wrong or 'none'}"
+        )
 
     assert tally["refused"] > 0
     assert dirty == []

@@ -25,10 +25,12 @@ Compile = Callable[[Definition, Rig], Sequence]
 
 
 def erase(definition: Definition, rig: Rig) -> Sequence:
+    """The erase."""
     return compiler.compile_erase(definition, rig)
 
 
 def burn(definition: Definition, rig: Rig) -> Sequence:
+    """The burn of the whole chip."""
     return compiler.compile_burn(definition, rig, 0, definition.words - 1, "")
 
 
@@ -69,6 +71,7 @@ def vcc_off_under_raised(patch: pytest.MonkeyPatch) -> None:
 
 
 def wrong_permit(patch: pytest.MonkeyPatch, **changes: Any) -> None:
+    """A permit with other values than the compiler would give it."""
     right = permits.make_permit
 
     def wrong(*args: Any) -> Permit:
