@@ -1,0 +1,84 @@
+"""H7's numbers in ticks, from the definition's windows and the rig's rise and fall times; minima up, maxima down."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+from pulsewright.chip.model import Definition
+from pulsewright.rig.model import Rig
+from pulsewright.sequence.proof.algorithm import Pulse
+from pulsewright.sequence.proof.modes import Row
+from pulsewright.sequence.proof.state import State
+from pulsewright.units import Rounding, ticks
+
+
+def at_least(ps: int) -> int:
+    """Ticks that last `ps` or longer."""
+    return ticks(ps, Rounding.AT_LEAST)
+
+
+def at_most(ps: int) -> int:
+    """Ticks that last `ps` or shorter."""
+    return ticks(ps, Rounding.AT_MOST)
+
+
+@dataclass(frozen=True)
+class Timing:
+    """The definition's parameters by their trade names, 0 where it does not give one; picoseconds."""
+
+    definition: Definition
+    rig: Rig
+
+    def least(self, *names: str) -> int:
+        """The longest minimum among the named parameters."""
+        found = [self.definition.timing[name].min_ps or 0 for name in names if name in self.definition.timing]
+        return max(found, default=0)
+
+    def most(self, *names: str) -> int:
+        """The longest maximum among the named parameters."""
+        found = [self.definition.timing[name].max_ps or 0 for name in names if name in self.definition.timing]
+        return max(found, default=0)
+
+    def line_ps(self, state: State) -> int:
+        """How long an edge of a line may take, either way."""
+        up = self.rig.driven_rise_ps if state.driven else self.rig.released_rise_ps.get(state.vcc)
+        if up is None:  # a step for which the rig file has no figure: the slowest it knows
+            up = max(self.rig.released_rise_ps.values(), default=self.rig.driven_rise_ps)
+        return max(up, self.rig.line_fall_ps)
+
+    def rise_ps(self, mask: int) -> int:
+        """Longest rise of the raised switches in a mask."""
+        return max((one.rise_ps for one in self.rig.switches if mask >> one.number & 1), default=0)
+
+    def fall_ps(self, mask: int) -> int:
+        """Longest fall of the raised switches in a mask."""
+        return max((one.fall_ps for one in self.rig.switches if mask >> one.number & 1), default=0)
+
+    def access_ps(self, row: Row) -> tuple[int, int]:
+        """Longest time from an address, and from a control edge, to data valid in a row."""
+        if row.access:
+            bound = self.most(row.access)
+            return bound, bound
+        return self.most("tACC"), self.most("tCE", "tOE")
+
+    @property
+    def float_ps(self) -> int:
+        """Longest time the chip holds D after its outputs were disabled."""
+        return self.most("tDF", "tHZ")
+
+    def recovery_ticks(self, mask: int) -> int:
+        """From raised switches opened to the next enabling edge: the level gone, then the recovery time."""
+        return at_least(self.fall_ps(mask) + self.least("tVR")) if mask else 0
+
+    def fall_ticks(self, mask: int) -> int:
+        """From raised switches opened to their levels gone."""
+        return at_least(self.fall_ps(mask))
+
+    def hold_ticks(self, kind: str, pulse: Pulse | None, state: State) -> int:
+        """From the end of a pulse to the next edge of a kind: address, data, raised, control or vcc."""
+        names = {
+            "address": ("tAH",), "data": ("tDH",), "raised": ("tVH",), "control": (),
+            "vcc": ("tAH", "tDH", "tVH"),
+        }[kind]  # fmt: skip
+        after = 0 if pulse is None else pulse.after_ps
+        return at_least(max(self.least(*names), after) + self.line_ps(state))
