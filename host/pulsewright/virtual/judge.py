@@ -64,7 +64,7 @@ class Judge:
         self._vcc_window: tuple[int, int] | None = None
         self._vcc_t = LONG_AGO  # since when VCC stands in its window
         self._vcc_marker: int | None = None
-        self._level: dict[int, int | None] = dict.fromkeys(limits.raised_pins)
+        self._level: dict[int, int | None] = dict.fromkeys(limits.raised_pins, 0)  # at rest every line is low
         self._marker: dict[int, int] = {}
         self._raised: dict[int, int] = {}  # what stands above VCC + 0.3 V now
         self._raised_t: dict[int, int] = dict.fromkeys(limits.raised_pins, LONG_AGO)
@@ -120,6 +120,8 @@ class Judge:
                 watch.data_moved(t, next(pin for pin in changed if kind_of[pin] == _DATA))
         if kinds & _CONTROL:
             self._control(t, levels, changed)
+        if driven and not (self._enabled or self._misplaced) and t >= self._off_t + self.limits.float_ticks:
+            self._fight(t, f"both drove {len(driven)} pins with the outputs off")
 
     def sampled(self, t: int) -> None:
         if self._misplaced:
