@@ -78,7 +78,7 @@ class Board:
     def drop_mv(self, position: int, load_ua: int) -> int:
         """What a closed raised switch loses at a load."""
         if position == self.limiter_position:
-            return self.limiter_drop_mv + load_ua * self.limiter_ohm // 1_000_000
+            return self.limiter_drop_mv + load_ua * self.limiter_ohm // 1_000
         return load_ua * self.raised_ohm_tenths // 10_000
 
     def page(self, number: int) -> bytes | None:
