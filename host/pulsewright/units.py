@@ -108,6 +108,11 @@ def show_ticks(count: int) -> str:
     return show_ps(count * PS_PER_TICK)
 
 
+def show_count(count: int, noun: str) -> str:
+    """A count with its noun: "1 word", "3 words"."""
+    return f"{count} {noun}" if count == 1 else f"{count} {noun}s"
+
+
 def parse_address(text: str) -> int:
     """An address or size: decimal, 0x1F0, or with K or M (x 1024, x 1024 x 1024); UnitMistake otherwise."""
     match = re.fullmatch(r"\s*(0[xX][0-9A-Fa-f]+|\d+)\s*([KM]?)\s*", text)
