@@ -6,6 +6,7 @@ Times are ticks of 62.5 ns, levels millivolts.
 from __future__ import annotations
 
 from collections.abc import Callable
+from operator import itemgetter
 
 from pulsewright.units import show_mv, show_ticks
 from pulsewright.virtual.interface import Levels, Limits, PulseLimit
@@ -50,6 +51,8 @@ class PulseWatch:
         self._limits = limits
         self._report = report
         self._active = {pulse.pin: pulse.active_low for pulse in limits.pulses}
+        self._inputs_of = itemgetter(*limits.address_pins, *limits.enable_pins, *limits.data_pins)
+        self._clean: set[int] = set()  # levels that are low or high
         self.seen = Seen()
         self._names = {
             pulse.name: [(what, f"{pulse.name} {what} setup", least) for what, least in pulse.setup_ticks.items()]
@@ -126,19 +129,26 @@ class PulseWatch:
         self._inputs(t, kind, levels)
 
     def _inputs(self, t: int, kind: PulseLimit, levels: Levels) -> None:
+        if not self._clean.issuperset(self._inputs_of(levels)):
+            self._look_at_inputs(t, levels)
+        for pin in kind.low_pins:
+            level = levels[pin]
+            if level is not None and level > VIL_MV:
+                self._report("pulse address", pin, t, "low", show_mv(level))
+        if not self.driving:
+            self._report("data not driven", self._limits.data_pins[0], t, "D driven by the rig", "D released")
+        self._check_data(t, kind, levels)
+
+    def _look_at_inputs(self, t: int, levels: Levels) -> None:
+        """Some input has a level that was not seen before: is it neither low nor high?"""
         limits = self._limits
         for pin in (*limits.address_pins, *limits.enable_pins, *limits.data_pins):
             level = levels[pin]
             if level is None or VIL_MV < level < VIH_MV:
                 wanted = f"up to {show_mv(VIL_MV)}, or {show_mv(VIH_MV)} and more"
                 self._report("floating input", pin, t, wanted, _shown(level))
-        for pin in kind.low_pins:
-            level = levels[pin]
-            if level is not None and level > VIL_MV:
-                self._report("pulse address", pin, t, "low", show_mv(level))
-        if not self.driving:
-            self._report("data not driven", limits.data_pins[0], t, "D driven by the rig", "D released")
-        self._check_data(t, kind, levels)
+            else:
+                self._clean.add(level)
 
     def _check_data(self, t: int, kind: PulseLimit, levels: Levels) -> None:
         if kind.data is None:

@@ -22,6 +22,7 @@ NOT_A9 = tuple(pin for pin in A if pin != A9)
 
 # Levels, mV
 VIL, VIH = 800, 2000  # TTL levels: common practice
+HIGH = 5000  # any level above VIH will do
 VCC_5V = (4750, 5250)  # 5 V in every mode [S37], limits unknown: +-5 %, common practice
 VCC_VERIFY = (3563, 3937)  # 3.75 V [S37], limits unknown: +-5 %, common practice
 VPP_PROGRAM = (11750, 12250)  # 12 V [S37], limits from memory
@@ -125,7 +126,7 @@ class E512:
         self._begun: dict[int, tuple[int, int]] = {}  # address -> ticks at the program level so far, with which data
         self._erased_ticks = 0  # at the erase levels since the last program pulse
         # Any, not int | None: comparisons with None are caught once, in _address, instead of asked for 16 times
-        self._levels: Any = (None,) * 29
+        self._levels: Any = [None] * 29  # raised levels as HIGH; the levels themselves in _oe and _a9
         self._harmless: set[int | None] = {None}
         self._ce: int | None = None
         self._oe: int | None = None
@@ -171,19 +172,27 @@ class E512:
     # ---- the pins; these run a million times a burn, so they look first at what usually did not change ----
 
     def pins_changed(self, t: int, levels: Levels) -> None:
-        if not self._harmless.issuperset(levels):
-            self._look_at_levels(levels)
-        self._levels = levels[:]
+        v = self._levels = list(levels)
+        oe, a9 = v[OE], v[A9]
+        if oe is not None and oe > MOST:
+            if oe > MOST_RAISED:
+                self._destroy(OE, oe)
+            v[OE] = HIGH
+        if a9 is not None and a9 > MOST:
+            if a9 > MOST_RAISED:
+                self._destroy(A9, a9)
+            v[A9] = HIGH
+        if not self._harmless.issuperset(v):
+            self._look_at_levels(v)
         self._word = -1
-        a9 = levels[A9]
-        if levels[CE] == self._ce and levels[OE] == self._oe and levels[VCC] == self._vcc:
+        if v[CE] == self._ce and oe == self._oe and v[VCC] == self._vcc:
             if a9 == self._a9 or not (self._a9_raised or a9 is None or a9 > MOST):
                 self._a9 = a9
                 self._valid_at = max(self._valid_at, t + ACCESS)
                 if self._mode:
                     self._moved_in_pulse(t)
                 return
-        self._control(t, levels[CE], levels[OE], a9, levels[VCC])
+        self._control(t, v[CE], oe, a9, v[VCC])
 
     def drive(self, t: int) -> tuple[int, int]:
         if self._enabled:
@@ -268,7 +277,20 @@ class E512:
     def _data(self) -> int:
         """What stands on D; a pin that nothing drives counts as low, so that a missing drive shows in the cell."""
         v = self._levels
-        return sum((v[pin] is not None and v[pin] >= VIH) << bit for bit, pin in enumerate(D))
+        try:
+            data: int = (
+                (v[11] >= VIH)
+                | (v[12] >= VIH) << 1
+                | (v[13] >= VIH) << 2
+                | (v[15] >= VIH) << 3
+                | (v[16] >= VIH) << 4
+                | (v[17] >= VIH) << 5
+                | (v[18] >= VIH) << 6
+                | (v[19] >= VIH) << 7
+            )
+            return data
+        except TypeError:
+            return sum((v[pin] is not None and v[pin] >= VIH) << bit for bit, pin in enumerate(D))
 
     def _read(self) -> int:
         address = self._address()
@@ -361,16 +383,14 @@ class E512:
 
     # ---- what must not happen ----
 
-    def _look_at_levels(self, levels: Levels) -> None:
-        """Some level was not seen before, or is raised: is one past the pin's absolute maximum?"""
+    def _look_at_levels(self, levels: list[int | None]) -> None:
+        """Some level was not seen before: is it past the absolute maximum of all pins but OE/VPP and A9?"""
         for pin in range(1, self.pins + 1):
             level = levels[pin]
-            if level is None:
-                continue
-            if level <= MOST:
-                self._harmless.add(level)
-            elif level > (MOST_RAISED if pin in {OE, A9} else MOST):
+            if level is not None and level > MOST:
                 self._destroy(pin, level)
+            else:
+                self._harmless.add(level)
 
     def _destroy(self, pin: int, level: int) -> None:
         if not self.damaged:

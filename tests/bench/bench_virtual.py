@@ -1,0 +1,110 @@
+"""What a call costs: chip model and judge under the edges of a burn and of a read, in nanoseconds of processor time.
+
+Run from the top folder: `python -m tests.bench.bench_virtual`. It asserts nothing; the machine decides the numbers.
+"""
+
+from __future__ import annotations
+
+import sys
+import time
+from collections.abc import Callable, Sequence
+
+from pulsewright.virtual.interface import Levels
+from pulsewright.virtual.judge import Judge
+from pulsewright.virtual.models.e512 import LIMITS, make_chip
+from tests.virtual.waveform import CE, OE, US, Bus
+
+WORDS = 4_096
+Call = tuple[Callable[..., object], tuple[object, ...]]
+
+
+class Tape:
+    """Records what watchers and chip are told, to be played back without the cost of making it."""
+
+    def __init__(self) -> None:
+        self.groups: list[tuple[int, list[int | None], list[int]]] = []
+        self.calls: list[tuple[str, int, object]] = []
+
+    def edges(self, t: int, levels: Levels, changed: Sequence[int], driven: Sequence[int] | None = None) -> None:
+        self.groups.append((t, list(levels), list(changed)))
+        self.calls.append(("edges", t, len(self.groups) - 1))
+
+    def sampled(self, t: int) -> None:
+        self.calls.append(("sampled", t, None))
+
+    def rig_drives(self, t: int, driving: bool) -> None:
+        self.calls.append(("rig_drives", t, driving))
+
+
+def burn(bus: Bus) -> None:
+    """One pulse and one verify a word, as a burn has them."""
+    for at in range(WORDS):
+        bus.program(at, at & 0xFF)
+        bus.set({CE: 0, OE: 0})
+        bus.wait(US)
+        bus.sample()
+        bus.standby()
+
+
+def read(bus: Bus) -> None:
+    """The outputs on, one address after the other."""
+    bus.set({CE: 0, OE: 0})
+    for at in range(WORDS):
+        bus.address(at)
+        bus.wait(3)
+        bus.sample()
+
+
+def play_chip(tape: Tape) -> int:
+    """Nanoseconds in the chip model: every group, and `drive` for every sample."""
+    chip = make_chip()
+    calls: list[Call] = []
+    for kind, t, extra in tape.calls:
+        if kind == "edges" and isinstance(extra, int):
+            calls.append((chip.pins_changed, (t, tape.groups[extra][1])))
+        elif kind == "sampled":
+            calls.append((chip.drive, (t,)))
+    return _timed(calls)
+
+
+def play_judge(tape: Tape) -> int:
+    """Nanoseconds in the judge; says so if it found something, for then the numbers are not those of a clean job."""
+    judge = Judge(LIMITS)
+    calls: list[Call] = []
+    for kind, t, extra in tape.calls:
+        if kind == "edges" and isinstance(extra, int):
+            calls.append((judge.edges, tape.groups[extra]))
+        elif kind == "sampled":
+            calls.append((judge.sampled, (t,)))
+        else:
+            calls.append((judge.rig_drives, (t, extra)))
+    spent = _timed(calls)
+    if judge.count:
+        sys.stdout.write(f"not clean: {judge.violations[0]}\n")
+    return spent
+
+
+def _timed(calls: list[Call]) -> int:
+    begin = time.process_time_ns()
+    for call, arguments in calls:
+        call(*arguments)
+    return time.process_time_ns() - begin
+
+
+def main() -> None:
+    """Prints a line for each job and each listener: the best of five runs."""
+    for name, work in (("burn", burn), ("read", read)):
+        tape = Tape()
+        bus = Bus(tape)
+        bus.up()
+        work(bus)
+        for who, play in (("chip", play_chip), ("judge", play_judge)):
+            best = min(play(tape) for _ in range(5))
+            groups, calls = len(tape.groups), len(tape.calls)
+            each = f"{best // groups} ns a group, {best // WORDS} ns a word"
+            whole = f"{best * 65_536 // WORDS / 1e9:.2f} s for 64K words"
+            sys.stdout.write(f"{name}, {who}: {groups} groups, {calls} calls, {each}, {whole}\n")
+
+
+if __name__ == "__main__":
+    main()
