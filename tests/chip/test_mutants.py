@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import copy
-import json
 import re
 import tomllib
 from collections.abc import Callable, Iterator
@@ -18,18 +17,10 @@ from pulsewright.chip.lines import KeyPath, dotted
 from pulsewright.chip.load import find, load
 from pulsewright.chip.model import Definition
 from pulsewright.errors import Where
+from tests.chip.mutants import save
 
 TREE: dict[str, Any] = tomllib.loads(find("27e512").read_text(encoding="utf-8"))
 _QUANTITY = re.compile(r"(\d+)(\.\d+)? (\w+)$")
-
-
-def written(value: Any) -> str:
-    """A value as TOML, tables inline."""
-    if isinstance(value, dict):
-        return "{" + ", ".join(f"{key} = {written(one)}" for key, one in value.items()) + "}"
-    if isinstance(value, list):
-        return "[" + ", ".join(map(written, value)) + "]"
-    return json.dumps(value, ensure_ascii=False)
 
 
 def leaves(tree: Any, before: KeyPath = ()) -> Iterator[tuple[KeyPath, Any]]:
@@ -60,13 +51,6 @@ def with_leaf(path: KeyPath, change: str) -> dict[str, Any]:
     else:
         del node[path[-1]]
     return tree
-
-
-def save(tree: dict[str, Any], folder: Path) -> Path:
-    """The tree as a file, each table on one line, so that lines do not move."""
-    path = folder / "mutant.toml"
-    path.write_text("".join(f"{key} = {written(one)}\n" for key, one in tree.items()), encoding="utf-8")
-    return path
 
 
 def content(part: Definition) -> Definition:

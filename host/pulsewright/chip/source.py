@@ -141,8 +141,8 @@ def resolve_tree(parsed: Parsed, row: int | None) -> Tree:
     """The tree for one maker row, its values not yet examined."""
     places = Places(parsed.text)
     merged = _copy(parsed.tree)
+    entry = None if row is None else parsed.tree["makers"][row]
     if row is not None:
-        entry = parsed.tree["makers"][row]
         _merge(merged, overrides_of(entry))
         places.mount((), parsed.text, ("makers", row), exact=True)
     problems: list[Problem] = []
@@ -150,8 +150,8 @@ def resolve_tree(parsed: Parsed, row: int | None) -> Tree:
         if isinstance(merged.get(name), dict):
             _expand_method(merged[name], (name,), parsed, places, problems)
     sources: dict[KeyPath, str] = {}
-    if row is not None and isinstance(source := parsed.tree["makers"][row].get("from"), str):
-        sources.update(dict.fromkeys(_leaves(overrides_of(parsed.tree["makers"][row])), source))
+    if isinstance(entry, Mapping) and isinstance(source := entry.get("from"), str):
+        sources.update(dict.fromkeys(_leaves(overrides_of(entry)), source))
     plain = _unwrapped(merged, (), sources)
     return Tree(parsed, row, merged, plain, sources, places, problems, plain)
 
