@@ -64,7 +64,7 @@ def test_there_is_no_one_letter_option_but_o() -> None:
 
 @pytest.mark.parametrize("command", ["read", "erase", "burn", "verify", "identify", "blank-check"])
 def test_jobs_warn_in_their_help(command: str, capsys: pytest.CaptureFixture[str]) -> None:
-    """High voltage and static stand in the help of each job; the licence of practice where code is changed or judged."""
+    """Each job warns of high voltage and static; of UV-C and licensed practice where they come in."""
     main([command, "--help"])
     shown = capsys.readouterr().out
     assert "High voltage and hot parts" in shown

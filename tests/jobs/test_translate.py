@@ -31,10 +31,10 @@ LAST = DEFINITION.words - 1
 
 def result(outcome: Outcome, code: Fault | None = None, **numbers: Any) -> RunResult:
     """A result as a session would give it."""
-    extra = {key: numbers.pop(key) for key in ("id_bytes", "readings") if key in numbers}
+    fields: dict[str, Any] = {"id_bytes": b"", "readings": ()}
+    fields |= {key: numbers.pop(key) for key in tuple(fields) if key in numbers}
     trouble = Trouble(int(code), code.name.lower(), **numbers) if code is not None else None
     counters = Counters(0, 0, 0, None, 1000)
-    fields: dict[str, Any] = {"id_bytes": b"", "readings": (), **extra}
     return RunResult(outcome, trouble, None, data=b"", blocks=(), counters=counters, **fields)
 
 

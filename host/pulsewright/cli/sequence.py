@@ -38,6 +38,7 @@ def _sequence(args: argparse.Namespace, desk: Desk) -> int:
     from pulsewright.report.sequences import sequence_facts, sequence_lines
     from pulsewright.rig.file import load_rig
     from pulsewright.sequence.proof import prove
+    from pulsewright.units import show_count
 
     definition, rig = load(args.chip, maker=args.maker), load_rig()
     first, last = args.range or (0, definition.words - 1)
@@ -51,8 +52,8 @@ def _sequence(args: argparse.Namespace, desk: Desk) -> int:
         lines += [*sequence_lines(one, proof, definition, rig), ""]
         rows.append(sequence_facts(one, proof, definition, rig))
     summary = (
-        f"{args.job} on {definition.name}: {len(sequences)} sequences, "
-        f"{'all accepted by the proof' if not findings else f'{findings} findings of the proof'}"
+        f"{args.job} on {definition.name}: {show_count(len(sequences), 'sequence')}, "
+        f"{show_count(findings, 'finding') + ' of the proof' if findings else 'accepted by the proof'}"
     )
     exit_code = 3 if findings else 0
     if desk.as_json:

@@ -14,7 +14,7 @@ from pulsewright.jobs.record import crc_text
 from pulsewright.jobs.verify import passes_of, verify_passes
 from pulsewright.link.results import BlockDone
 from pulsewright.sequence.compile import compile_burn, compile_erase
-from pulsewright.units import show_address
+from pulsewright.units import show_address, show_count
 
 AGAIN = "the same burn again: words that are right already are skipped"
 
@@ -79,7 +79,7 @@ def _needs_erase(ctx: JobContext, needed: Change, fitted: Fitted, have: bytes) -
     words = ctx.definition.words
     at = needed.impossible[0]
     return Difference(
-        f"{len(needed.impossible)} words need a 0 to become a 1, which only an erase can do",
+        f"{show_count(len(needed.impossible), 'word')} with a 0 that must become a 1, which only an erase can do",
         wanted=f"{ctx.hex(fitted.data[at])} at {show_address(at, words)}, the first such word",
         got=f"{ctx.hex(have[at])}",
         did="VCC off; nothing was written",
@@ -106,7 +106,7 @@ def _burn_words(ctx: JobContext, fitted: Fitted, to_write: bytes) -> tuple[str, 
             ctx.record.content["pulses"] = done.facts()
         raise
     done = pulses_of(result.blocks)
-    line = f"{done.words} words burnt with {done.total} pulses"
+    line = f"{show_count(done.words, 'word')} burnt with {show_count(done.total, 'pulse')}"
     if done.words:
         at = show_address(done.worst, ctx.definition.words)
         line += f"; most for one word: {done.worst_tries} of {most} at {at}"
@@ -137,7 +137,7 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
         lost = sum(1 for word, used in zip(have, fitted.used, strict=True) if not used and word != definition.blank)
         lines.append(line)
         if lost:
-            lines.append(f"the erase also cleared {lost} words that the image does not give")
+            lines.append(f"the erase also cleared {show_count(lost, 'word')} that the image does not give")
         have = bytes([definition.blank]) * definition.words
         needed = change(have, fitted.data, fitted.used)
         facts |= more | {"erased": True, "cleared_words": lost, "skipped_words": needed.equal}
@@ -146,9 +146,9 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     if needed.differing:
         line, more = _burn_words(ctx, fitted, needed.to_write)
         facts |= more
-        lines.append(f"{line}; {needed.equal} words were right already")
+        lines.append(f"{line}; {show_count(needed.equal, 'word')} right already")
     else:
-        lines.append(f"nothing to burn: {needed.used} words are right already")
+        lines.append(f"nothing to burn: {show_count(needed.used, 'word')} right already")
     verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault)
     return JobResult(
         (*lines, *verified, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}

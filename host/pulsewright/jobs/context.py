@@ -15,7 +15,7 @@ from pulsewright.link.results import Block, LinkProgress, RigFacts, RunResult
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Proof, Sequence
-from pulsewright.units import show_address
+from pulsewright.units import show_address, show_count
 
 
 class OpenedRig(Protocol):
@@ -163,7 +163,7 @@ class JobContext:
         proof = prove(sequence.code, sequence.permit, self.definition, self.rig)
         if not proof.accepted:
             raise ProofRefused(
-                f"the proof does not accept {sequence.title}: {len(proof.findings)} findings",
+                f"the proof does not accept {sequence.title}: {show_count(len(proof.findings), 'finding')}",
                 did="nothing was sent",
                 facts=[finding_text(sequence, finding.offset, str(finding)) for finding in proof.findings],
                 hint=f"pulsewright sequence {self.definition.name} {sequence.kind} shows every op with its line",

@@ -12,6 +12,7 @@ from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.plan import VerifyStep, verify_steps
 from pulsewright.jobs.read import read_once
 from pulsewright.jobs.record import crc_text
+from pulsewright.units import show_count
 
 # A fading 0 shows first at a high VCC, an under-erased or slow 1 at a low one (common practice).
 FADING = "0s that read 1 show first at a high VCC: charge fades or the burn was too weak"
@@ -58,7 +59,7 @@ def verify_passes(
                 facts=[*comparison.lines()[1:], *verdicts(comparison)],
                 did="VCC off",
             )
-        lines.append(f"{comparison.compared} words verified at {step.text}")
+        lines.append(f"{show_count(comparison.compared, 'word')} verified at {step.text}")
         names.append({"vcc": step.text, "words": comparison.compared})
     return lines, {**facts, "verified": names}
 

@@ -7,7 +7,7 @@ from pulsewright.jobs.translate import scaling_of, volts
 from pulsewright.report.pinout import positions_of
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.types import Origin, Proof, Sequence
-from pulsewright.units import show_mv, show_ticks
+from pulsewright.units import show_count, show_mv, show_ticks
 from pulsewright.wire.ops import Instruction, decode_program, line_of
 from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import Bias, Channel, Fail, Group, Identity, Level, Op, Range
@@ -126,7 +126,7 @@ def sequence_lines(sequence: Sequence, proof: Proof, definition: Definition, rig
     if proof.accepted:
         lines.append(f"proof: accepted; {proof.ops} ops, {proof.states} states on all paths")
     else:
-        lines.append(f"proof: refused, {len(proof.findings)} findings")
+        lines.append(f"proof: refused, {show_count(len(proof.findings), 'finding')}")
         lines += [f"  {finding}" for finding in proof.findings]
     return lines
 
