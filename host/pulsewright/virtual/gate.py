@@ -144,4 +144,4 @@ def _drop_level(m: Machine) -> None:
     m.socket.set_raised(m.t, ())
     m.closed = m.closed_lines = m.closed_bits = 0
     m.edge = m.t
-    m.next_is_no_later_than(m.socket.next_end)
+    m.ramps_moved()

@@ -14,7 +14,8 @@ from pulsewright.virtual.board import (
     Board,
     count_of,
 )
-from pulsewright.virtual.socket import NEVER, Socket
+from pulsewright.virtual.contacts import NEVER
+from pulsewright.virtual.socket import Socket
 from pulsewright.wire.ops import line_of
 from pulsewright.wire.permit import NO_SWITCH, Permit, VccStep
 from pulsewright.wire.tables import READINGS, Fault, Identity, Level, Outcome, Range
@@ -57,6 +58,7 @@ class Machine:
         self.t = t
         self.edge = t  # the last time anything may have moved; waits count from it
         self.next_event = NEVER  # nothing outside the program happens before
+        self.next_other = NEVER  # the same, but for the ends of ramps
         self.code: list[Callable[[], int]] = []
         self.offsets: list[int] = []  # byte offset of the op that each entry of `code` came from
         self.op_codes: list[int] = []
@@ -149,8 +151,13 @@ class Machine:
         return self.range is not Range.OFF or bool(self.closed)
 
     def next_is_no_later_than(self, t: int) -> None:
-        """Something will happen at `t`."""
+        """Something other than the end of a ramp will happen at `t`."""
+        self.next_other = min(self.next_other, t)
         self.next_event = min(self.next_event, t)
+
+    def ramps_moved(self) -> None:
+        """A ramp began: its end is an event."""
+        self.next_event = min(self.next_event, self.socket.next_end)
 
     def vcc_count(self) -> int:
         """VCC at the socket as converted now."""

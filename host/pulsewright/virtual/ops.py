@@ -38,18 +38,26 @@ class LinesSet:
         self._kept = ~sum(1 << line for line, _ in controls)
         self._to_low = sum(1 << line for line, level in controls if level == Level.LOW)
         self._to_high = sum(1 << line for line, level in controls if level == Level.HIGH)
+        self._single = self.lines[0] if len(self.lines) == 1 else None
+        self._seen: tuple[int, int] | None = None  # masks of the last time, and what came of them
+        self._then = (0, 0, False)
 
     def apply(self, m: Machine) -> None:
         """Checks, then moves the lines as one group at `m.t`."""
         if self._low & (m.closed_lines | m.vcc_lines):
             raise Trip(Fault.LINE_AT_RAISED)
-        low, high = m.low & self._kept | self._to_low, m.high & self._kept | self._to_high
-        may_drive = m.matches(low, high)
+        seen = (m.low, m.high)
+        if seen != self._seen:
+            self._seen = seen
+            low, high = m.low & self._kept | self._to_low, m.high & self._kept | self._to_high
+            self._then = (low, high, m.matches(low, high))
+        low, high, may_drive = self._then
         if may_drive and m.driving and m.range:
             raise Trip(Fault.BUS_CONFLICT)
         m.low, m.high, m.may_drive = low, high, may_drive
-        if len(self.lines) == 1:
-            m.socket.set_line(m.t, *self.lines[0])
+        single = self._single
+        if single is not None:
+            m.socket.set_line(m.t, single[0], single[1])
         else:
             m.socket.set_lines(m.t, self.lines)
 
@@ -197,18 +205,22 @@ def high(m: Machine, a: Args, after: int) -> Step:
 
 
 def wait(m: Machine, a: Args, after: int) -> Step:
-    """At least so many ticks after the last edge; what stands before it in the program passes meanwhile."""
-    ticks = a["ticks"]
+    """At least so many ticks after the last edge; the ops since then have passed part of them."""
+    ticks, socket = a["ticks"], m.socket
 
     def step() -> int:
         t = m.t + _COST
         end = m.edge + ticks
         t = max(t, end)
-        if t <= m.next_event:
-            m.t = t
-            return after
-        m.slow = _wait_on(m, t, after)
-        return -1
+        while t > m.next_event:
+            at = socket.next_end
+            if at >= m.next_other:
+                m.slow = _wait_on(m, t, after)
+                return -1
+            socket.end_ramps(at)  # the only thing that is due on the way: no need to stop for it
+            m.next_event = min(socket.next_end, m.next_other)
+        m.t = t
+        return after
 
     return step
 
@@ -247,14 +259,16 @@ def _pulse(m: Machine, entry: int, after: int) -> Callable[[int], int]:
     is_control = line not in m.address_lines
     socket = m.socket
 
+    def may_drive() -> bool:
+        """Whether the chip may drive D in either state of the line."""
+        low, high = m.low & ~bit, m.high & ~bit
+        return is_control and (m.matches(low | bit, high) or m.matches(low, high | bit))
+
     def make(width: int) -> int:
         if not m.gate:
             _check_work(m)
-        if is_control:  # both states are asked for before anything moves
-            low, high = m.low & ~bit, m.high & ~bit
-            conflict = m.matches(low | bit, high) or m.matches(low, high | bit)
-            if conflict and m.driving and m.range:
-                raise Trip(Fault.BUS_CONFLICT)
+        if m.driving and m.range and may_drive():  # asked before anything moves
+            raise Trip(Fault.BUS_CONFLICT)
         if bit & (m.closed_lines | m.vcc_lines):
             raise Trip(Fault.LINE_AT_RAISED)
         t = m.t

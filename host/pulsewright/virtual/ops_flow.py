@@ -3,9 +3,9 @@
 from __future__ import annotations
 
 from pulsewright.virtual.blocks import Blocks
+from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Ended, Machine, Trip, Waiting
 from pulsewright.virtual.ops import Args, Step
-from pulsewright.virtual.socket import NEVER
 from pulsewright.wire.tables import OP_COST, Fault, Op
 
 _COST = OP_COST[Op.LOOP]

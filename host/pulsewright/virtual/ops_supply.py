@@ -13,9 +13,10 @@ from pulsewright.virtual.board import (
     VCC_STEPS_MV,
     count_of,
 )
+from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Machine, Trip, Waiting, until
 from pulsewright.virtual.ops import Args, Step
-from pulsewright.virtual.socket import NEVER, vcc_positions
+from pulsewright.virtual.socket import vcc_positions
 from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import DEAD_MAN_MS, MONITOR_MS, OP_COST, Bias, Channel, Fault, Group, Op, Rail, Range
 
@@ -26,7 +27,7 @@ _ADDRESS_GROUP, _DATA_GROUP, _POWER_GROUP = int(Group.ADDRESS), int(Group.DATA),
 
 def _moved(m: Machine) -> None:
     """A supply moved at `m.t`: the ends of ramps are events, and nothing approved before counts any more."""
-    m.next_is_no_later_than(m.socket.next_end)
+    m.ramps_moved()
     m.edge = m.t
     m.t += _COST
 

@@ -12,12 +12,13 @@ from pulsewright.units import TICKS_PER_MS, TICKS_PER_US
 from pulsewright.virtual.blocks import Blocks
 from pulsewright.virtual.board import VCC_FULL_MV, Board, count_of
 from pulsewright.virtual.commands import Commands
+from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.interpreter import Ending, bind, run_program
 from pulsewright.virtual.loader import Loaded
 from pulsewright.virtual.machine import Machine, Trip, Waiting
 from pulsewright.virtual.monitor import look
 from pulsewright.virtual.serial_line import SerialLine
-from pulsewright.virtual.socket import NEVER, Socket
+from pulsewright.virtual.socket import Socket
 from pulsewright.wire.frames import FrameReader, Hello, Message
 from pulsewright.wire.permit import Permit
 from pulsewright.wire.tables import (
@@ -133,21 +134,27 @@ class VirtualRig:
 
     def run(self, until: int) -> None:
         """Goes on to tick `until` (or the end of the op it falls into), or until a byte to the host has wholly left."""
+        socket = self.socket
         while True:
-            while (event := self._earliest()) <= self.t:
+            m = self.machine
+            t = self._t if m is None else m.t
+            other = self._earliest(m)
+            event = min(other, socket.next_end)
+            if event <= t:
                 if self._serve(event):
                     return
-            if self._thrown is not None and self._program is not None:
+                continue
+            if self._thrown is not None and m is not None:
                 self._resume()
                 continue
-            if self.t >= until:
+            if t >= until:
                 return
             limit = min(event, until)
-            m = self.machine
-            if m is None or self._program is None:
+            if m is None:
                 self._t = limit
                 continue
             m.next_event = limit
+            m.next_other = min(other, until)
             wants = self._wants
             if self._poked or wants is None:
                 self._resume()
@@ -184,14 +191,14 @@ class VirtualRig:
 
     # ---- the clock ------------------------------------------------------------------------------------------------
 
-    def _earliest(self) -> int:
-        m = self.machine
+    def _earliest(self, m: Machine | None) -> int:
+        """When something happens next, the ends of ramps left out."""
         line = self._line
-        own = min(self._beat_at, self._fall_back_at, self._cut_at)
-        first = min(line.arrives_at, line.leaves_at, self.socket.next_end, own)
-        if m is not None and not m.safe:
-            return min(first, m.monitor_at, m.dead_at)
-        return first
+        if m is None:
+            return min(line.arrives_at, line.leaves_at, self._fall_back_at, self._cut_at)
+        if m.safe:
+            return min(line.arrives_at, line.leaves_at, self._fall_back_at, self._beat_at)
+        return min(line.arrives_at, line.leaves_at, self._fall_back_at, self._beat_at, m.monitor_at, m.dead_at)
 
     def _serve(self, at: int) -> bool:
         """The event of this tick; True when it was a byte that left."""
@@ -204,7 +211,8 @@ class VirtualRig:
         if self.socket.next_end == at:
             self.socket.end_ramps(at)
         elif line.arrives_at == at:
-            self._byte(line.take_byte())
+            for byte in line.take():
+                self._byte(byte)
         elif self._beat_at == at:
             self._beat_at = at + _HEARTBEAT
             self.commands.beat()
@@ -258,7 +266,7 @@ class VirtualRig:
         self.socket.set_address_lines(loaded.header.address)
         bind(m, loaded, blocks)
         self._ending = Ending()
-        m.next_event = m.t  # up to the first op, where a trip can be thrown into it
+        m.next_event = m.next_other = m.t  # up to the first op, where a trip can be thrown into it
         self._program = run_program(m, self._ending)
         self._wants = self._program.send(None)
         self.machine = m

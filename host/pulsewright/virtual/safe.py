@@ -9,9 +9,10 @@ from __future__ import annotations
 
 from pulsewright.units import TICKS_PER_MS
 from pulsewright.virtual.board import POSITIONS, RAISED_FULL_MV, RAISED_POSITIONS, VCC_FULL_MV, count_of
+from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Machine, Trip, Waiting, until
 from pulsewright.virtual.ops_supply import CONVERSION_TICKS, shut
-from pulsewright.virtual.socket import NEVER, vcc_positions
+from pulsewright.virtual.socket import vcc_positions
 from pulsewright.wire.ops import line_of
 from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import CONVERTER_OFF_MS, OP_COST, Bias, Fault, Level, Op, Range
@@ -66,7 +67,7 @@ def _end_pulse(m: Machine) -> None:
 def _open_switches(m: Machine) -> None:
     m.socket.set_raised(m.t, ())
     m.closed = m.closed_lines = m.closed_bits = 0
-    m.next_is_no_later_than(m.socket.next_end)
+    m.ramps_moved()
     m.edge = m.t
     m.t += _STEP
 
@@ -142,7 +143,7 @@ def _power_down(m: Machine) -> Waiting:
         socket.set_range(m.t, Range.OFF, ())
         m.range = Range.OFF
         m.vcc_lines = 0
-        m.next_is_no_later_than(socket.next_end)
+        m.ramps_moved()
         m.t += _STEP
     socket.set_rail(m.t, 0)
     m.vcc_step = 0

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections import deque
 
 from pulsewright.units import TICKS_PER_S
-from pulsewright.virtual.socket import NEVER
+from pulsewright.virtual.contacts import NEVER
 from pulsewright.wire.tables import HELLO_BAUD
 
 _BITS = 10
@@ -18,7 +18,9 @@ def byte_ticks(baud: int) -> int:
 
 
 class SerialLine:
-    """`arrives_at` and `leaves_at` are the ticks at which the next byte is whole, NEVER when none is on its way."""
+    """Bytes under way. `leaves_at`: when the next one to the host is whole; `arrives_at`: when the next zero from the
+    host is, or the last byte before a pause, since no other byte means anything by itself. NEVER: none is on its way.
+    """
 
     def __init__(self) -> None:
         self.baud = HELLO_BAUD
@@ -27,8 +29,9 @@ class SerialLine:
         self.leaves_at = NEVER
         self.sent = bytearray()  # bytes that have left, for the host to take
         self._ticks = byte_ticks(HELLO_BAUD)
-        self._coming: deque[tuple[bytes, int, int]] = deque()  # data, tick of the first byte's end, ticks of a byte
+        self._coming: deque[tuple[bytes, int, int]] = deque()  # data, tick of its first start bit, ticks of a byte
         self._at = 0  # index in the first of them
+        self._until = 0  # what arrives next ends there
         self._free_from = 0
         self._going = bytearray()
         self._gone = 0
@@ -44,22 +47,29 @@ class SerialLine:
             data = bytes((byte ^ 0x5A) | 1 for byte in data)  # at another rate bits fall together: noise
         start = max(at, self._free_from)
         self._free_from = start + len(data) * ticks
-        self._coming.append((data, start + ticks, ticks))
+        self._coming.append((data, start, ticks))
         if len(self._coming) == 1:
-            self.arrives_at = start + ticks
+            self._plan()
 
-    def take_byte(self) -> int:
-        """The byte that has arrived."""
-        data, first, ticks = self._coming[0]
-        byte = data[self._at]
-        self._at += 1
-        if self._at < len(data):
-            self.arrives_at = first + self._at * ticks
-            return byte
-        self._coming.popleft()
-        self._at = 0
-        self.arrives_at = self._coming[0][1] if self._coming else NEVER
-        return byte
+    def _plan(self) -> None:
+        if not self._coming:
+            self.arrives_at = NEVER
+            return
+        data, start, ticks = self._coming[0]
+        zero = data.find(0, self._at)
+        self._until = zero + 1 if zero >= 0 else len(data)
+        self.arrives_at = start + self._until * ticks
+
+    def take(self) -> bytes:
+        """The bytes that have arrived since the last: up to a zero or a pause."""
+        data = self._coming[0][0]
+        taken = data[self._at : self._until]
+        self._at = self._until
+        if self._at == len(data):
+            self._coming.popleft()
+            self._at = 0
+        self._plan()
+        return taken
 
     def send(self, data: bytes, t: int) -> None:
         """Bytes to the host, behind those that wait already."""
