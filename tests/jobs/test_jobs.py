@@ -125,7 +125,7 @@ def test_a_chip_that_reads_unsteadily_is_not_erased() -> None:
     session = FakeSession(noise())
 
     def fade(sequence: Sequence, turn: int) -> RunResult | None:
-        session.cells[5] ^= turn & 1
+        session.cells[5] ^= turn
         return None
 
     session.before = fade

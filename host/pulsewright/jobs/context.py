@@ -258,7 +258,8 @@ def job(ctx: JobContext, name: str, work: Callable[[JobContext], JobResult]) -> 
     except PulsewrightError as error:
         raise _told(ctx, record, error)  # noqa: B904 - it is the same error, raised on
     record.content.update(result.facts)
-    path = record.write("; ".join(result.lines), 0)
+    record.content["lines"] = list(result.lines)
+    path = record.write(result.lines[0], 0)
     return JobResult(result.lines, {**result.facts, "record": str(path)}, result.data)
 
 
