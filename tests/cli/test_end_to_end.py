@@ -1,4 +1,4 @@
-"""Whole jobs through the command line, on the virtual rig with a kept bench; what the pins saw is the bench's own word."""
+"""Whole jobs through the command line, on the virtual rig with a kept bench; what the pins saw, the bench tells."""
 
 from __future__ import annotations
 
@@ -257,7 +257,7 @@ def test_ctrl_c_at_any_moment_leaves_the_chip_safe(desk: Desk, monkeypatch: pyte
     No limit is broken but the hold after a pulse that was cut, whose word is then reported as undefined.
     """
     desk.bench("--contents", "noise:6")
-    path = image(words=1024)
+    path = image(words=512)
     words = ("burn", "27e512", str(path), *RIG, "--erase")
     with monkeypatch.context() as patch:
         count = interrupt_at(patch, 0)

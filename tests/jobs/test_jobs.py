@@ -13,6 +13,7 @@ from pulsewright.errors import (
     ChipFault,
     ConsentNeeded,
     Difference,
+    FileMistake,
     Interrupted,
     ProofRefused,
     UsageMistake,
@@ -359,3 +360,24 @@ def test_a_range_outside_the_chip_is_a_mistake() -> None:
     with pytest.raises(UsageMistake, match="range"):
         read(context(session, first=0, last=WORDS))
     assert session.kinds == []
+
+
+def test_a_record_that_cannot_be_kept_does_not_hide_the_job(state: Path) -> None:
+    """With no place for records the job's own result stands, done or not, and says that no record was kept."""
+    state.write_text("a file where the folder should be")
+    result = identify(context(FakeSession()))
+    assert result.lines[0].startswith("seated")
+    assert "no record could be kept" in result.lines[-1]
+    session = FakeSession(noise())
+    with pytest.raises(Difference) as found:
+        blank(context(session))
+    assert "no record could be kept" in found.value.facts[-1]
+
+
+def test_a_dump_that_cannot_be_saved_stops_the_erase(state: Path) -> None:
+    """Nothing is lost where nothing could be kept."""
+    state.write_text("a file where the folder should be")
+    session = FakeSession(noise())
+    with pytest.raises(FileMistake):
+        erase(context(session))
+    assert "erase" not in session.kinds

@@ -17,7 +17,8 @@ from pulsewright.errors import (
     SeatingRefused,
     Tripped,
 )
-from pulsewright.jobs.translate import IMITATION, readings_of, translate, volts
+from pulsewright.jobs.story import readings_of, volts
+from pulsewright.jobs.translate import IMITATION, translate
 from pulsewright.link.results import Counters, RunResult, Trouble
 from pulsewright.rig.file import load_rig
 from pulsewright.sequence.compile import compile_blank, compile_burn, compile_erase, compile_identify

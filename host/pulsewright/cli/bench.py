@@ -56,6 +56,7 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
         more=_SERVE,
     )
     serve.add_argument("bench", metavar="BENCH", help="the bench's file")
+    serve.add_argument("--link", metavar="NAME", help="make this symbolic link to the port while it is served")
     serve.add_argument("--real-time", action="store_true", help="pace the rig's clock by the wall")
 
 
@@ -135,6 +136,14 @@ def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[
 
 
 def _serve(args: argparse.Namespace, desk: Desk) -> int:
-    from pulsewright.cli.opening import serve
+    from pulsewright.virtual.bench import Bench
+    from pulsewright.virtual.serve import serve
 
-    return serve(args.bench, args.real_time, desk)
+    def ready(port: str) -> None:
+        desk.answer([port], {"port": port})
+        desk.say(f"serving {args.bench} at {port}: no hardware is touched; Ctrl-C ends it")
+
+    link = Path(args.link) if args.link else None
+    serve(Bench.load(args.bench), link=link, real_time=args.real_time, on_ready=ready)
+    desk.say(f"kept in {args.bench}")
+    return 0

@@ -184,6 +184,10 @@ def prompt(desk: Desk) -> Callable[[list[str]], bool] | None:
     def ask(lines: list[str]) -> bool:
         desk.say(*lines)
         print('Compare each line with a data sheet. Agree? Type "yes": ', end="", file=sys.stderr, flush=True)
-        return sys.stdin.readline().strip().lower() == "yes"
+        during = signal.signal(signal.SIGINT, signal.default_int_handler)  # nothing runs yet: Ctrl-C leaves at once
+        try:
+            return sys.stdin.readline().strip().lower() == "yes"
+        finally:
+            signal.signal(signal.SIGINT, during)
 
     return ask

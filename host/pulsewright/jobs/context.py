@@ -7,15 +7,18 @@ from dataclasses import dataclass, field
 from typing import Protocol
 
 from pulsewright.chip.model import Definition
-from pulsewright.errors import Interrupted, ProofRefused, PulsewrightError, UsageMistake
+from pulsewright.errors import FileMistake, Interrupted, ProofRefused, PulsewrightError, UsageMistake
 from pulsewright.jobs.consent import check_consent, check_vouch
 from pulsewright.jobs.record import Record
-from pulsewright.jobs.translate import MADE_SAFE, readings_of, translate
+from pulsewright.jobs.story import MADE_SAFE, readings_of
+from pulsewright.jobs.translate import translate
 from pulsewright.link.results import Block, LinkProgress, RigFacts, RunResult
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Proof, Sequence
 from pulsewright.units import show_address, show_count
+
+_NO_RECORD = "no record could be kept: see whether the state folder may be written (PULSEWRIGHT_HOME names another)"
 
 
 class OpenedRig(Protocol):
@@ -259,13 +262,22 @@ def job(ctx: JobContext, name: str, work: Callable[[JobContext], JobResult]) -> 
         raise _told(ctx, record, error)  # noqa: B904 - it is the same error, raised on
     record.content.update(result.facts)
     record.content["lines"] = list(result.lines)
-    path = record.write(result.lines[0], 0)
-    return JobResult(result.lines, {**result.facts, "record": str(path)}, result.data)
+    kept = _kept(record, result.lines[0], 0)
+    lines = result.lines if kept else (*result.lines, _NO_RECORD)
+    return JobResult(lines, {**result.facts, "record": kept}, result.data)
 
 
 def _told(ctx: JobContext, record: Record, error: PulsewrightError) -> PulsewrightError:
     """The error, once its record is kept and named in it."""
     ctx.progress.end()
-    path = record.write(error.what, error.exit_code, error)
-    error.facts = (*error.facts, f"record: {path}")
+    kept = _kept(record, error.what, error.exit_code, error)
+    error.facts = (*error.facts, f"record: {kept}" if kept else _NO_RECORD)
     return error
+
+
+def _kept(record: Record, result: str, exit_code: int, error: PulsewrightError | None = None) -> str:
+    """The record's path; "" where it cannot be written, which must not hide what the job did."""
+    try:
+        return str(record.write(result, exit_code, error))
+    except FileMistake:
+        return ""

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pulsewright.chip.model import Definition
-from pulsewright.jobs.translate import scaling_of, volts
+from pulsewright.jobs.story import scaling_of, volts
 from pulsewright.report.pinout import positions_of
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.types import Origin, Proof, Sequence
