@@ -23,7 +23,7 @@ IMAGE = "image"
 
 @dataclass(frozen=True)
 class Pulse:
-    """One pulse step of a method in its place. Times in picoseconds; `data` "image", a constant, or None: D released."""
+    """One pulse step of a method in its place. Times in picoseconds; `data` "image", a constant, None: D released."""
 
     index: int
     mode: str

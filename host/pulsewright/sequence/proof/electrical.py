@@ -73,7 +73,9 @@ def raised_sums(
 ) -> Sums:
     """The sums of a raised step for a supply at the pin `role` behind a raised switch."""
     current_ua = supply.current_ua
-    if current_ua is None:  # the source does not say: the rig file's figure behind the limiter, else the switch's rating
+    if (
+        current_ua is None
+    ):  # the source does not say: the rig file's figure behind the limiter, else the switch's rating
         current_ua = rig.a9_unstated_ua if switch.limiter else switch.drop_at_ua
     tops = [supply.max_mv, switch.ceiling_mv]
     top = pin_max_mv(definition, role, vcc_min_mv)

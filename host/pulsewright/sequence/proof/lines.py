@@ -35,7 +35,9 @@ def held(t: Tables, state: State, clocks: Clocks, kind: str) -> None:
     """An edge of a kind keeps its hold time after the last pulse."""
     pulse = t.pulses[state.written.pulse] if state.written.pulse >= 0 else None
     hold = t.timing.hold_ticks(kind, pulse, state)
-    t.need(elapsed(clocks, PULSE) >= hold, "H7", f"{kind} hold after the pulse", f"{hold} ticks", elapsed(clocks, PULSE))
+    t.need(
+        elapsed(clocks, PULSE) >= hold, "H7", f"{kind} hold after the pulse", f"{hold} ticks", elapsed(clocks, PULSE)
+    )
 
 
 def _fallen(t: Tables, state: State, clocks: Clocks, changed: list[int]) -> None:
@@ -57,7 +59,13 @@ def _moved(t: Tables, state: State, clocks: Clocks, levels: tuple[str, ...], kin
         held(t, state, clocks, kind)
     was, now = t.may_drive(state.levels), t.may_drive(levels)
     if state.data != RELEASED:
-        t.need(not t.may_drive(state.levels, levels), "H6", "outputs are enabled while the rig drives D", "D released", "driven")
+        t.need(
+            not t.may_drive(state.levels, levels),
+            "H6",
+            "outputs are enabled while the rig drives D",
+            "D released",
+            "driven",
+        )
     kinds = []
     if any(line in t.pins.control for line in changed):
         kinds.append(CONTROL)
@@ -150,7 +158,13 @@ def _drive(t: Tables, state: State, clocks: Clocks, word: str | int) -> Result:
 
 def drive(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     """Drives D with a constant."""
-    t.need(ins.args["word"] <= t.word_mask, "H6", "a word wider than the chip's", f"{t.word_mask:X}", f"{ins.args['word']:X}")
+    t.need(
+        ins.args["word"] <= t.word_mask,
+        "H6",
+        "a word wider than the chip's",
+        f"{t.word_mask:X}",
+        f"{ins.args['word']:X}",
+    )
     return _drive(t, state, clocks, int(ins.args["word"]))
 
 

@@ -15,7 +15,7 @@ _SUPPLY_PINS = ("VCC", "GND")
 
 @dataclass(frozen=True)
 class Raised:
-    """A raised level that a mode wants at a switch: its supply, the rig's steps that serve it, the sums of each step."""
+    """A raised level that a mode wants at a switch: its supply, the steps that serve it, the sums of each step."""
 
     switch: Switch
     supply: SupplyStep
@@ -200,8 +200,6 @@ def may_drive(patterns: tuple[Mapping[int, str], ...], *levels: tuple[str, ...])
     """Whether the chip could drive D at lines that are each at one of the given levels: anything unknown counts."""
     definite = {LOW, HIGH}
     for pattern in patterns:
-        if all(
-            any(at[line] == level or at[line] not in definite for at in levels) for line, level in pattern.items()
-        ):
+        if all(any(at[line] == level or at[line] not in definite for at in levels) for line, level in pattern.items()):
             return True
     return False

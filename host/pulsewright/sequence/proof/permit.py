@@ -23,7 +23,9 @@ _LONGEST_SETTLE = 2  # times the rig's own settling time: the monitor must not b
 def check_permit(t: Tables, code: bytes) -> None:
     """Everything about the permit that no path through the program can change."""
     crc = zlib.crc32(code)
-    t.need(t.permit.crc32 == crc, "H2", "the permit is not for this program: CRC-32", f"{crc:08X}", f"{t.permit.crc32:08X}")
+    t.need(
+        t.permit.crc32 == crc, "H2", "the permit is not for this program: CRC-32", f"{crc:08X}", f"{t.permit.crc32:08X}"
+    )
     _identity(t)
     _identify_level(t)
     _raised(t)
@@ -42,16 +44,28 @@ def _cells(ids: tuple[IdCell, ...]) -> tuple[tuple[int, int], ...]:
 def _identity(t: Tables) -> None:
     kind = t.permit.identity
     if t.definition.identify == "none":
-        t.need(kind is not Identity.WANTED, "H2", "wants an ID of a part that has none", "vouched none or none", kind.name)
+        t.need(
+            kind is not Identity.WANTED, "H2", "wants an ID of a part that has none", "vouched none or none", kind.name
+        )
         t.need(not t.permit.alternatives, "H2", "names ID cells though it wants no identity")
         if kind is Identity.NONE:
             _only_looks(t)
         return
     if not t.need(
-        kind is Identity.WANTED, "H9", "the part has an ID and the permit does not want it", "identity wanted", kind.name
+        kind is Identity.WANTED,
+        "H9",
+        "the part has an ID and the permit does not want it",
+        "identity wanted",
+        kind.name,
     ):
         return
-    t.need(t.definition.identify == "mode", "H2", "this way of identification is not understood", "mode", t.definition.identify)
+    t.need(
+        t.definition.identify == "mode",
+        "H2",
+        "this way of identification is not understood",
+        "mode",
+        t.definition.identify,
+    )
     _alternatives(t)
 
 
@@ -142,14 +156,19 @@ def _vcc(t: Tables) -> None:
     for one in t.permit.vcc:
         if one.step not in served:
             sums = [by_step[one.step] for by_step in t.vcc_sums.values() if one.step in by_step]
-            t.find(
-                "H3", f"VCC step {one.step} with its window serves no supply of the definition",
-                " or ".join(each.wanted for each in sums), f"{sums[0].got if sums else '-'}, counts {one.low}..{one.high}",
-            )  # fmt: skip
+            got = f"{sums[0].got if sums else 'no such step'}, counts {one.low}..{one.high}"
+            wanted = " or ".join(dict.fromkeys(each.wanted for each in sums))
+            t.find("H3", f"VCC step {one.step} with its window serves no supply of the definition", wanted, got)
         settle = at_least(t.rig.vcc.settle_ps)
         within = settle <= one.settle <= _LONGEST_SETTLE * settle
         t.need(within, "H8", f"settling time of VCC step {one.step}", f"{settle} to {2 * settle} ticks", one.settle)
-    t.need(t.permit.vcc_to == t.pins.vcc_mask, "H3", "VCC to other positions than the VCC pins", t.pins.vcc_mask, t.permit.vcc_to)
+    t.need(
+        t.permit.vcc_to == t.pins.vcc_mask,
+        "H3",
+        "VCC to other positions than the VCC pins",
+        t.pins.vcc_mask,
+        t.permit.vcc_to,
+    )
 
 
 def check_used(t: Tables) -> None:
@@ -186,7 +205,9 @@ def _drives(t: Tables) -> None:
         if not row.drives:
             continue
         covered = any(one is not None and one.items() <= dict(row.pattern).items() for one in named)
-        t.need(covered, "H6", f"the permit does not know that the chip drives D in {row.name}", dict(row.pattern), named)
+        t.need(
+            covered, "H6", f"the permit does not know that the chip drives D in {row.name}", dict(row.pattern), named
+        )
 
 
 def _safe(t: Tables) -> None:
@@ -198,7 +219,13 @@ def _safe(t: Tables) -> None:
     t.need(set(safe) == set(t.pins.control), "H5", "the safe pattern does not set just the control lines",
            sorted(t.pins.control), sorted(safe))  # fmt: skip
     quiet = [row for row in t.rows if row.data == "Z" and not row.raised and row.pattern.items() <= safe.items()]
-    t.need(bool(quiet), "H5", "the safe pattern is no row of the mode table in which D floats and nothing is raised", "", safe)
+    t.need(
+        bool(quiet),
+        "H5",
+        "the safe pattern is no row of the mode table in which D floats and nothing is raised",
+        "",
+        safe,
+    )
     drives = [row.name for row in t.rows if row.drives and row.pattern.items() <= safe.items()]
     t.need(not drives, "H5", "in the safe pattern the chip drives D", "", ", ".join(drives))
     for pulse, line in zip(t.pulses, t.pulse_lines, strict=True):

@@ -6,6 +6,7 @@ from typing import Final
 
 from pulsewright.sequence.proof.state import (
     ADDRESS,
+    BIAS,
     CONTROL,
     DATA,
     HIGH,
@@ -55,7 +56,12 @@ def rail(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
             t.need(step in t.quiet_vcc(), "H2", "VCC before the gate at another step than the one to read at",
                    sorted(t.quiet_vcc()), step)  # fmt: skip
         if state.driven and (_low_vcc(t, step) or _low_vcc(t, state.vcc)):
-            t.find("H11", "VCC moves below what driven lines need, and H is driven", f"from {show_mv(t.rig.driven_from_mv)}", step)
+            t.find(
+                "H11",
+                "VCC moves below what driven lines need, and H is driven",
+                f"from {show_mv(t.rig.driven_from_mv)}",
+                step,
+            )
         return state._replace(vcc=step, vcc_good=False), edge(clocks)
     if not t.need(ins.args["rail"] == Rail.RAISED, "H3", "a rail that is not known", "", ins.args["rail"]):
         return state, clocks
@@ -112,7 +118,9 @@ def high(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 def bias(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     """A weak pull of groups of lines."""
     groups, how = ins.args["groups"], ins.args["how"]
-    known = groups and not groups & ~(Group.DATA | Group.ADDRESS | Group.POWER) and how in (Bias.OFF, Bias.DOWN, Bias.UP)
+    known = (
+        groups and not groups & ~(Group.DATA | Group.ADDRESS | Group.POWER) and how in (Bias.OFF, Bias.DOWN, Bias.UP)
+    )
     if not t.need(bool(known), "H11", "a bias that is not known", "", f"groups {groups}, how {how}"):
         return state, clocks
     if how == Bias.UP:
@@ -120,7 +128,7 @@ def bias(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
         t.need(right, "H11", "bias up without full VCC", "VCC full", f"range {state.range}")
         t.need(not groups & Group.POWER, "H11", "bias up at supply positions")
     now = [how if groups >> bit & 1 else old for bit, old in enumerate(state.bias)]
-    return state._replace(bias=(now[0], now[1], now[2])), edge(clocks)
+    return state._replace(bias=(now[0], now[1], now[2])), edge(clocks, BIAS)
 
 
 # ---- measuring ------------------------------------------------------------------------------------------------------
@@ -160,7 +168,8 @@ def _measure_rail(t: Tables, state: State, low: int, high_: int) -> State:
     scaling = t.rig.raised.scaling
     wants = [want for row in t.rows for want in row.raised.values() if state.rail in want.steps]
     inside = any(
-        scaling.count_at_least(want.supply.min_mv) <= low and high_ <= scaling.count_at_most(want.top_mv) for want in wants
+        scaling.count_at_least(want.supply.min_mv) <= low and high_ <= scaling.count_at_most(want.top_mv)
+        for want in wants
     )
     if not state.rail:
         return state
@@ -179,9 +188,16 @@ def _measure_position(t: Tables, state: State, number: int, low: int, high_: int
     wants = [row.raised[number] for row in t.rows if number in row.raised and state.rail in row.raised[number].steps]
     scaling = switch.scaling
     inside = any(
-        scaling.count_at_least(want.supply.min_mv) <= low and high_ <= scaling.count_at_most(want.top_mv) for want in wants
+        scaling.count_at_least(want.supply.min_mv) <= low and high_ <= scaling.count_at_most(want.top_mv)
+        for want in wants
     )
-    t.need(inside, "H8", f"the level at switch {number} is measured against a window that no supply has", "", f"{low}..{high_}")
+    t.need(
+        inside,
+        "H8",
+        f"the level at switch {number} is measured against a window that no supply has",
+        "",
+        f"{low}..{high_}",
+    )
     return state._replace(positions_good=state.positions_good | 1 << number)
 
 
@@ -200,7 +216,9 @@ def invariants(t: Tables, state: State) -> None:
         position = t.rig.site.positions.get(one.position)
         if state.on >> one.number & 1 and position is not None and position.line is not None:
             level = state.levels[position.line]
-            t.need(level in (HIGH, RELEASED), "H3", f"the line at raised position {one.position}", "H or released", level)
+            t.need(
+                level in (HIGH, RELEASED), "H3", f"the line at raised position {one.position}", "H or released", level
+            )
 
 
 def power_fact(line: int) -> int:

@@ -45,6 +45,10 @@ def switches(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Resul
         _may_close(t, state, on)
     if rising or falling:
         held(t, state, clocks, "raised")
+    others = state.opened & ~on
+    if rising and others:
+        fall, since = t.timing.fall_ticks(others), elapsed(clocks, OFF)
+        t.need(since >= fall, "H3", "a raised level rises while another still falls", f"{fall} ticks", since)
     kinds = ([ON] if rising else []) + ([OFF] if falling else [])
     opened = state.opened & ~on
     if falling:
@@ -55,7 +59,9 @@ def switches(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Resul
 
 def _may_close(t: Tables, state: State, on: int) -> None:
     t.need(state.seated, "H1", "a raised level before the seating check has passed")
-    t.need(state.range == Range.FULL and state.vcc_good, "H1", "a raised level before VCC stands measured in its window")
+    t.need(
+        state.range == Range.FULL and state.vcc_good, "H1", "a raised level before VCC stands measured in its window"
+    )
     t.need(state.rail != 0 and state.rail_good, "H8", "a raised level whose rail was not measured since it moved")
     if state.gate:
         allowed = {number for number, _ in t.permit.raised}
@@ -79,7 +85,9 @@ def standing(t: Tables, state: State) -> None:
                 check_ceiling(t, rows[0], number, state.rail)
         return
     row = t.identify_row
-    if row is None or not t.need(row.raised.keys() == {t.permit.identify_switch}, "H2", "no identify mode to raise for"):
+    if row is None or not t.need(
+        row.raised.keys() == {t.permit.identify_switch}, "H2", "no identify mode to raise for"
+    ):
         return
     want = row.raised[t.permit.identify_switch]
     t.need(state.rail in want.steps and state.on == 1 << want.switch.number, "H2",
@@ -105,7 +113,9 @@ def _sums(t: Tables, state: State) -> tuple[str, str]:
                 if state.rail in want.sums:
                     wanted.append(f"{want.supply.name} {want.sums[state.rail].wanted}")
                     got.append(f"{want.role} {want.sums[state.rail].got}")
-    return " or ".join(dict.fromkeys(wanted)), ", ".join(dict.fromkeys(got)) or f"switches {state.on:b} at step {state.rail}"
+    return " or ".join(dict.fromkeys(wanted)), ", ".join(
+        dict.fromkeys(got)
+    ) or f"switches {state.on:b} at step {state.rail}"
 
 
 # ---- seating and gate -----------------------------------------------------------------------------------------------
@@ -117,7 +127,8 @@ def seated(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
         text
         for bit, text in (
             (SEAT_OFF, "the look at D with VCC off"), (SEAT_PROBE, "VCC through the probe resistor"),
-            (SEAT_UP, "outputs off, bias up"), (SEAT_DOWN, "outputs off, bias down"), (SEAT_HELD, "outputs on, both ways"),
+            (SEAT_UP, "outputs off, bias up"), (SEAT_DOWN, "outputs off, bias down"),
+            (SEAT_HELD, "outputs on, both ways"),
         )
         if not state.facts & bit
     ]  # fmt: skip
@@ -126,7 +137,9 @@ def seated(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
         for one in t.rig.switches
         if not state.facts & SEAT_POSITION << one.number
     ]
-    missing += [f"supply position at line {line}" for line in t.pins.power_lines if not state.facts & SEAT_POWER << line]
+    missing += [
+        f"supply position at line {line}" for line in t.pins.power_lines if not state.facts & SEAT_POWER << line
+    ]
     t.need(not missing, "H1", "seating counts as passed without its looks", "", "; ".join(missing))
     t.need(state.range == Range.FULL and state.vcc_good, "H1", "seating counts as passed without VCC in its window")
     t.need(not state.on and state.data == RELEASED, "H1", "seating counts as passed with something driven")
@@ -153,7 +166,8 @@ def _free_address(t: Tables, row: Row, state: State) -> tuple[str, ...]:
     raised = {one.position for one in t.rig.switches if one.number in row.raised}
     lines = {t.rig.site.positions[at].line for at in raised}
     return tuple(
-        ("H" if line in lines else EITHER) if line in t.pins.address else level for line, level in enumerate(state.levels)
+        ("H" if line in lines else EITHER) if line in t.pins.address else level
+        for line, level in enumerate(state.levels)
     )
 
 
@@ -182,10 +196,18 @@ def gate(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     t.need(state.looked != NOT_LOOKED, "H2", "the gate without the look before it")
     t.need(state.looked == wait, "H2", "look and gate wait differently", state.looked, wait)
     _identifies(t, state, clocks, wait)
-    t.need(number != NO_SWITCH and state.on == 1 << number, "H2", "the gate without the identify level alone", number, f"{state.on:b}")
+    t.need(
+        number != NO_SWITCH and state.on == 1 << number,
+        "H2",
+        "the gate without the identify level alone",
+        number,
+        f"{state.on:b}",
+    )
     t.need(bool(state.positions_good >> number & 1), "H8", "the identify level was not measured at its position")
     rise = at_least(t.timing.rise_ps(state.on))
-    t.need(elapsed(clocks, ON) >= rise, "H7", "the identify level has not risen yet", f"{rise} ticks", elapsed(clocks, ON))
+    t.need(
+        elapsed(clocks, ON) >= rise, "H7", "the identify level has not risen yet", f"{rise} ticks", elapsed(clocks, ON)
+    )
     levels = _free_address(t, t.identify_row, state) if t.identify_row else state.levels
     after = state._replace(gate=True, must_drop=bool(state.on), levels=levels, register=EITHER, sample="")
     return after, started(clocks, ADDRESS)

@@ -112,4 +112,3 @@ def shape_of(code: bytes, report: Report) -> Shape | None:
     if not nests or not _branches(flat, nests, report):
         return None
     return Shape(program.header, tuple(flat), nests, dict(program.code))
-

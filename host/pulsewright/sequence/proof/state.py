@@ -20,7 +20,8 @@ OFF: Final = 5  # a raised switch opened
 VCC: Final = 6  # VCC measured in its window
 PULSE: Final = 7  # end of the last pulse
 DISABLED: Final = 8  # the lines left a pattern in which the chip may drive D
-CLOCKS: Final = 9
+BIAS: Final = 9  # a weak pull changed
+CLOCKS: Final = 10
 
 LONG_AGO: Final = 1 << 40
 FRESH: Final = -1
@@ -73,7 +74,7 @@ def joined(one: Clocks, other: Clocks) -> Clocks:
 
 
 class Flag(NamedTuple):
-    """What the flag says: set means `fact` holds (a seating bit, or a verified write), `value` where the path knows it."""
+    """What the flag says: set means `fact` holds (a seating bit) or a write is right; `value` if the path knows it."""
 
     fact: int = 0
     verifies: int = -1  # index of the pulse whose result was compared
@@ -111,4 +112,5 @@ class State(NamedTuple):
     kept: str = ""
     flag: Flag = Flag()
     written: Written = Written()
+    done: int = -1  # the pulse whose result, for the word in hand or the chip, is known to be right
     register: str = UNSET  # the address register: EITHER known to us, WORD, or never loaded

@@ -111,7 +111,9 @@ class Tables:
         return frozenset(one for one in quiet if self.rig.vcc.step(one).mv <= 5500)
 
 
-def _vcc_ok(definition: Definition, rig: Rig, permit: Permit, sums: dict[str, dict[int, Sums]]) -> dict[str, frozenset[int]]:
+def _vcc_ok(
+    definition: Definition, rig: Rig, permit: Permit, sums: dict[str, dict[int, Sums]]
+) -> dict[str, frozenset[int]]:
     scaling = rig.socket_vcc
     ok: dict[str, frozenset[int]] = {}
     for name, by_step in sums.items():

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Final
 
 from pulsewright.chip.model import Definition
 from pulsewright.rig.model import Rig
@@ -20,6 +21,11 @@ def at_least(ps: int) -> int:
 def at_most(ps: int) -> int:
     """Ticks that last `ps` or shorter."""
     return ticks(ps, Rounding.AT_MOST)
+
+
+# A weak pull needs this long to move a position: two time constants of 100 kohm on 200 pF of cable, socket and chip.
+# Shorter, and an empty socket still holds what the pull before left there, as a chip would.
+BIAS_SETTLE_PS: Final = 40_000_000
 
 
 @dataclass(frozen=True)

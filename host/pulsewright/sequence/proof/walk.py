@@ -124,7 +124,9 @@ class Walk:
     def _allowed(self, ins: Instruction, state: State) -> None:
         if state.must_drop:
             drops = ins.op is Op.SWITCHES and ins.args["on"] == 0
-            self.t.need(drops, "H2", "something else than the drop of the identify level after the gate", "switches on=0", ins)
+            self.t.need(
+                drops, "H2", "something else than the drop of the identify level after the gate", "switches on=0", ins
+            )
         if state.range == Range.FULL and not state.vcc_good:
             self.t.need(ins.op in _UNSETTLED, "H8", "work before VCC was measured after its move", "measure", ins)
 
@@ -136,6 +138,7 @@ class Walk:
             return
         if op is Op.END:
             self._finished(state, "the program ends")
+            self.t.need(state.gate, "H2", "the program ends well without having passed the gate")
         elif op is Op.BRANCH:
             yield from self._branch(index, ins, state)
         elif op is Op.LOOP:
@@ -170,7 +173,7 @@ class Walk:
         """A new word in hand: what lines and D show is the word before."""
         levels = tuple(STALE if level == WORD else level for level in state.levels)
         data = STALE if state.data == WORD else state.data
-        return state._replace(levels=levels, data=data, register=WORD, sample="", kept="", flag=Flag())
+        return state._replace(levels=levels, data=data, register=WORD, sample="", kept="", flag=Flag(), done=-1)
 
     def _branch(self, index: int, ins: Instruction, state: State) -> Iterator[tuple[int, State]]:
         when, to = ins.args["when"], ins.args["to"]
@@ -186,7 +189,13 @@ def check_header(t: Tables, shape: Shape) -> None:
     """The routine header against the definition."""
     header = shape.header
     t.need(header.width == t.definition.width, "H7", "word width", t.definition.width, header.width)
-    t.need(header.address == t.pins.address, "H6", "the header's address lines are not the chip's", t.pins.address, header.address)
+    t.need(
+        header.address == t.pins.address,
+        "H6",
+        "the header's address lines are not the chip's",
+        t.pins.address,
+        header.address,
+    )
     t.need(header.words <= t.definition.words, "H7", "more words than the chip has", t.definition.words, header.words)
     if header.flow is not Flow.NONE:
         size = header.block_words * header.width // 8

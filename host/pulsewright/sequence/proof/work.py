@@ -8,6 +8,7 @@ from pulsewright.sequence.proof.algorithm import IMAGE, Pulse
 from pulsewright.sequence.proof.modes import Row
 from pulsewright.sequence.proof.state import (
     ADDRESS,
+    BIAS,
     CONTROL,
     DATA,
     DISABLED,
@@ -26,7 +27,7 @@ from pulsewright.sequence.proof.state import (
     elapsed,
 )
 from pulsewright.sequence.proof.tables import SEAT_DOWN, SEAT_HELD, SEAT_OFF, SEAT_POWER, SEAT_UP, Tables
-from pulsewright.sequence.proof.timing import at_least, at_most
+from pulsewright.sequence.proof.timing import BIAS_SETTLE_PS, at_least, at_most
 from pulsewright.wire.ops import Instruction
 from pulsewright.wire.tables import Bias, Level, Op, Range
 
@@ -51,8 +52,14 @@ def sample(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     return state._replace(sample=kind), clocks
 
 
+def _pulled(t: Tables, clocks: Clocks) -> None:
+    need, since = at_least(BIAS_SETTLE_PS), elapsed(clocks, BIAS)
+    t.need(since >= need, "H1", "the seating is looked at before the weak pull had its effect", f"{need} ticks", since)
+
+
 def _seating_kind(t: Tables, state: State, clocks: Clocks) -> str:
     pull = state.bias[0]
+    _pulled(t, clocks)
     if state.range == Range.OFF:
         down = all(state.levels[line] in (LOW, RELEASED) for line in t.pins.inputs)
         return OFF_DOWN if down and pull == Bias.DOWN else ""
@@ -73,6 +80,9 @@ def _work_kind(t: Tables, state: State, clocks: Clocks) -> str:
     t.need(state.gate, "H2", "the chip is read before the gate")
     rows = [row for row in t.matching(state) if row.drives]
     kind = OF_WORD if all(state.levels[line] == WORD for line in t.pins.address) else OF_CELL
+    if state.done >= 0 and any(row.name in t.pulses[state.done].verify_modes for row in rows):
+        _access(t, state, clocks, [row for row in rows if row.name in t.pulses[state.done].verify_modes])
+        return f"{VERIFIES}{state.done} {kind}"
     if state.written.pulse >= 0:
         pulse = t.pulses[state.written.pulse]
         right = [row for row in rows if row.name in pulse.verify_modes]
@@ -93,10 +103,22 @@ def _access(t: Tables, state: State, clocks: Clocks, rows: list[Row]) -> None:
     bounds = min((t.timing.access_ps(row) for row in rows if row.drives), default=(0, 0))
     for kind, bound, name in ((ADDRESS, bounds[0], "address"), (CONTROL, bounds[1], "enabling edge")):
         need = at_least(bound + line)
-        t.need(elapsed(clocks, kind) >= need, "H7", f"D is sampled too soon after the {name}", f"{need} ticks", elapsed(clocks, kind))
+        t.need(
+            elapsed(clocks, kind) >= need,
+            "H7",
+            f"D is sampled too soon after the {name}",
+            f"{need} ticks",
+            elapsed(clocks, kind),
+        )
     if state.opened:
         need = t.timing.fall_ticks(state.opened) + at_least(bounds[0])
-        t.need(elapsed(clocks, OFF) >= need, "H7", "D is sampled too soon after a raised level", f"{need} ticks", elapsed(clocks, OFF))
+        t.need(
+            elapsed(clocks, OFF) >= need,
+            "H7",
+            "D is sampled too soon after a raised level",
+            f"{need} ticks",
+            elapsed(clocks, OFF),
+        )
 
 
 def keep(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
@@ -105,7 +127,7 @@ def keep(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 
 
 def _verifying(state: State) -> int:
-    return state.written.pulse if state.sample.startswith(f"{VERIFIES}{state.written.pulse} ") else -1
+    return int(state.sample.split()[1]) if state.sample.startswith(VERIFIES) else -1
 
 
 def compare(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
@@ -123,7 +145,7 @@ def compare(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result
         t.need(right, "H7", "what was pulsed is not compared with what it must be, over the whole chip",
                f"{pulse.verify_value}, {t.definition.words} words", f"{word:X}")  # fmt: skip
         flag = Flag(0, verifying)
-    return state._replace(flag=flag, written=_compared(state, verifying)), clocks
+    return _compared(state, flag), clocks
 
 
 def _whole(t: Tables) -> bool:
@@ -134,8 +156,11 @@ def _whole(t: Tables) -> bool:
     return bool(op.args["first"] == 0 and op.args["count"] == t.definition.words)
 
 
-def _compared(state: State, verifying: int) -> Written:
-    return state.written._replace(compared=True) if verifying >= 0 else state.written
+def _compared(state: State, flag: Flag) -> State:
+    """A compare says nothing until its flag is looked at: what was right before is open again."""
+    if flag.verifies < 0:
+        return state._replace(flag=flag)
+    return state._replace(flag=flag, written=Written(flag.verifies, compared=True), done=-1)
 
 
 def compare_word(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
@@ -143,8 +168,14 @@ def compare_word(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> R
     t.need(state.register == WORD, "H7", "compares with a word when none is in hand")
     verifying = _verifying(state)
     right = state.sample.endswith(OF_WORD) and (verifying < 0 or t.pulses[verifying].verify_value == IMAGE)
-    t.need(right, "H7", "compares the word in hand with something else than its cell", OF_WORD, state.sample or "nothing read")
-    return state._replace(flag=Flag(0, verifying), written=_compared(state, verifying)), clocks
+    t.need(
+        right,
+        "H7",
+        "compares the word in hand with something else than its cell",
+        OF_WORD,
+        state.sample or "nothing read",
+    )
+    return _compared(state, Flag(0, verifying)), clocks
 
 
 def compare_kept(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
@@ -158,23 +189,34 @@ def sense(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     line, is_ = ins.args["line"], ins.args["is"]
     released = line < len(state.levels) and state.levels[line] == RELEASED
     t.need(released, "H6", f"line {line} is sensed but not released")
-    looks = released and line in t.pins.power_lines and state.bias[2] == Bias.DOWN and state.range != Range.OFF and is_ == 0
+    looks = (
+        released and line in t.pins.power_lines and state.bias[2] == Bias.DOWN and state.range != Range.OFF and is_ == 0
+    )
+    if looks:
+        _pulled(t, clocks)
     return state._replace(flag=Flag(SEAT_POWER << line if looks else 0)), clocks
 
 
 def report(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     """The sample goes to the host as the word's."""
-    t.need(state.sample == OF_WORD, "H7", "reports something else than the word's cell", OF_WORD, state.sample or "nothing read")
+    t.need(
+        state.sample == OF_WORD,
+        "H7",
+        "reports something else than the word's cell",
+        OF_WORD,
+        state.sample or "nothing read",
+    )
     return state, clocks
 
 
 def resolved(t: Tables, state: State, value: bool) -> State:
     """The state on the path where the flag has a value: a seating fact, or a write known to be right or wrong."""
-    flag, written = state.flag, state.written
+    flag, written, done = state.flag, state.written, state.done
     if flag.verifies >= 0:
         written = Written() if value else Written(flag.verifies, compared=True)
+        done = flag.verifies if value else -1
     facts = state.facts | flag.fact if value else state.facts
-    return state._replace(flag=flag._replace(value=value), written=written, facts=facts)
+    return state._replace(flag=flag._replace(value=value), written=written, done=done, facts=facts)
 
 
 # ---- pulses ---------------------------------------------------------------------------------------------------------
@@ -187,8 +229,8 @@ def pulse(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     line, level = entry & 63, "H" if entry >> 6 == Level.HIGH else "L"
     t.need(entry >> 6 in (Level.LOW, Level.HIGH), "H7", "a pulse to no level")
     t.need(state.gate and not state.must_drop, "H2", "a pulse before the gate")
-    t.need(state.on & ~state.positions_good == 0, "H8", "a raised level was not measured at its position before the pulse",
-           f"{state.on:b}", f"{state.positions_good & state.on:b}")  # fmt: skip
+    unmeasured = state.on & ~state.positions_good
+    t.need(not unmeasured, "H8", "a raised level was never measured at its position", 0, f"{unmeasured:b}")
     found = [
         one
         for one, at in zip(t.pulses, t.pulse_lines, strict=True)
@@ -202,7 +244,11 @@ def pulse(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
         _setups(t, state, clocks, one)
         _repeats(t, state, one)
         state = state._replace(written=Written(one.index), flag=Flag())
-        t.need(not t.may_drive(_with(state.levels, line, level)) or state.data == RELEASED, "H6", "the pulse enables outputs against D")
+        t.need(
+            not t.may_drive(_with(state.levels, line, level)) or state.data == RELEASED,
+            "H6",
+            "the pulse enables outputs against D",
+        )
     return state._replace(sample=""), edge(clocks, PULSE, CONTROL, width=width)
 
 
@@ -245,12 +291,19 @@ def _setups(t: Tables, state: State, clocks: Clocks, one: Pulse) -> None:
     need = at_least(max(settle, timing.least("tVCS")))
     t.need(elapsed(clocks, VCC) >= need, "H7", "set-up of VCC before the pulse", f"{need} ticks", elapsed(clocks, VCC))
     need = timing.recovery_ticks(state.opened)
-    t.need(elapsed(clocks, OFF) >= need, "H7", "a raised level is not gone before the pulse", f"{need} ticks", elapsed(clocks, OFF))
+    t.need(
+        elapsed(clocks, OFF) >= need,
+        "H7",
+        "a raised level is not gone before the pulse",
+        f"{need} ticks",
+        elapsed(clocks, OFF),
+    )
 
 
 def _repeats(t: Tables, state: State, one: Pulse) -> None:
     uncompared = state.written.pulse >= 0 and not state.written.compared
     t.need(not uncompared, "H7", "a second pulse without a look at what the first one did")
+    t.need(state.done != one.index, "H7", "pulses again what already reads back right")
     turns = t.shape.turns(t.index) if t.shape else 0
     t.need(turns == one.repeats, "H7", f"repetitions of the pulse of {one.mode}", one.repeats, turns)
 
@@ -259,4 +312,3 @@ def unknown(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result
     """An op for which the definition's steps have no word, or that the proof does not understand."""
     t.find("H7", f"nothing in the definition allows the op {ins.op.name.lower()}")
     return state, edge(clocks)
-
