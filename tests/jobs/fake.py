@@ -20,6 +20,11 @@ WORDS = 65536
 ID = b"\xda\x08"
 
 
+def noise(seed: int = 1) -> bytearray:
+    """Contents that hold every byte value."""
+    return bytearray((at * 31 + (at >> 8) * seed) & 0xFF for at in range(WORDS))
+
+
 @dataclass
 class FakeSession:
     """Cells that read, burn from 1 to 0 and erase; `before` may change them or answer in their place."""

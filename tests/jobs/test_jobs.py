@@ -29,7 +29,7 @@ from pulsewright.jobs.record import read_record, record_paths
 from pulsewright.jobs.verify import verify
 from pulsewright.link.results import RunResult
 from pulsewright.sequence.types import Finding, Proof, Sequence
-from tests.jobs.fake import ID, WORDS, FakeSession, context
+from tests.jobs.fake import WORDS, FakeSession, context, noise
 
 
 @pytest.fixture(autouse=True)
@@ -44,63 +44,9 @@ def image(data: bytes, start: int = 0) -> Fitted:
     return fit(image_of(data, start=start), WORDS, name="27e512")
 
 
-def noise(seed: int = 1) -> bytearray:
-    """Contents that hold every byte value."""
-    return bytearray((at * 31 + (at >> 8) * seed) & 0xFF for at in range(WORDS))
-
-
 def saved(state: Path) -> list[Path]:
     """The dumps that were kept."""
     return sorted((state / "saved").glob("*")) if (state / "saved").exists() else []
-
-
-def test_identify_names_the_maker_row() -> None:
-    """ID bytes, their places and the row."""
-    result = identify(context(FakeSession()))
-    assert "ID DA at 0000 (manufacturer), 08 at 0001 (device)" in result.lines[0]
-    assert result.facts["id"] == ID.hex(" ").upper()
-    assert result.facts["maker"] == "DA"
-
-
-def test_read_gives_the_range_and_compares_passes() -> None:
-    """Three passes over a range: its bytes, and one sequence a pass."""
-    session = FakeSession(noise())
-    result = read(context(session, first=0x100, last=0x2FF, passes=3))
-    assert result.data == bytes(session.cells[0x100:0x300])
-    assert session.kinds == ["read"] * 3
-
-
-def test_passes_that_disagree_are_listed() -> None:
-    """A byte that reads two ways is named with both values, and nothing counts as read."""
-    session = FakeSession(noise())
-
-    def fade(sequence: Sequence, turn: int) -> RunResult | None:
-        if turn == 2:
-            session.cells[0x1234] ^= 0x80
-        return None
-
-    session.before = fade
-    old = session.cells[0x1234]
-    with pytest.raises(Difference) as found:
-        read(context(session, passes=2))
-    assert f"1234: {old:02X}, {old ^ 0x80:02X}" in found.value.facts
-
-
-def test_an_address_line_that_changes_nothing_is_told() -> None:
-    """Half a chip twice: A15 with its pin."""
-    half = bytes(noise(7)[: WORDS // 2])
-    result = read(context(FakeSession(bytearray(half + half))))
-    assert result.facts["unchanging_lines"] == ["A15"]
-    assert any("A15 (pin 1)" in line and "open pin or repeated image" in line for line in result.lines)
-
-
-def test_blank_check_tells_words_and_vcc() -> None:
-    """A blank chip is a fact with numbers; one word that is not is a difference."""
-    assert blank(context(FakeSession())).lines == ("blank: 65536 words, 0000..FFFF, read FF at VCC 5.0 V",)
-    session = FakeSession()
-    session.cells[0x8001] = 0xFE
-    with pytest.raises(Difference, match="word 8001 reads FE"):
-        blank(context(session))
 
 
 def test_erase_saves_in_two_passes_first(state: Path) -> None:

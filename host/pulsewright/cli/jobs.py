@@ -86,6 +86,7 @@ def add_commands(commands: Commands[Parser]) -> None:
         "-o", metavar="FILE", dest="out", required=True, help="the file: .hex or .ihx, else raw binary"
     )
     reading.add_argument("--passes", metavar="N", type=count, default=1, help="read so often, and compare (default 1)")
+    reading.add_argument("--margins", action="store_true", help="read at the margins of VCC too, and compare")
     one("blank-check", _blank, "is every word in the erased state", "blank-check 27e512 --rig virtual")
     erasing = one(
         "erase",
@@ -155,6 +156,7 @@ def _run(
         first=first,
         last=last,
         passes=getattr(args, "passes", 1),
+        margins=getattr(args, "margins", False),
         erase=getattr(args, "erase", False),
         save=not getattr(args, "no_save", False),
         vouch=getattr(args, "vouch", ""),

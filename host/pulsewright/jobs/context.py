@@ -79,6 +79,7 @@ class Options:
     first: int = 0
     last: int | None = None
     passes: int = 1
+    margins: bool = False
     erase: bool = False
     save: bool = True
     vouch: str = ""

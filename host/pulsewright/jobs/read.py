@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 from pulsewright.errors import Difference
+from pulsewright.image.compare import compare
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
-from pulsewright.jobs.plan import BLOCK_WORDS, unchanging_lines
+from pulsewright.jobs.margins import verdicts
+from pulsewright.jobs.plan import BLOCK_WORDS, unchanging_lines, verify_steps
 from pulsewright.jobs.record import crc_text
 from pulsewright.link.blocks import requests
 from pulsewright.link.results import RunResult
 from pulsewright.rig.model import RailStep
 from pulsewright.sequence.compile import compile_read
-from pulsewright.units import show_address
+from pulsewright.units import show_address, show_count
 
 LISTED = 16
 
@@ -55,15 +57,36 @@ def read_agreed(ctx: JobContext, why: str, passes: int, first: int, last: int) -
     return results[-1]
 
 
+def _read_margins(ctx: JobContext, data: bytes) -> list[str]:
+    """The range read again at each margin of VCC; Difference lists the bytes that change, and what that says."""
+    lines = []
+    for step in verify_steps(ctx.definition, ctx.rig):
+        title = f"read at {step.text}"
+        other = read_once(ctx, title, ctx.first, ctx.last, mode=step.mode, rail_step=step.rail_step).data
+        if other != data:
+            comparison = compare(bytes(ctx.first) + data, bytes(ctx.first) + other)
+            raise Difference(
+                f"{show_count(comparison.differing, 'byte')} read otherwise at {step.text}",
+                wanted="the same bytes at every VCC inside the window",
+                facts=[*comparison.lines()[3:], *verdicts(comparison)],
+                did="VCC off; nothing was written",
+                hint="a chip that changes with VCC is fading or under-erased: save it again and again, then compare",
+            )
+        lines.append(f"the same at {step.text}")
+    return lines
+
+
 def _work(ctx: JobContext) -> JobResult:
     definition = ctx.definition
     result = read_agreed(ctx, "read", ctx.options.passes, ctx.first, ctx.last)
     data = result.data
+    margins = _read_margins(ctx, data) if ctx.options.margins else []
     step = definition.supplies["VCC.read"].typ_mv
     lines = [
         f"{len(data)} words read, {ctx.span()}, {ctx.options.passes} "
         f"{'passes, all agree' if ctx.options.passes > 1 else 'pass'}; CRC-32 {crc_text(data)}"
     ]
+    lines += margins
     blank = data.count(definition.blank)
     lines.append(f"{blank} of them are {ctx.hex(definition.blank)}, the erased state")
     still = unchanging_lines(data) if ctx.words == definition.words else []
@@ -78,6 +101,7 @@ def _work(ctx: JobContext) -> JobResult:
         "blank_words": blank,
         "unchanging_lines": [f"A{bit}" for bit in still],
         "vcc_mv": step,
+        "margins": margins,
     }
     return JobResult(tuple(lines), facts, data)
 

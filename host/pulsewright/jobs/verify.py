@@ -5,28 +5,15 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from pulsewright.errors import CannotMake, Difference, PulsewrightError
-from pulsewright.image.compare import Comparison, compare
+from pulsewright.image.compare import compare
 from pulsewright.image.memory import Fitted
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
+from pulsewright.jobs.margins import verdicts
 from pulsewright.jobs.plan import VerifyStep, verify_steps
 from pulsewright.jobs.read import read_once
 from pulsewright.jobs.record import crc_text
 from pulsewright.units import show_count
-
-# A fading 0 shows first at a high VCC, an under-erased or slow 1 at a low one (common practice).
-FADING = "0s that read 1 show first at a high VCC: charge fades or the burn was too weak"
-UNDER_ERASED = "1s that read 0 show first at a low VCC: under-erased or slow"
-
-
-def verdicts(comparison: Comparison) -> list[str]:
-    """What the direction of the differences says."""
-    found = []
-    if comparison.burn_missing:
-        found.append(FADING)
-    if comparison.needs_erase:
-        found.append(UNDER_ERASED)
-    return found
 
 
 def passes_of(ctx: JobContext) -> tuple[VerifyStep, ...]:
