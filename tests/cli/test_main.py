@@ -47,6 +47,13 @@ def test_each_command_helps_by_itself(words: tuple[str, ...], capsys: pytest.Cap
     assert f"example:\n  pulsewright {' '.join(words)}" in shown
 
 
+@pytest.mark.parametrize("group", ["define", "rig", "bench", "record"])
+def test_each_group_helps_by_itself(group: str, capsys: pytest.CaptureFixture[str]) -> None:
+    """A word that only holds commands lists them and shows an example too."""
+    assert main([group, "--help"]) == 0
+    assert f"example:\n  pulsewright {group} " in capsys.readouterr().out
+
+
 @pytest.mark.parametrize("parser", [parser for _, parser in COMMANDS], ids=[" ".join(words) for words, _ in COMMANDS])
 def test_every_example_can_be_parsed(parser: Parser) -> None:
     """The example in the help is a command line that the parser takes."""

@@ -18,7 +18,7 @@ class Terminal(io.StringIO):
 def test_the_line_tells_words_rate_and_time_left() -> None:
     """A quarter done in 10 s leaves 30 s."""
     text = progress_text("burn", 1000, 4000, 10.0)
-    assert text == "burn  ├──────                  ┤  1000 of 4000 words  100 words/s  30 s left"
+    assert text == "burn  ├──        ┤  1000 of 4000 words  100/s  30 s left"
 
 
 def test_a_stage_without_words_tells_its_time() -> None:
@@ -26,11 +26,11 @@ def test_a_stage_without_words_tells_its_time() -> None:
     assert progress_text("erase", 0, 0, 75.2) == "erase  1 min 15 s"
 
 
-@pytest.mark.parametrize(("done", "ruled"), [(0, 0), (1, 0), (50, 12), (100, 24), (200, 24)])
+@pytest.mark.parametrize(("done", "ruled"), [(0, 0), (9, 0), (50, 5), (100, 10), (200, 10)])
 def test_the_ruler_follows_the_work(done: int, ruled: int) -> None:
     """The ruled part is proportional, and never longer than the scale."""
     text = ruler(done, 100)
-    assert len(text) == 26
+    assert len(text) == 12
     assert text.count("─") == ruled
 
 
@@ -59,7 +59,7 @@ def test_the_live_line_shows_the_words_and_leaves_the_facts(monkeypatch: pytest.
     progress = LiveProgress(stream, lambda: next(times))
     progress.begin("read", 1000)
     progress.link(LinkProgress("run", 2, 500, 10))
-    assert progress.text() == "read  ├────────────            ┤  500 of 1000 words  125 words/s  4 s left"
+    assert progress.text() == "read  ├─────     ┤  500 of 1000 words  125/s  4 s left"
     progress.end()
     assert "read, 1000 words: 4 s" in stream.getvalue()
 

@@ -6,7 +6,7 @@ import argparse
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
-from pulsewright.cli.desk import Desk, Parser, add
+from pulsewright.cli.desk import Desk, Parser, add, add_group
 
 if TYPE_CHECKING:
     from pulsewright.virtual.bench import Bench
@@ -18,8 +18,12 @@ name is the first line of the answer; Ctrl-C ends it, and what the chip holds th
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
-    group = commands.add_parser("bench", help="kept virtual sockets, each with a modelled chip", allow_abbrev=False)
-    inner = group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+    inner = add_group(
+        commands,
+        "bench",
+        "kept virtual sockets, each with a modelled chip",
+        "pulsewright bench new tower.bench --chip 27e512 --contents noise",
+    )
     new = add(
         inner,
         "new",

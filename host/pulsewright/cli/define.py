@@ -4,13 +4,12 @@ from __future__ import annotations
 
 import argparse
 
-from pulsewright.cli.desk import Desk, Parser, add
+from pulsewright.cli.desk import Desk, Parser, add, add_group
 
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
-    group = commands.add_parser("define", help="work on a definition of your own", allow_abbrev=False)
-    inner = group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+    inner = add_group(commands, "define", "work on a definition of your own", "pulsewright define check mypart.toml")
     check = add(
         inner,
         "check",

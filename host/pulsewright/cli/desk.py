@@ -114,6 +114,19 @@ def add(
     return parser
 
 
+def add_group(commands: argparse._SubParsersAction[Parser], name: str, what: str, example: str) -> Any:
+    """A word that holds commands of its own; gives what `add` takes."""
+    group = commands.add_parser(
+        name,
+        help=what,
+        description=f"{what[0].upper()}{what[1:]}.",
+        epilog=f"example:\n  {example}",
+        formatter_class=argparse.RawDescriptionHelpFormatter,
+        allow_abbrev=False,
+    )
+    return group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+
+
 def address(text: str) -> int:
     """An address option."""
     try:

@@ -5,13 +5,12 @@ from __future__ import annotations
 import argparse
 from typing import Any
 
-from pulsewright.cli.desk import Desk, Parser, add
+from pulsewright.cli.desk import Desk, Parser, add, add_group
 
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
-    group = commands.add_parser("record", help="what jobs have left behind", allow_abbrev=False)
-    inner = group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+    inner = add_group(commands, "record", "what jobs have left behind", "pulsewright record list")
     add(inner, "list", _list, what="list the records of all jobs, oldest first", example="pulsewright record list")
     show = add(inner, "show", _show, what="show one record", example="pulsewright record show last")
     show.add_argument("record", metavar="RECORD", help='a name of `record list`, its beginning, "last", or a path')

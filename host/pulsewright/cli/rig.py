@@ -5,7 +5,7 @@ from __future__ import annotations
 import argparse
 from typing import TYPE_CHECKING
 
-from pulsewright.cli.desk import HIGH_VOLTAGE, RIG_HELP, Desk, Parser, Stop, add
+from pulsewright.cli.desk import HIGH_VOLTAGE, RIG_HELP, Desk, Parser, Stop, add, add_group
 
 if TYPE_CHECKING:
     from pulsewright.link.results import RigFacts
@@ -13,8 +13,7 @@ if TYPE_CHECKING:
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
-    group = commands.add_parser("rig", help="the rig: what it is and can make", allow_abbrev=False)
-    inner = group.add_subparsers(title="commands", metavar="COMMAND", required=True, parser_class=Parser)
+    inner = add_group(commands, "rig", "the rig: what it is and can make", "pulsewright rig show --rig virtual")
     show = add(
         inner,
         "show",

@@ -40,7 +40,7 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
 
     Gives the last pass, the facts and the lines of text.
     """
-    result = read_agreed(ctx, "saving what the chip holds" if ctx.options.save else "first look", 2, first, last)
+    result = read_agreed(ctx, "save" if ctx.options.save else "look", 2, first, last)
     facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
     if not ctx.options.save:
         return result, facts, []

@@ -10,8 +10,9 @@ from pulsewright.link.results import LinkProgress
 
 if TYPE_CHECKING:
     from rich.live import Live
+    from rich.text import Text
 
-_RULER = 24  # characters
+_RULER = 10  # characters
 _REFRESHES_A_SECOND = 8
 
 
@@ -33,7 +34,7 @@ def progress_text(title: str, done: int, words: int, seconds: float) -> str:
         return f"{title}  {duration(seconds)}"
     text = f"{title}  {ruler(done, words)}  {done} of {words} words"
     if done and seconds > 0:
-        text += f"  {round(done / seconds)} words/s  {duration((words - done) * seconds / done)} left"
+        text += f"  {round(done / seconds)}/s  {duration((words - done) * seconds / done)} left"
     return text
 
 
@@ -76,7 +77,7 @@ class LiveProgress:
         self.end()
         self._title, self._words, self._done, self._began_s = title, words, 0, self._clock_s()
         self._live = Live(
-            get_renderable=self.text,
+            get_renderable=self._line,
             console=self._console,
             refresh_per_second=_REFRESHES_A_SECOND,
             transient=True,
@@ -84,6 +85,11 @@ class LiveProgress:
             redirect_stderr=False,
         )
         self._live.start()
+
+    def _line(self) -> Text:
+        from rich.text import Text
+
+        return Text(self.text(), no_wrap=True, overflow="ellipsis")
 
     def text(self) -> str:
         """The live line as it is now."""
