@@ -11,7 +11,8 @@ from collections.abc import Callable, Sequence
 
 from pulsewright.virtual.interface import Levels
 from pulsewright.virtual.judge import Judge
-from pulsewright.virtual.models.e512 import LIMITS, make_chip
+from pulsewright.virtual.models.e512 import make_chip
+from pulsewright.virtual.models.e512_limits import LIMITS
 from tests.virtual.waveform import CE, OE, US, Bus
 
 WORDS = 4_096

@@ -173,3 +173,34 @@ class Bus:
         self.raise_to({A9: self.high_mv})
         self.wait(2 * US)
         return first, second
+
+
+def ready_to_program(bus: Bus, at: int = 5, word: int = 0x0F, vpp: int = 12_000) -> None:
+    """Everything as it must stand before a program pulse."""
+    bus.address(at)
+    bus.drive(word)
+    bus.raise_to({OE: vpp})
+    bus.wait(2 * US)
+
+
+def ready_to_erase(bus: Bus, word: int = 0xFF) -> None:
+    """Everything as it must stand before an erase pulse."""
+    bus.address(0)
+    bus.drive(word)
+    bus.set({A9: HIGH})
+    bus.raise_to({OE: 14_000, A9: 14_000})
+    bus.wait(2 * US)
+
+
+def pulse(bus: Bus, ticks: int = 100 * US) -> None:
+    """A CE pulse."""
+    with bus.low(CE, ticks):
+        pass
+
+
+def wind_down(bus: Bus) -> None:
+    """After a pulse: hold, raised levels down, D released, recovery."""
+    bus.wait(2 * US)
+    bus.raise_to({pin: HIGH for pin in (OE, A9) if (bus.levels[pin] or 0) > HIGH})
+    bus.release()
+    bus.wait(2 * US)

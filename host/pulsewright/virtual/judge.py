@@ -184,8 +184,9 @@ class Judge:
             if pin in self._level:
                 self._raised_edge(t, pin, levels[pin])
         self._enables(t, levels)
-        raised = self._raised if self._vcc_mv >= POWERED_MV else {}
-        self._watch.update(t, levels, raised, self._raised_t, self._vcc_t)
+        watch, raised = self._watch, self._raised
+        if raised or watch.kind is not None or watch.unknown:
+            watch.update(t, levels, raised if self._vcc_mv >= POWERED_MV else {}, self._raised_t, self._vcc_t)
 
     def _vcc_edge(self, t: int, levels: Levels, changed: Sequence[int]) -> None:
         vcc = levels[self.limits.vcc_pin] or 0
