@@ -5,7 +5,6 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from tests.virtual.waveform import (
-    A9,
     CE,
     HIGH,
     MS,
@@ -16,9 +15,7 @@ from tests.virtual.waveform import (
     Bus,
     D,
     pulse,
-    ready_to_erase,
     ready_to_program,
-    wind_down,
 )
 
 
@@ -96,193 +93,6 @@ def too_steep(bus: Bus) -> None:
 def no_such_level(bus: Bus) -> None:
     """13 V on OE: neither program nor erase."""
     bus.raise_to({OE: 13_000})
-
-
-def unknown_pulse(bus: Bus) -> None:
-    """CE low while OE stands between the windows."""
-    ready_to_program(bus, vpp=13_000)
-    pulse(bus)
-
-
-def erase_without_a9(bus: Bus) -> None:
-    """CE low with OE at 14 V and A9 at TTL."""
-    ready_to_program(bus, vpp=14_000)
-    pulse(bus)
-
-
-def raised_under_ce(bus: Bus) -> None:
-    """OE raised while CE is low already: the pulse begins with the ramp's end."""
-    bus.address(5)
-    bus.drive(0x0F)
-    bus.set({CE: 0})
-    bus.raise_to({OE: 12_000})
-    bus.wait(100 * US)
-    bus.set({CE: HIGH})
-    wind_down(bus)
-
-
-def too_short(bus: Bus) -> None:
-    """A pulse one tick short."""
-    ready_to_program(bus)
-    pulse(bus, 95 * US - 1)
-
-
-def too_long(bus: Bus) -> None:
-    """A pulse one tick long."""
-    ready_to_program(bus)
-    pulse(bus, 105 * US + 1)
-
-
-def erase_too_long(bus: Bus) -> None:
-    """An erase pulse one tick long."""
-    ready_to_erase(bus)
-    pulse(bus, 105 * MS + 1)
-
-
-def wrong_vcc(bus: Bus) -> None:
-    """A program pulse at VCC 3.75 V."""
-    bus.power(3750)
-    ready_to_program(bus)
-    pulse(bus)
-
-
-def erase_data(bus: Bus) -> None:
-    """An erase pulse with D0 low."""
-    ready_to_erase(bus, 0xFE)
-    pulse(bus, 100 * MS)
-
-
-def erase_address(bus: Bus) -> None:
-    """An erase pulse with an address pin high."""
-    ready_to_erase(bus)
-    bus.set({A[4]: HIGH})
-    bus.wait(2 * US)
-    pulse(bus, 100 * MS)
-
-
-def address_setup(bus: Bus) -> None:
-    """The address moves one tick less than 2 us before the pulse."""
-    ready_to_program(bus)
-    bus.address(6)
-    bus.wait(2 * US - 1)
-    pulse(bus)
-
-
-def data_setup(bus: Bus) -> None:
-    """D moves one tick less than 2 us before the pulse."""
-    ready_to_program(bus)
-    bus.drive(0x3C)
-    bus.wait(2 * US - 1)
-    pulse(bus)
-
-
-def raised_setup(bus: Bus) -> None:
-    """OE reaches its level one tick less than 2 us before the pulse."""
-    bus.address(5)
-    bus.drive(0x0F)
-    bus.raise_to({OE: 12_000})
-    bus.wait(2 * US - 1)
-    pulse(bus)
-
-
-def vcc_setup(bus: Bus) -> None:
-    """VCC reaches its window too late before the pulse, raised levels with it."""
-    bus.power(3750)
-    bus.address(5)
-    bus.drive(0x0F)
-    bus.wait(US)
-    bus.set({VCC: HIGH, CE: HIGH})
-    bus.ramp({OE: 12_000}, US)
-    pulse(bus)
-
-
-def address_hold(bus: Bus) -> None:
-    """The address moves one tick less than 2 us after the pulse."""
-    ready_to_program(bus)
-    pulse(bus)
-    bus.wait(2 * US - 1)
-    bus.address(6)
-
-
-def data_hold(bus: Bus) -> None:
-    """D moves one tick less than 2 us after the pulse."""
-    ready_to_program(bus)
-    pulse(bus)
-    bus.wait(2 * US - 1)
-    bus.drive(0xF0)
-
-
-def release_hold(bus: Bus) -> None:
-    """D is released one tick less than 2 us after the pulse."""
-    ready_to_program(bus)
-    pulse(bus)
-    bus.wait(2 * US - 1)
-    bus.release()
-
-
-def raised_hold(bus: Bus) -> None:
-    """OE begins to fall one tick less than 2 us after the pulse."""
-    ready_to_program(bus)
-    pulse(bus)
-    bus.wait(2 * US - 1)
-    bus.raise_to({OE: HIGH})
-
-
-def a9_hold(bus: Bus) -> None:
-    """A9 begins to fall too early after an erase pulse; it is an address pin as well."""
-    ready_to_erase(bus)
-    pulse(bus, 100 * MS)
-    bus.wait(2 * US - 1)
-    bus.raise_to({A9: HIGH})
-
-
-def raised_cut(bus: Bus) -> None:
-    """OE falls inside the pulse, which ends it."""
-    ready_to_program(bus)
-    bus.set({CE: 0})
-    bus.wait(96 * US)
-    bus.raise_to({OE: HIGH})
-    bus.set({CE: HIGH})
-
-
-def address_in_pulse(bus: Bus) -> None:
-    """The address moves in the middle of a pulse."""
-    ready_to_program(bus)
-    with bus.low(CE, 100 * US):
-        bus.address(6)
-
-
-def data_in_pulse(bus: Bus) -> None:
-    """D moves in the middle of a pulse."""
-    ready_to_program(bus)
-    with bus.low(CE, 100 * US):
-        bus.drive(0xF0)
-
-
-def not_driven(bus: Bus) -> None:
-    """A pulse with D released: its pins float as well."""
-    bus.address(5)
-    bus.raise_to({OE: 12_000})
-    bus.wait(2 * US)
-    pulse(bus)
-
-
-def floating(bus: Bus) -> None:
-    """A pulse with an address pin that nothing drives."""
-    bus.set({A[7]: None})
-    bus.drive(0x0F)
-    bus.raise_to({OE: 12_000})
-    bus.wait(2 * US)
-    pulse(bus)
-
-
-def between_levels(bus: Bus) -> None:
-    """A pulse with an address pin that is neither low nor high."""
-    bus.set({A[7]: 1_500})
-    bus.drive(0x0F)
-    bus.raise_to({OE: 12_000})
-    bus.wait(2 * US)
-    pulse(bus)
 
 
 def recovery(bus: Bus) -> None:
@@ -372,30 +182,6 @@ WAVES: list[tuple[Callable[[Bus], None], set[str]]] = [
     (vcc_step_under_raised, {"supply order"}),
     (too_steep, {"rise time"}),
     (no_such_level, {"raised window"}),
-    (unknown_pulse, {"unknown pulse", "raised window"}),
-    (erase_without_a9, {"unknown pulse"}),
-    (raised_under_ce, {"raised setup"}),
-    (too_short, {"pulse width"}),
-    (too_long, {"pulse width"}),
-    (erase_too_long, {"pulse width"}),
-    (wrong_vcc, {"pulse vcc"}),
-    (erase_data, {"pulse data"}),
-    (erase_address, {"pulse address"}),
-    (address_setup, {"address setup"}),
-    (data_setup, {"data setup"}),
-    (raised_setup, {"raised setup"}),
-    (vcc_setup, {"vcc setup", "raised setup"}),
-    (address_hold, {"address hold"}),
-    (data_hold, {"data hold"}),
-    (release_hold, {"data hold"}),
-    (raised_hold, {"raised hold"}),
-    (a9_hold, {"raised hold", "address hold"}),
-    (raised_cut, {"raised hold"}),
-    (address_in_pulse, {"address in pulse"}),
-    (data_in_pulse, {"data in pulse"}),
-    (not_driven, {"data not driven", "floating input"}),
-    (floating, {"floating input"}),
-    (between_levels, {"floating input"}),
     (recovery, {"recovery"}),
     (access, {"access time"}),
     (address_access, {"access time"}),

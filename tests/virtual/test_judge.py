@@ -8,6 +8,7 @@ import pytest
 
 from pulsewright.virtual.judge import KEPT, RULES, Judge
 from pulsewright.virtual.models.e512_limits import LIMITS
+from tests.virtual.broken_pulses import PULSES
 from tests.virtual.broken_waves import WAVES
 from tests.virtual.waveform import A9, CE, HIGH, MS, OE, US, VCC, A, Bus, pulse, ready_to_program, wind_down
 
@@ -70,7 +71,7 @@ def test_it_tells_the_widths_and_set_up_times_it_saw() -> None:
     assert seen["recovery"] == (2 * US, 2 * US, 1)
 
 
-@pytest.mark.parametrize(("wave", "broken"), WAVES)
+@pytest.mark.parametrize(("wave", "broken"), [*WAVES, *PULSES])
 def test_each_rule_fires(wave: Callable[[Bus], None], broken: set[str]) -> None:
     """A waveform that breaks one rule gets just that rule reported."""
     judge, bus = watched()
@@ -81,7 +82,7 @@ def test_each_rule_fires(wave: Callable[[Bus], None], broken: set[str]) -> None:
 
 def test_each_rule_of_the_list_was_seen_to_fire() -> None:
     """Every rule that the judge knows is one that the test above sees fire, and none fires that has no name."""
-    assert set().union(*(broken for _wave, broken in WAVES)) == set(RULES)
+    assert set().union(*(broken for _wave, broken in [*WAVES, *PULSES])) == set(RULES)
 
 
 def test_a_violation_says_where_and_when() -> None:
