@@ -52,6 +52,8 @@ class FakeRig:
         self.touched: dict[int, int] = {}
         self.runs = 0
         self.deaf_above: int | None = None  # a rate above which nothing gets through
+        self.reset_at = _NEVER
+        self.host_baud: int | None = None
         self._rx: deque[tuple[int, int]] = deque()
         self._tx: deque[tuple[int, int]] = deque()
         self._out = bytearray()
@@ -66,6 +68,7 @@ class FakeRig:
         self._code = b""
         self._reader, self._recent, self._aborts = FrameReader(), bytearray(), 0
         self._kept: tuple[int, Message] | None = None
+        self._next_baud = 0
         self._rate_deadline = self._beat_at = self._dead_at = self._work_at = _NEVER
         self._damaged = self._dropped = self._repeated = 0
         self._run_index = 0
@@ -74,34 +77,47 @@ class FakeRig:
 
     # ---- the seam of the transport
 
-    def receive(self, data: bytes, at_tick: int) -> None:
-        self._rx.extend((at_tick, byte) for byte in data)
+    def receive(self, data: bytes, at: int) -> None:
+        same = self.host_baud in (None, self.baud)
+        for byte in data:
+            at += 160_000_000 // (self.host_baud or self.baud)
+            self._rx.append((at, byte if same else (byte ^ 0x5A) | 1))
 
-    def line_break(self, at_tick: int) -> None:
-        self._breaks.append(at_tick)
+    def line_break(self, at: int) -> None:
+        self._breaks.append(at)
 
     def take_output(self) -> bytes:
         data = bytes(self._out)
         self._out.clear()
         return data
 
-    def run(self, until_tick: int) -> None:
+    def run(self, until: int) -> None:
         while not self._out:
             rx = self._rx[0][0] if self._rx else _NEVER
             tx = self._tx[0][0] if self._tx else _NEVER
             broken = self._breaks[0] if self._breaks else _NEVER
-            at = min(rx, tx, broken, self._work_at, self._beat_at, self._dead_at, self._rate_deadline)
-            if at > until_tick:
-                self.t = max(self.t, until_tick)
+            at = min(rx, tx, broken, self._work_at, self._beat_at, self._dead_at, self._rate_deadline,
+                     self.reset_at)
+            if at > until:
+                self.t = max(self.t, until)
                 return
             self.t = max(self.t, at)
             if at == tx:
-                self._out.append(self._tx.popleft()[1])
+                byte = self._tx.popleft()[1]
+                self._out.append(byte if self.host_baud in (None, self.baud) else (byte ^ 0x5A) | 1)
+                if not self._tx and self._next_baud:
+                    self.baud, self._next_baud = self._next_baud, 0
+                    self._rate_deadline = self.t + 500 * MS if self.baud != HELLO_BAUD else _NEVER
             elif at == rx:
                 self._byte(self._rx.popleft()[1])
             elif at == broken:
                 self._breaks.popleft()
                 self._abort()
+                if self.state is not State.RUNNING:
+                    self.baud, self._rate_deadline = HELLO_BAUD, _NEVER
+            elif at == self.reset_at:
+                self.boot, self.reset_at = self.boot + 1, _NEVER
+                self.power_up()
             elif at == self._work_at:
                 self._work()
             elif at == self._dead_at:
@@ -144,8 +160,8 @@ class FakeRig:
         number = self.permit.number if self.permit else 0
         if self.powered and message.permit == number:
             self._dead_at = self.t + 500 * MS
-        if message.kind is Frame.BLOCK and self.state is State.RUNNING or message.kind is Frame.BLOCK and self._done:
-            if message.permit == number:
+        if message.kind is Frame.BLOCK:
+            if message.permit == number and (self.state is State.RUNNING or self._done):
                 self._block(message)
         elif message.kind in _COMMANDS:
             self._command(message, number)
@@ -200,8 +216,7 @@ class FakeRig:
             return
         self._answer(index, Outcome.DONE, data)
         if kind is Frame.RATE:
-            self.baud = fields["baud"]
-            self._rate_deadline = self.t + 500 * MS
+            self._next_baud = fields["baud"]
 
     def _page(self, number: int) -> bytes:
         if number == 0:
@@ -334,6 +349,7 @@ class FakeRig:
         self.powered, self.state, self._done = False, State.SAFE, True
         self._work_at = self._beat_at = self._dead_at = _NEVER
         self.latched = b"" if outcome is Outcome.DONE else trouble
-        done = pack(BLOBS["run_done"], {"matched": 0xFF, "blocks": self._block_count, "words": self._word_count})
+        counts = {"matched": 0xFF, "blocks": self._block_count, "words": self._word_count, "tries": 0}
+        done = pack(BLOBS["run_done"], counts)
         tail = pack(BLOBS["run_tail"], {"id": b"\x8f\x0d", "readings": bytes([10, 0, 1, 2])})
         self._answer(self._run_index, outcome, trouble + done + tail)

@@ -25,7 +25,8 @@ from pulsewright.wire.tables import (
 )
 
 _TRY_US = 400_000  # one greeting; a board that was reset by opening the port is still asleep for some of them
-_RATE_TRY_US = 300_000
+_RATE_TRY_US = 450_000
+_SETTLE_US = 2_000  # between the answer to a change of rate and the first byte at the new one
 _RATE_STEPS = (1_000_000, 500_000, 250_000)  # exact at 16 MHz (ATmega2560 data sheet 2549, table of baud rates)
 _PATTERN = bytes([0x00, 0xFF, 0x55, 0xAA, 0x01, 0x80, 0x7F, 0xFE]) + bytes(range(0, 256, 5))  # long and short edges
 
@@ -57,10 +58,18 @@ def find_hello(stream: bytearray) -> Hello | None:
 
 
 def greet(line: Line, for_us: int, heard: Heard, look: Callable[[], None] = lambda: None) -> Hello | None:
-    """Asks for a greeting at the line's rate until one comes or the time is over."""
+    """Asks for a greeting at the line's rate until one comes or the time is over.
+
+    A break goes before each question but the first: a rig that an earlier session left at a higher rate hears it at
+    any rate, ends what it was doing, and is back at the rate of greetings.
+    """
     end_us = line.transport.now_us() + for_us
     stream = bytearray()
+    first = True
     while line.transport.now_us() < end_us:
+        if not first:
+            line.transport.send_break()
+        first = False
         line.write(HELLO_REQUEST)
         try_us = min(end_us, line.sent_by_us + max(_TRY_US, line.timing.first_answer_us))
         while (now := line.transport.now_us()) < try_us:
@@ -206,14 +215,25 @@ def _works_at(line: Line, commands: Commands, baud: int) -> bool:
         return False
     try:
         line.set_baud(baud)
+        _pause(line, _SETTLE_US)
+        line.write(b"\0")  # whatever the rig's receiver made of the change ends here
         if echoes(line, commands, _RATE_TRY_US):
             return True
     except LinkFault:  # this machine's port cannot make the rate, or the line is gone: the next lines find out
         pass
+    # The rig may have heard us at the new rate without our hearing it; then only a break brings it back.
+    line.transport.send_break()
     line.set_baud(HELLO_BAUD)
-    quiet_until_us = line.transport.now_us() + 2 * RATE_FALL_BACK_MS * 1000
-    while line.transport.now_us() < quiet_until_us:
-        line.receive(quiet_until_us)
+    _pause(line, RATE_FALL_BACK_MS * 1000 + _TRY_US)
+    line.write(b"\0")
     if not echoes(line, commands, line.timing.give_up_us):
         raise Silent
     return False
+
+
+def _pause(line: Line, for_us: int) -> None:
+    """Lets time pass; what comes meanwhile has nothing to say."""
+    until_us = line.transport.now_us() + for_us
+    while line.transport.now_us() < until_us:
+        if line.receive(until_us) is not None:
+            line.dropped += 1

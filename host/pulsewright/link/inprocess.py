@@ -12,23 +12,28 @@ _BITS_A_BYTE = 10
 
 
 class RigInProcess(Protocol):
-    """What this transport wants of a rig. Times are ticks of 62.5 ns since the rig's start."""
+    """What this transport wants of a rig. Times are ticks of 62.5 ns since the rig's start.
+
+    `host_baud` is the host's rate: where it is not the rig's, only noise gets through.
+    """
+
+    host_baud: int | None
 
     @property
     def t(self) -> int:
         """The rig's clock."""
 
-    def receive(self, data: bytes, at_tick: int) -> None:
-        """Bytes that arrive at a time, not before the rig's clock."""
+    def receive(self, data: bytes, at: int, /) -> None:
+        """Bytes from the host; the start bit of the first one stands at tick `at`, the others follow at line rate."""
 
-    def run(self, until_tick: int) -> None:
-        """On to the next byte sent, or to the time."""
+    def run(self, until: int, /) -> None:
+        """Goes on to `until`, or until a byte to the host has left."""
 
     def take_output(self) -> bytes:
-        """What was sent up to now, once."""
+        """The bytes that have left since the last call."""
 
-    def line_break(self, at_tick: int) -> None:
-        """A line break at a time."""
+    def line_break(self, at: int, /) -> None:
+        """A line break from the host."""
 
 
 class InProcess:
@@ -37,8 +42,8 @@ class InProcess:
     def __init__(self, rig: RigInProcess, name: str = "virtual") -> None:
         self.name = name
         self._rig = rig
-        self._baud = HELLO_BAUD
-        self._free_tick = 0  # when the last byte handed over has arrived
+        self._baud = rig.host_baud = HELLO_BAUD
+        self._free_tick = 0  # when the last byte handed over has left
 
     def timing(self, board: str) -> Timing:
         """The wire's own times: the clock is the rig's."""
@@ -50,12 +55,9 @@ class InProcess:
 
     def write(self, data: bytes) -> None:
         """Bytes one behind the other, each ten bits long at the line's rate."""
-        at = max(self._free_tick, self._rig.t)
-        per_byte = TICKS_PER_S * _BITS_A_BYTE // self._baud
-        for byte in data:
-            at += per_byte
-            self._rig.receive(bytes([byte]), at)
-        self._free_tick = at
+        start = max(self._free_tick, self._rig.t)
+        self._rig.receive(data, start)
+        self._free_tick = start + len(data) * TICKS_PER_S * _BITS_A_BYTE // self._baud
 
     def read(self, until_us: int) -> bytes:
         """The rig's next bytes, or b"" at the deadline."""
@@ -68,7 +70,7 @@ class InProcess:
 
     def set_baud(self, baud: int) -> None:
         """The rate of what is sent from now on."""
-        self._baud = baud
+        self._baud = self._rig.host_baud = baud
 
     def send_break(self) -> None:
         """A line break behind what was sent."""

@@ -56,10 +56,13 @@ class Line:
         self._free_us = start + len(data) * _BITS_A_BYTE * 1_000_000 // self.baud
 
     def send(self, message: Message, *, again: bool = False) -> None:
-        """One frame; `again` counts it as repeated."""
+        """One frame; `again` counts it as repeated.
+
+        A repeat begins with a zero: where the end of the frame before was lost, the two would else run into one.
+        """
         if again:
             self.sent_again += 1
-        self.write(encode_frame(message))
+        self.write((b"\0" if again else b"") + encode_frame(message))
 
     def abort(self, permit: int, index: int) -> None:
         """The abort. A keep-alive stands before it, so that its zeros never run on from an earlier abort's."""

@@ -47,6 +47,7 @@ class Firmware(Protocol):
     def change_rate(self, baud: int) -> None: ...
     def counters(self) -> tuple[int, int, int]: ...
     def gate_open(self) -> bool: ...
+    def making_safe(self) -> bool: ...
 
 
 class Commands:
@@ -162,7 +163,8 @@ class Commands:
         self._answer(message, Outcome.REFUSED, pack(BLOBS["fault"], fault))
 
     def _heartbeat(self, message: Message) -> None:
-        fields = {"state": self.state, "ticks": self._rig.t & 0xFFFFFFFF}
+        state = State.SAFE if self._rig.making_safe() else self.state
+        fields = {"state": state, "ticks": self._rig.t & 0xFFFFFFFF}
         self._rig.send(encode_frame(Message(Frame.HEARTBEAT, message.permit, message.index, fields)))
 
     def beat(self) -> None:

@@ -291,6 +291,10 @@ class VirtualRig:
         """Whether the gate is open."""
         return self.machine is not None and self.machine.gate
 
+    def making_safe(self) -> bool:
+        """Whether the run is on its way to its end, or will be at the next op."""
+        return self._thrown is not None or (self.machine is not None and self.machine.safe)
+
     # ---- the line -------------------------------------------------------------------------------------------------
 
     def _byte(self, byte: int) -> None:
