@@ -167,6 +167,7 @@ def _run(
         rig_file, rig = stack.enter_context(opened(args.rig, definition.name, desk))
         stop = stack.enter_context(Stop(desk))
         session = Session(rig.transport, interrupted=stop, on_progress=progress.link)
+        stack.callback(session.close)
         session.connect()
         context = JobContext(definition, rig_file, rig, session, options, progress, stop, prompt(desk))
         return work(context)

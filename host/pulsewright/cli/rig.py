@@ -51,7 +51,11 @@ def _board(name: str, desk: Desk) -> RigFacts:
     from pulsewright.link.session import Session
 
     with opened(name, None, desk) as (_, rig), Stop(desk) as stop:
-        return Session(rig.transport, interrupted=stop).connect()
+        session = Session(rig.transport, interrupted=stop)
+        try:
+            return session.connect()
+        finally:
+            session.close()
 
 
 def _board_lines(board: RigFacts) -> list[str]:
