@@ -178,6 +178,8 @@ CASES: list[tuple[str, str, str, Bend, str]] = [
     ("a loop unclosed", "H5", "erase", drop(Op.NEXT), "a loop is never closed"),
     ("a loop closed twice", "H5", "erase", put(Op.NEXT, 0, ins(Op.NEXT)), "closes no loop"),
     ("wrong depth", "H5", "burn", set_(Op.BRANCH, -1, depth=1), "another depth"),
+    ("blocks taken in twice", "H5", "read", put(Op.END, 0, ins(Op.READ_RUN, wait=20)), "not taken in just once"),
+    ("blocks never taken in", "H5", "read", drop(Op.READ_RUN), "not taken in just once"),
     ("unreachable", "H5", "read", lambda items: [*items, ins(Op.END)], "no path reaches"),
     # D and lines: H6
     ("D against the chip", "H6", "burn", put(Op.SAMPLE, -1, ins(Op.DRIVE_WORD)), "while the chip may drive it"),

@@ -197,7 +197,10 @@ def check_header(t: Tables, shape: Shape) -> None:
         header.address,
     )
     t.need(header.words <= t.definition.words, "H7", "more words than the chip has", t.definition.words, header.words)
+    blocks = [at for at, (_, one) in enumerate(shape.flat) if one.op is Op.EACH_BLOCK]
     if header.flow is not Flow.NONE:
+        once = len(blocks) == 1 and not shape.nests[blocks[0]]  # the host's data end once: a second loop waits for ever
+        t.need(once, "H5", "the host's blocks are not taken in just once", "one each_block, in no loop", len(blocks))
         size = header.block_words * header.width // 8
         t.need(0 < size <= BLOCK_BYTES, "H5", "block size", f"1 to {BLOCK_BYTES} bytes", size)
         t.need(header.words > 0, "H7", "a flow of no words")
