@@ -200,6 +200,23 @@ def test_history_adds_up_over_rigs() -> None:
     assert bench.boots == 3
 
 
+def test_a_second_rig_finds_the_chip_as_the_first_left_it() -> None:
+    """Cells and half-done work stay, and what the chip knew of the first rig's clock does not reach the second."""
+    bench = Bench.fresh("27e512", b"\x12" * WORDS, faults=["slow=100,2"])
+    bus = Bus(used(bench), chip=bench.chip)
+    bus.up()
+    bus.erase()
+    bus.set({CE: 0, OE: 0})
+    bus = Bus(used(bench), chip=bench.chip)
+    bus.up()
+    assert bus.read(7) == 0xFF
+    bus.power(3_750)
+    assert bus.read(7, access=US) == 0x12
+    bus.power()
+    bus.erase()
+    assert bench.chip.cells.count(0xFF) == WORDS
+
+
 def test_a_long_history_is_cut_and_counted() -> None:
     """Over several jobs, too, the first violations are kept and all are counted."""
     bench = Bench.fresh("27e512", "blank")

@@ -200,3 +200,13 @@ def test_seen_keeps_the_least_and_the_most() -> None:
     for width in (100, 97, 103):
         bus.program(5, 0x0F, width * US)
     assert judge.seen()["program pulse"] == (97 * US, 103 * US, 3)
+
+
+def test_a_rig_at_rest_drives_d() -> None:
+    """Before the rig lets go of D for the first time it holds it low: outputs that go on then are a fight."""
+    judge = Judge(LIMITS)
+    bus = Bus()
+    bus.watchers = (judge,)
+    bus.set(dict.fromkeys(D, 0))
+    bus.power()
+    assert rules(judge) == {"bus fight"}

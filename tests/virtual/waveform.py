@@ -32,6 +32,8 @@ class Bus:
         for pin in (*A, CE, OE, GND, VCC):
             self.levels[pin] = 0
         self.high_mv = HIGH
+        for watcher in watchers:
+            watcher.rig_drives(self.t, False)
 
     def set(self, pins: dict[int, int | None]) -> None:
         """One group of edges; pins whose level stays are not named."""

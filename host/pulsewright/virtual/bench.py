@@ -39,7 +39,7 @@ class Bench:
         self.chip_name = chip_name
         self.model = model
         self.faults: Faults = parse_faults(faults)
-        self.chip: ChipModel = make_model(chip_name) if model is None else load_model(model)
+        self.chip = self._make()
         wiring(self.chip.limits.package, self.faults.seat)  # a package that cannot sit so is a mistake now
         self.boots = 0
         self.judge: Judge | None = None
@@ -96,8 +96,13 @@ class Bench:
             write_whole(self.path, text.encode("utf-8") + b"\n")
 
     def rig(self, boot: int | None = None) -> VirtualRig:
-        """A virtual rig with this chip in its socket, the judge at its pins; `boot` counts by itself if not given."""
+        """A virtual rig with this chip in its socket, the judge at its pins; `boot` counts by itself if not given.
+
+        One rig at a time: from the second on `chip` is another object with the same cells, state and faults.
+        """
         self._absorb()
+        if self.judge is not None:
+            self._seat_anew()
         self.boots = self.boots + 1 if boot is None else boot
         limits = self.chip.limits
         seat = self.faults.seat
@@ -107,6 +112,16 @@ class Bench:
         if self.faults.raised_limit_ua is not None:
             board = replace(board, raised_limit_ua=self.faults.raised_limit_ua)
         return VirtualRig(Socket(chip, wiring(limits.package, seat), (judge,)), boot=self.boots, board=board)
+
+    def _make(self) -> ChipModel:
+        return make_model(self.chip_name) if self.model is None else load_model(self.model)
+
+    def _seat_anew(self) -> None:
+        """The same chip without what it knew of the last rig's clock: a new rig begins at tick 0."""
+        before, self.chip = self.chip, self._make()
+        self.chip.cells[:] = before.cells
+        self._take_faults()
+        self.chip.restore(before.state())
 
     def report(self) -> dict[str, Any]:
         """What `bench show --json` tells: chip, crc32, pins, violations, stressed, probe_wrote, damaged.

@@ -65,7 +65,7 @@ class PulseWatch:
         self._last: PulseLimit | None = None
         self.address_t = LONG_AGO
         self.data_t = LONG_AGO
-        self.driving = False
+        self.driving = True  # at rest the rig holds every line low, D too
         self.address_hold = LONG_AGO
         self.data_hold = LONG_AGO
 
