@@ -29,8 +29,8 @@ def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tupl
     rig_file = load_rig()
     rig = open_rig(name, chip_name)
     try:
-        if rig.in_process:
-            desk.say("virtual rig: no hardware is touched")
+        if rig.banner:
+            desk.say(rig.banner)
         yield rig_file, rig
     finally:
         rig.close()
