@@ -229,6 +229,8 @@ class VirtualRig:
             self.trip(Trip(Fault.DEAD_MAN))
         elif m is not None:
             m.monitor_at = at + _MONITOR if m.standing else NEVER
+            if m.closed:
+                self.socket.weigh(at)  # a chip's load may have changed by itself
             trip = look(m)
             if trip is not None:
                 self.trip(trip)
