@@ -47,6 +47,7 @@ class Builder:
         self._text = ""
         self._where = Where()
         self._settle_ps = 0
+        self._waited_ps = 0  # since the last edge: waits count from there
         self._labels = 0
 
     # ---- ops and their origins --------------------------------------------------------------------
@@ -85,17 +86,20 @@ class Builder:
     def edge(self, settle_ps: int = 0) -> None:
         """The op just emitted moved pins; they need `settle_ps` before any time counts."""
         self._settle_ps = max(self._settle_ps, settle_ps)
+        self._waited_ps = 0
 
     def wait(self, ps: int) -> None:
-        """At least `ps` after everything that moved has settled; joins a wait that stands just before."""
-        total = self._settle_ps + ps
+        """At least `ps` after everything that moved has settled, and after what was waited for since."""
+        self._waited_ps += self._settle_ps + ps
         self._settle_ps = 0
+        if not self._waited_ps:
+            return
+        count = ticks(self._waited_ps, Rounding.AT_LEAST)
         last = self.items[-1][0] if self.items else None
         if isinstance(last, Instruction) and last.op is Op.WAIT:
-            count = last.args["ticks"] + ticks(total, Rounding.AT_LEAST)
             self.items[-1] = (ins(Op.WAIT, ticks=count), self.items[-1][1])
-        elif total:
-            self.emit(Op.WAIT, ticks=ticks(total, Rounding.AT_LEAST))
+        else:
+            self.emit(Op.WAIT, ticks=count)
 
     @property
     def line_settle_ps(self) -> int:

@@ -32,6 +32,7 @@ def vcc_off_look(b: Builder) -> None:
         b.address(0)
         b.emit(Op.RELEASE)
         b.emit(Op.BIAS, groups=Group.DATA, how=Bias.DOWN)
+        b.edge()
         b.wait(_BIAS_SETTLE_PS)
         b.emit(Op.SAMPLE)
         b.emit(Op.COMPARE, word=0, mask=_data_mask(b))
@@ -84,6 +85,7 @@ def other_power(b: Builder) -> None:
     with b.about("power positions of other packages stay low"):
         b.emit(Op.LINES, lines=bytes(line_byte(line, Level.RELEASED) for line in lines))
         b.emit(Op.BIAS, groups=Group.POWER, how=Bias.DOWN)
+        b.edge()
         b.wait(_BIAS_SETTLE_PS)
         for line in lines:
             b.emit(Op.SENSE, line=line, **{"is": 0})
@@ -115,6 +117,7 @@ def bias_looks(b: Builder) -> None:
         b.set_lines(idle)
         for how, word, why in ((Bias.UP, mask, Fail.SEAT_DATA_LOW), (Bias.DOWN, 0, Fail.SEAT_DATA_HIGH)):
             b.emit(Op.BIAS, groups=Group.DATA, how=how)
+            b.edge()
             b.wait(_BIAS_SETTLE_PS + b.timing_max_ps("tDF"))
             b.emit(Op.SAMPLE)
             b.emit(Op.COMPARE, word=word, mask=mask)
@@ -123,6 +126,7 @@ def bias_looks(b: Builder) -> None:
         b.set_lines(reading)
         for how in (Bias.UP, Bias.DOWN):
             b.emit(Op.BIAS, groups=Group.DATA, how=how)
+            b.edge()
             b.wait(_BIAS_SETTLE_PS + b.access_ps("read"))
             b.emit(Op.SAMPLE)
             if how is Bias.UP:
@@ -131,6 +135,7 @@ def bias_looks(b: Builder) -> None:
         b.fail_unless(Fail.SEAT_FLOATING)
         b.set_lines(idle)
         b.emit(Op.BIAS, groups=Group.DATA, how=Bias.OFF)
+        b.edge()
         b.wait(b.timing_max_ps("tDF"))
         b.emit(Op.SEATED)
     b.state.mode = "standby"

@@ -51,6 +51,7 @@ class Blocks:
         self._wanted = 0
         self._promised = 0  # words of all blocks accepted
         self._ended = False
+        self.over = False  # the end of data was taken: no block will come any more
         self._kept: dict[int, bytes] = {}
         self._block = Block(0, 0, 0, [])
         self._histogram = [0] * HISTOGRAM
@@ -105,7 +106,8 @@ class Blocks:
         m.report = bytearray()
         self._histogram = [0] * HISTOGRAM
         self._written, self._worst = 0, (0, 0)
-        return block.count == 0
+        self.over = block.count == 0
+        return self.over
 
     def words_of_block(self) -> Iterator[tuple[int, int]]:
         """Address and word of each word that is not to be left."""

@@ -77,6 +77,8 @@ def each_block(m: Machine, blocks: Blocks, to: int, after: int) -> Step:
         if not m.gate:
             raise Trip(Fault.GATE_SHUT)
         m.t += _COST
+        if blocks.over:
+            return to
         if blocks.queue:
             return to if blocks.take(m) else after
         m.slow = _block_on(m, blocks, to, after)
