@@ -90,10 +90,11 @@ class Builder:
 
     def wait(self, ps: int) -> None:
         """At least `ps` after everything that moved has settled, and after what was waited for since."""
-        self._waited_ps += self._settle_ps + ps
+        more = self._settle_ps + ps
         self._settle_ps = 0
-        if not self._waited_ps:
+        if not more:
             return
+        self._waited_ps += more
         count = ticks(self._waited_ps, Rounding.AT_LEAST)
         last = self.items[-1][0] if self.items else None
         if isinstance(last, Instruction) and last.op is Op.WAIT:
