@@ -35,6 +35,7 @@ class FakeSession:
     erase_pulses: int = 1
     kinds: list[str] = field(default_factory=list)
     titles: list[str] = field(default_factory=list)
+    identities: list[int] = field(default_factory=list)
     written: list[int] = field(default_factory=list)
 
     @property
@@ -46,6 +47,7 @@ class FakeSession:
     def run(self, sequence: Sequence, blocks: Iterable[Block] = ()) -> RunResult:
         """What a chip would have answered."""
         self.kinds.append(sequence.kind)
+        self.identities.append(sequence.permit.identity)
         self.titles.append(sequence.title)
         answer = self.before(sequence, len(self.kinds))
         if answer is not None:

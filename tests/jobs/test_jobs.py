@@ -8,6 +8,7 @@ from pathlib import Path
 import pytest
 
 from pulsewright.chip.load import load
+from pulsewright.chip.model import Definition
 from pulsewright.errors import (
     CannotMake,
     ChipFault,
@@ -17,6 +18,7 @@ from pulsewright.errors import (
     Interrupted,
     ProofRefused,
     UsageMistake,
+    VouchNeeded,
 )
 from pulsewright.image.memory import Fitted, fit, image_of
 from pulsewright.jobs import context as context_module
@@ -29,6 +31,7 @@ from pulsewright.jobs.record import read_record, record_paths
 from pulsewright.jobs.verify import verify
 from pulsewright.link.results import RunResult
 from pulsewright.sequence.types import Finding, Proof, Sequence
+from pulsewright.wire.tables import Identity
 from tests.jobs.fake import WORDS, FakeSession, context, noise
 
 
@@ -327,3 +330,29 @@ def test_a_dump_that_cannot_be_saved_stops_the_erase(state: Path) -> None:
     with pytest.raises(FileMistake):
         erase(context(session))
     assert "erase" not in session.kinds
+
+
+def nameless() -> Definition:
+    """The part as if nothing but its print said what it is."""
+    return dataclasses.replace(load("27e512"), identify="none", identify_mode="", makers=(), row=None)
+
+
+def test_a_raised_level_without_an_id_wants_the_word_before_anything_is_sent() -> None:
+    """H9: erase and burn of a part without ID are refused without --vouch; reading it is not."""
+    session = FakeSession()
+    with pytest.raises(VouchNeeded):
+        erase(context(session, definition=nameless()))
+    with pytest.raises(VouchNeeded):
+        burn(context(session, definition=nameless()), image(b"\x00"))
+    assert session.kinds == []
+
+
+def test_the_word_goes_into_the_permit_and_the_record() -> None:
+    """H9: with --vouch every raising sequence goes out under `vouched none`, and the record keeps the words."""
+    session = FakeSession(noise())
+    erase(context(session, definition=nameless(), vouch="27E512 on the lid"))
+    assert dict(zip(session.kinds, session.identities, strict=True)) == {
+        "read": Identity.NONE,
+        "erase": Identity.VOUCHED_NONE,
+    }
+    assert read_record(record_paths()[-1])["vouch"] == "27E512 on the lid"

@@ -16,6 +16,7 @@ from pulsewright.errors import (
     RigFault,
     SeatingRefused,
     Tripped,
+    VouchNeeded,
 )
 from pulsewright.jobs.story import readings_of, volts
 from pulsewright.jobs.translate import IMITATION, translate
@@ -200,3 +201,13 @@ def test_the_end_of_the_converter_is_said() -> None:
     """A full-scale count stands for at least its level; without a converter the count itself is shown."""
     assert volts(RIG.socket_vcc, 1023) == "at least 8.184 V"
     assert volts(None, 7) == "count 7"
+
+
+def test_a_word_without_the_button_is_refused() -> None:
+    """H9: a gate op that trips because the gate stays shut means that the button is not held: exit 3, not a trip."""
+    gate = next(at for at, one in decode_program(IDENTIFY.code).code if one.op is Op.GATE)
+    error = error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.GATE_SHUT, pc=gate))
+    assert isinstance(error, VouchNeeded)
+    assert error.exit_code == 3
+    assert "button" in error.what
+    assert isinstance(error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.GATE_SHUT)), Tripped)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Protocol
 
 from pulsewright.chip.model import Definition
@@ -17,6 +17,7 @@ from pulsewright.rig.model import Rig
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Proof, Sequence
 from pulsewright.units import show_address, show_count
+from pulsewright.wire.tables import Identity
 
 _NO_RECORD = "no record could be kept: see whether the state folder may be written (PULSEWRIGHT_HOME names another)"
 
@@ -162,8 +163,18 @@ class JobContext:
             "baud": rig.baud,
         }
 
+    def vouched(self, sequence: Sequence) -> Sequence:
+        """The sequence under the operator's word where it raises a level without an ID (H9); VouchNeeded without it."""
+        permit = sequence.permit
+        raises = bool(permit.raised)
+        check_vouch(self.definition, raises, self.options.vouch)
+        if raises and permit.identity is Identity.NONE:
+            return replace(sequence, permit=replace(permit, identity=Identity.VOUCHED_NONE))
+        return sequence
+
     def prove(self, sequence: Sequence) -> Proof:
-        """The proof of a sequence; ProofRefused lists every finding, and nothing is sent."""
+        """The proof of a sequence; VouchNeeded, or ProofRefused with every finding, and nothing is sent."""
+        sequence = self.vouched(sequence)
         proof = prove(sequence.code, sequence.permit, self.definition, self.rig)
         if not proof.accepted:
             raise ProofRefused(
@@ -177,8 +188,7 @@ class JobContext:
     def run(self, sequence: Sequence, blocks: Iterable[Block] = (), want: bytes | None = None) -> RunResult:
         """Proves and runs a sequence; every outcome but done is raised as what it means at the bench."""
         self.look_at_interrupt()
-        raises = bool(sequence.permit.raised)
-        check_vouch(self.definition, raises, self.options.vouch)
+        sequence = self.vouched(sequence)
         proof = self.prove(sequence)
         result = self.session.run(sequence, blocks)
         self._keep(sequence, proof, result)

@@ -77,6 +77,7 @@ def erase_whole(ctx: JobContext) -> tuple[str, dict[str, object]]:
 
 def _work(ctx: JobContext) -> JobResult:
     definition = ctx.definition
+    ctx.prove(compile_erase(definition, ctx.rig))  # before the chip is touched at all
     _, facts, lines = save_first(ctx, 0, definition.words - 1)
     line, more = erase_whole(ctx)
     return JobResult((line, *lines), {**facts, **more, "words": definition.words})

@@ -15,6 +15,7 @@ from pulsewright.errors import (
     RigFault,
     SeatingRefused,
     Tripped,
+    VouchNeeded,
 )
 from pulsewright.jobs.plan import tries_of
 from pulsewright.jobs.story import MADE_SAFE, Story, measured
@@ -22,7 +23,7 @@ from pulsewright.link.results import RunResult
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.types import Sequence
 from pulsewright.units import show_address, show_mv, show_ticks
-from pulsewright.wire.tables import Fail, Fault, Outcome
+from pulsewright.wire.tables import Fail, Fault, Op, Outcome
 
 IMITATION = (
     "an image that imitates the ID has the same look: the 64 cells read alike with and without the identify level"
@@ -68,6 +69,8 @@ def translate(
         return _wrong_id(story)
     if fault.code == Fault.NO_ID_MODE:
         return _no_id_mode(story)
+    if fault.code == Fault.GATE_SHUT and story.instruction is not None and story.instruction.op is Op.GATE:
+        return _no_button(story)
     seating = story.origin is not None and story.origin.part == "seating"
     if seating and fault.code in (Fault.MEASURED_OUTSIDE, Fault.VCC_OUTSIDE):
         return _seat_measure(story)
@@ -225,6 +228,16 @@ def _no_id_mode(story: Story) -> PulsewrightError:
         did=f"the identify level dropped at once; {MADE_SAFE}",
         facts=[IMITATION],
         hint="read the print on the chip; a lifted A9 contact looks the same too",
+    )
+
+
+def _no_button(story: Story) -> PulsewrightError:
+    return VouchNeeded(
+        "the board's button is not held, nor its jumper set",
+        step=story.step(),
+        wanted="the button or jumper, for a part without electronic ID or a level above 14.5 V",
+        did=f"nothing was raised; {MADE_SAFE}",
+        hint="read the print on the chip once more, hold the button, run it again",
     )
 
 
