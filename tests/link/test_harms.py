@@ -1,0 +1,126 @@
+"""Whatever the line does to a byte, each word is touched exactly once, or the session says that the link is lost."""
+
+from __future__ import annotations
+
+from typing import get_args
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from pulsewright.errors import LinkFault
+from pulsewright.link.faulty import Faulty, Harm, Kind, Way
+from pulsewright.link.inprocess import InProcess
+from pulsewright.link.results import RunResult
+from pulsewright.wire.tables import HELLO_REQUEST, Flow, Outcome
+from tests.link.fake_rig import MS, FakeRig
+from tests.link.kit import IMAGE, WORDS, Desk, image_blocks, sequence
+
+ONCE = dict.fromkeys(range(WORDS), 1)
+EACH: tuple[Kind, ...] = ("drop", "flip", "double")
+WAYS: tuple[Way, ...] = get_args(Way)
+
+
+def job(flow: Flow, harms: list[Harm], rig: FakeRig | None = None) -> tuple[Desk, RunResult | None]:
+    """A whole session with harms; None for a lost link."""
+    desk = Desk(rig, harms)
+    if flow is Flow.READ:
+        desk.rig.cells[:WORDS] = IMAGE
+    try:
+        desk.session.connect()
+        return desk, desk.session.run(sequence(flow), None if flow is Flow.READ else image_blocks())
+    except LinkFault:
+        return desk, None
+
+
+def check(flow: Flow, desk: Desk, result: RunResult | None) -> None:
+    """Each word exactly once and the result right; after a lost link: no word twice."""
+    if result is None:
+        assert all(count == 1 for count in desk.rig.touched.values())
+        return
+    assert result.outcome is Outcome.DONE
+    assert desk.rig.touched == ONCE
+    assert desk.rig.runs == 1
+    assert bytes(desk.rig.cells[:WORDS]) == IMAGE
+    assert result.data == (IMAGE if flow is Flow.READ else b"")
+    assert [block.index for block in result.blocks] == [0, 1]
+
+
+def positions(flow: Flow, way: Way) -> range:
+    """The bytes of one way: of the whole session when reading, of the run alone when writing."""
+    first = 0
+    if flow is Flow.WRITE:
+        desk = Desk()
+        desk.session.connect()
+        first = desk.line.passed[way]
+    desk, _ = job(flow, [])
+    return range(first, desk.line.passed[way])
+
+
+@pytest.mark.parametrize("way", WAYS)
+@pytest.mark.parametrize("flow", [Flow.READ, Flow.WRITE])
+def test_each_byte_lost_turned_or_doubled(flow: Flow, way: Way) -> None:
+    """One byte harmed, at every position of both directions and in every way: the job is whole, each word once."""
+    for at in positions(flow, way):
+        for kind in EACH:
+            desk, result = job(flow, [Harm(way, at, kind)])
+            assert result is not None, (at, kind)
+            check(flow, desk, result)
+
+
+@settings(max_examples=150)
+@given(
+    flow=st.sampled_from([Flow.READ, Flow.WRITE]),
+    harms=st.lists(
+        st.builds(
+            Harm,
+            st.sampled_from(WAYS),
+            st.integers(0, 700),
+            st.sampled_from([*EACH, "stall"]),
+            st.integers(1, 255),
+            st.integers(0, 400_000),
+        ),
+        max_size=30,
+    ),
+)
+def test_many_harms_together(flow: Flow, harms: list[Harm]) -> None:
+    """However many bytes are harmed, no word is touched twice, and a job that ends done is whole."""
+    desk, result = job(flow, harms)
+    if result is not None and result.outcome is not Outcome.DONE:
+        assert all(count == 1 for count in desk.rig.touched.values())
+        return
+    check(flow, desk, result)
+
+
+def test_each_heartbeat_lost() -> None:
+    """With slow words, one frame of the rig lost after the other: the dead-man never ends the job."""
+    desk = Desk()
+    desk.session.connect()
+    first = desk.line.passed["from rig"]
+    for at in range(first, first + 240, 7):
+        desk, result = job(Flow.WRITE, [Harm("from rig", at, "drop")], FakeRig(word_ticks=90 * MS))
+        assert result is not None
+        check(Flow.WRITE, desk, result)
+
+
+def test_a_cut_line_never_touches_a_word_twice() -> None:
+    """Cut at any byte of either way, the session ends in a LinkFault and no word was touched twice."""
+    clean, _ = job(Flow.WRITE, [])
+    keep_alive = 16  # the last frame of a session answers a heartbeat: nothing waits for it
+    ends = {"to rig": clean.line.passed["to rig"] - keep_alive, "from rig": clean.line.passed["from rig"]}
+    for way in WAYS:
+        for at in range(0, ends[way], 17):
+            desk, result = job(Flow.WRITE, [Harm(way, at, "cut")])
+            assert result is None, (way, at)
+            check(Flow.WRITE, desk, result)
+
+
+def test_a_stall_delays_and_loses_nothing() -> None:
+    """Bytes held back come later and whole."""
+    line = Faulty(InProcess(FakeRig()), [Harm("to rig", 2, "stall", for_us=20_000)])
+    line.write(HELLO_REQUEST)
+    answer = b""
+    while len(answer) < 32 and (data := line.read(100_000)):
+        answer += data
+    assert len(answer) == 32
+    assert line.now_us() > 20_000
