@@ -90,6 +90,8 @@ def other_power(b: Builder) -> None:
         for line in lines:
             b.emit(Op.SENSE, line=line, **{"is": 0})
             b.fail_unless(Fail.SEAT_OTHER_POWER)
+        b.emit(Op.BIAS, groups=Group.POWER, how=Bias.OFF)  # one of them carries an address later
+        b.edge()
         b.address(0)
 
 
