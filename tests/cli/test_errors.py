@@ -136,3 +136,17 @@ def test_a_range_outside_the_chip_is_wrong_usage(capsys: pytest.CaptureFixture[s
     facts = answer(capsys, "blank-check", "27e512", "--rig", "virtual", "--range", "0..64K")
     assert (facts["exit"], facts["error"]) == (2, "UsageMistake")
     assert "FFFF" in facts["wanted"]
+
+
+def test_a_rail_that_stands_too_high_trips(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> None:
+    """0.6 V above its step the raised rail is measured before any switch closes: exit 5, volts wanted and got."""
+    monkeypatch.setattr("pulsewright.virtual.bench.Board", lambda: dataclasses.replace(Board(), raised_offset_mv=600))
+    main(["bench", "new", "b.bench", "--chip", "27e512"])
+    capsys.readouterr()
+    facts = answer(capsys, "identify", "27e512", "--rig", "virtual:b.bench")
+    assert (facts["exit"], facts["error"]) == (5, "Tripped")
+    assert "raised rail" in facts["result"]
+    assert facts["wanted"] == "11.513 V to 12.499 V"
+    assert abs(float(facts["got"].split()[0]) - 12.6) < 0.03  # a step of the converter is 29 mV
+    assert "27e512.toml" in facts["where"]
+    assert Bench.load("b.bench").report()["pins"]["24"]["max_mv"] <= 5_500
