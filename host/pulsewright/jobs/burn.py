@@ -149,7 +149,7 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
         lines.append(f"{line}; {show_count(needed.equal, 'word')} right already")
     else:
         lines.append(f"nothing to burn: {show_count(needed.used, 'word')} right already")
-    verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault)
+    verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault, proven=True)
     return JobResult(
         (*lines, *verified, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
     )
