@@ -44,6 +44,7 @@ def measure(channel: int, low: int, high: int) -> Instruction:
 def seating() -> Items:
     """VCC off, probe, full; outputs off and on against the bias."""
     both = [
+        ins(Op.RELEASE),
         ins(Op.LINES, lines=ON),
         ins(Op.ADDRESS, at=0),
         ins(Op.BIAS, groups=1, how=1),

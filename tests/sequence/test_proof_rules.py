@@ -202,7 +202,7 @@ CASES: list[tuple[str, str, str, Bend, str]] = [
     ("data hold", "H7", "burn", put_after(Op.PULSE, 0, ins(Op.RELEASE)), "data hold after the pulse"),
     ("address hold", "H7", "burn", put_after(Op.PULSE, 0, ins(Op.ADDRESS, at=1)), "address hold after the pulse"),
     ("raised hold", "H7", "burn", wait_after(Op.PULSE, 0, 47), "raised hold after the pulse"),
-    ("recovery", "H7", "burn", wait_after(Op.RELEASE, 0, 31), "outputs are enabled too soon after a raised level"),
+    ("recovery", "H7", "burn", wait_after(Op.RELEASE, 1, 31), "outputs are enabled too soon after a raised level"),
     ("access after enabling", "H7", "burn", wait_after(Op.LINES, -2, 31), "sampled too soon after the enabling edge"),
     ("access after address", "H7", "read", set_(Op.READ_RUN, wait=18), "sampled too soon after the address"),
     ("access of a scan", "H7", "erase", set_(Op.SCAN, wait=3 * US - 1), "sampled too soon after the address"),

@@ -303,14 +303,15 @@ def test_vcc_that_leaves_its_window_trips_within_a_millisecond() -> None:
 
 
 def test_a_raised_rail_that_breaks_down_trips() -> None:
-    """A load that pulls the raised rail under half its step is found by the monitor."""
+    """A load that pulls the raised rail under the window it was measured in is found by the monitor."""
     host = Host(board=Board(raised_limit_ua=1_000))
     code = build([*past_gate(), *raise_oe(), ins(Op.WAIT, ticks=400 * MS), END])
     host.start(code)
     host.pass_time(150 * MS)
     host.chip.draw[22] = 9_000
     end = host.end()
-    assert (end.outcome, end.fault["code"], end.fault["low"]) == (Outcome.TRIPPED, Fault.RAISED_OUTSIDE, vpp(7_000))
+    assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.RAISED_OUTSIDE)
+    assert end.fault["got"] < end.fault["low"] == measure_rail(14_000).args["low"]
 
 
 def test_the_first_fault_is_latched_until_it_is_cleared() -> None:

@@ -28,9 +28,9 @@ def vcc_off_look(b: Builder) -> None:
     """VCC off, lines low, D pulled down: what stands up is a short or is powered through a line."""
     with b.about("VCC off, lines low: nothing may stand up"):
         b.emit(Op.HIGH, how=0)
+        b.emit(Op.RELEASE)  # at rest the rig holds D low like every line
         b.set_lines(dict.fromkeys(b.pins.control_roles, Level.LOW))
         b.address(0)
-        b.emit(Op.RELEASE)
         b.emit(Op.BIAS, groups=Group.DATA, how=Bias.DOWN)
         b.edge()
         b.wait(_BIAS_SETTLE_PS)

@@ -84,6 +84,7 @@ def _raised_rail(m: Machine, number: int) -> None:
     m.socket.set_raised_rail(m.t, RAISED_STEPS_MV[number])
     m.raised_step = number
     m.raised_measured = False
+    m.raised_low = m.raised_strikes = 0
 
 
 def _vcc_stands(m: Machine) -> bool:
@@ -262,11 +263,11 @@ def _measure_on(m: Machine, channel: int, window: tuple[int, int], limit: int, a
             m.keep_reading(m.offsets[m.pc], reading)
             raise Trip(Fault.MEASURED_OUTSIDE, reading, *window)
     m.keep_reading(m.offsets[m.pc], reading)
-    _learn(m, channel, reading)
+    _learn(m, channel, reading, window[0])
     return after
 
 
-def _learn(m: Machine, channel: int, reading: int) -> None:
+def _learn(m: Machine, channel: int, reading: int, low: int) -> None:
     """What a reading that was inside its window says about a supply."""
     if channel == Channel.SOCKET_VCC:
         learn_vcc(m, reading)
@@ -274,6 +275,7 @@ def _learn(m: Machine, channel: int, reading: int) -> None:
         if reading >= half_of(m.raised_step):
             m.raised_measured = True
             m.raised_reading = reading
+            m.raised_low = low
             m.forget_approval()
 
 

@@ -228,10 +228,10 @@ class VirtualRig:
             m.dead_at = NEVER
             self.trip(Trip(Fault.DEAD_MAN))
         elif m is not None:
-            m.monitor_at = at + _MONITOR if m.standing else NEVER
             if m.closed:
                 self.socket.weigh(at)  # a chip's load may have changed by itself
             trip = look(m)
+            m.monitor_at = at + _MONITOR if m.standing else NEVER
             if trip is not None:
                 self.trip(trip)
         return False

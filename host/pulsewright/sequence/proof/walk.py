@@ -84,7 +84,7 @@ class Walk:
         width = min(64, max([highest, *named, *self.shape.header.address, 0]) + 1)
         inputs = set(self.t.pins.inputs)
         levels = tuple(UNSET if line in inputs else RELEASED for line in range(width))
-        self._reach(0, State(levels), START)
+        self._reach(0, State(levels, data=0), START)  # at rest every line is low, D too
         while self.todo and self.count <= MOST_STATES:
             index, state = self.todo.pop()
             offset, instruction = self.shape.flat[index]

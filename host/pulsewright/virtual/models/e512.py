@@ -150,7 +150,7 @@ class E512:
         if pin == VCC:
             return (ICC_ACTIVE if self._ce_low else ICC_STANDBY) if self._vcc else 0
         if pin == OE and self._oe is not None and self._oe > MOST:
-            return IPP_PULSE if self._mode else IPP_STANDING
+            return IPP_PULSE if self._ce_low else IPP_STANDING  # a level that sagged is still drawn from
         if pin == A9 and self._a9_raised:
             return IA9
         return 0
