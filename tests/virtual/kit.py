@@ -34,8 +34,11 @@ BOTH_HIGH = bytes([line_byte(CE, H), line_byte(OE, H)])
 
 def limits() -> Limits:
     """Only what the socket asks for."""
-    return Limits("DIP-28", {0: 7000}, -600, PIN_VCC, (PIN_GND,), PINS_A, PINS_D, (PIN_CE, PIN_OE), (PIN_OE, PIN_A9), (),
-                  3, 3, 3, 1, 32, (4750, 5250))
+    return Limits(
+        package="DIP-28", maxima_mv={0: 7_000}, minimum_mv=-600, vcc_pin=PIN_VCC, gnd_pins=(PIN_GND,),
+        address_pins=PINS_A, data_pins=PINS_D, enable_pins=(PIN_CE, PIN_OE), raised_pins=(PIN_OE, PIN_A9), pulses=(),
+        access_ticks=3, float_ticks=3, rise_ticks=1, recovery_ticks=32, vcc_read_mv=(4_750, 5_250),
+    )
 
 
 class PlainChip:
@@ -44,7 +47,7 @@ class PlainChip:
     def __init__(self, contents: bytes = b"") -> None:
         self.name = "plain"
         self.pins = 28
-        self.outputs = PINS_D
+        self.outputs: tuple[int, ...] = PINS_D
         self.limits = limits()
         self.cells = bytearray(contents.ljust(65_536, b"\xff"))
         self.erased_word = 0xFF
@@ -262,7 +265,12 @@ class Host:
     """Speaks frames to a rig; `heard` keeps all that came back."""
 
     def __init__(
-        self, chip: Any = None, *, wiring: Mapping[int, int] | None = None, board: Board | None = None, trace: bool = True
+        self,
+        chip: Any = None,
+        *,
+        wiring: Mapping[int, int] | None = None,
+        board: Board | None = None,
+        trace: bool = True,
     ) -> None:
         self.chip = chip if chip is not None else PlainChip()
         self.log = Log()

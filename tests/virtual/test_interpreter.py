@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import Any
 
 import pytest
@@ -37,7 +38,9 @@ END = ins(Op.END)
 ENABLE, DISABLE = lines((CE, L), (OE, L)), ins(Op.LINES, lines=BOTH_HIGH)
 
 
-def work(items: list[Item], *, chip: Any = None, flow: Flow = Flow.NONE, blocks: Any = (), **changes: Any) -> tuple[End, Host]:
+def work(
+    items: Sequence[Item], *, chip: Any = None, flow: Flow = Flow.NONE, blocks: Any = (), **changes: Any
+) -> tuple[End, Host]:
     """Runs ops behind an open gate; the trace that is kept begins with them."""
     host = Host(chip)
     code = build([*past_gate(), *items, END], flow=flow)
@@ -48,7 +51,7 @@ def work(items: list[Item], *, chip: Any = None, flow: Flow = Flow.NONE, blocks:
     return end, host
 
 
-def flag_of(items: list[Item], *, chip: Any = None) -> bool:
+def flag_of(items: Sequence[Item], *, chip: Any = None) -> bool:
     """What the flag is behind these ops."""
     end, _ = work([*items, ins(Op.BRANCH, when=1, depth=0, to="set"), ins(Op.FAIL, why=99), Label("set")], chip=chip)
     return end.outcome is Outcome.DONE
@@ -129,7 +132,7 @@ def test_a_pulse_is_exact(width: int) -> None:
 
 
 def test_over_pulse_is_a_multiple_of_the_tries_up_to_its_maximum() -> None:
-    """unit x factor x tries, cut at max."""
+    """The width is unit x factor x tries, cut at max."""
     over = ins(Op.OVER_PULSE, line=line_byte(CE, L), unit=100, factor=3, max=1_000)
     items = [*raise_oe(), ins(Op.LOOP, count=5), over, ins(Op.NEXT)]
     _, host = work(items)
@@ -177,7 +180,7 @@ def test_a_branch_goes_when_the_flag_is_so(when: int, taken: bool) -> None:
 def test_the_answer_tells_the_turn_in_which_the_last_loop_was_left() -> None:
     """A branch out of a loop around a scan brings back that loop's turn: the pulses of an erase."""
     chip = PlainChip(b"\x00" * 3)
-    turns = [ins(Op.LOOP, count=9), ENABLE, ins(Op.SCAN, first=0, count=8, word=0xFF, wait=16), DISABLE,
+    turns: list[Item] = [ins(Op.LOOP, count=9), ENABLE, ins(Op.SCAN, first=0, count=8, word=0xFF, wait=16), DISABLE,
              ins(Op.BRANCH, when=1, depth=0, to="done"), ins(Op.DRIVE, word=0xFF), *turn_of_erase(), ins(Op.NEXT),
              ins(Op.FAIL, why=Fail.ERASE), Label("done")]
 
@@ -218,7 +221,7 @@ def test_the_rail_answers_with_the_level_at_the_position() -> None:
 
 def polled(kind: PollKind, chip: PlainChip, *, mantissa: int = 200, exponent: int = 4) -> End:
     """Polls word 0x81 at address 0 in a word loop; fails where the limit passes."""
-    body = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.ADDRESS_WORD), ENABLE,
+    body: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.ADDRESS_WORD), ENABLE,
             ins(Op.POLL, kind=kind, mantissa=mantissa, exponent=exponent), DISABLE,
             ins(Op.BRANCH, when=1, depth=2, to="good"), ins(Op.FAIL, why=Fail.POLL), Label("good"),
             ins(Op.NEXT_WORD), Label("block"), ins(Op.NEXT_BLOCK), Label("end")]
@@ -251,6 +254,7 @@ def test_a_poll_that_reads_the_chips_own_time_limit_trips() -> None:
 
 # ---- fused ops ----------------------------------------------------------------------------------------------------
 
+CYCLES = ((0x5555, 0xAA), (0x2AAA, 0x55))
 W, S, P, HD, F, R, AC, FL = 40, 100, 1_600, 64, 200, 96, 32, 24
 
 
@@ -290,7 +294,8 @@ def read_by_hand() -> list[Item]:
 
 def scan_by_hand(count: int) -> list[Item]:
     """`scan` over a few words in primitives."""
-    return [ins(Op.ADDRESS, at=3), ins(Op.LOOP, count=1), ins(Op.LOOP, count=count), ins(Op.WAIT, ticks=W), ins(Op.SAMPLE),
+    return [ins(Op.ADDRESS, at=3), ins(Op.LOOP, count=1), ins(Op.LOOP, count=count), ins(Op.WAIT, ticks=W),
+            ins(Op.SAMPLE),
             ins(Op.COMPARE, word=0xFF, mask=0xFFFF), ins(Op.BRANCH, when=0, depth=0, to="out"), ins(Op.STEP, by=1),
             ins(Op.NEXT), ins(Op.NEXT), Label("out")]
 
@@ -298,16 +303,17 @@ def scan_by_hand(count: int) -> list[Item]:
 def writes_by_hand() -> list[Item]:
     """`bus_writes` of two cycles in primitives."""
     items: list[Item] = []
-    for at, word in ((0x5555, 0xAA), (0x2AAA, 0x55)):
+    for at, word in CYCLES:
         strobe = ins(Op.PULSE, line=line_byte(CE, L), width=16, max=16)
-        items += [ins(Op.ADDRESS, at=at), ins(Op.DRIVE, word=word), ins(Op.WAIT, ticks=S), strobe, ins(Op.WAIT, ticks=HD)]
+        items += [ins(Op.ADDRESS, at=at), ins(Op.DRIVE, word=word), ins(Op.WAIT, ticks=S)]
+        items += [strobe, ins(Op.WAIT, ticks=HD)]
     return [*items, ins(Op.RELEASE)]
 
 
 RAIL_READY = raise_oe()[:3]
 BURN = [(0, 4, write_block(b"\x00\x5a\xff\x33", leave=[2])), (9, 2, write_block(b"\x77\x01"))]
 READ = [(0, 5, b""), (7, 3, b"")]
-WRITES = ins(Op.BUS_WRITES, strobe=line_byte(CE, L), setup=S, width=16, hold=HD, cycles=((0x5555, 0xAA), (0x2AAA, 0x55)))
+WRITES = ins(Op.BUS_WRITES, strobe=line_byte(CE, L), setup=S, width=16, hold=HD, cycles=CYCLES)
 PAIRS: dict[str, tuple[list[Item], list[Item], Flow, Any]] = {
     "pulse_verify": ([*RAIL_READY, *pulse_verify(0)], [*RAIL_READY, *pulse_verify_by_hand(0)], Flow.WRITE, BURN),
     "with over-program": ([*RAIL_READY, *pulse_verify(3)], [*RAIL_READY, *pulse_verify_by_hand(3)], Flow.WRITE, BURN),
@@ -348,7 +354,9 @@ def traced(items: list[Item], flow: Flow, blocks: Any, *, piece: int = 0, deaf: 
 
 
 @pytest.mark.parametrize(("fused", "by_hand", "flow", "blocks"), PAIRS.values(), ids=PAIRS.keys())
-def test_a_fused_op_is_what_it_is_in_primitives(fused: list[Item], by_hand: list[Item], flow: Flow, blocks: Any) -> None:
+def test_a_fused_op_is_what_it_is_in_primitives(
+    fused: list[Item], by_hand: list[Item], flow: Flow, blocks: Any
+) -> None:
     """Same groups at the same ticks, same samples and pulses, same replies."""
     one, other = traced(fused, flow, blocks), traced(by_hand, flow, blocks)
     assert one == other
@@ -356,7 +364,9 @@ def test_a_fused_op_is_what_it_is_in_primitives(fused: list[Item], by_hand: list
 
 
 @pytest.mark.parametrize(("fused", "by_hand", "flow", "blocks"), PAIRS.values(), ids=PAIRS.keys())
-def test_a_change_in_the_program_shows_in_the_trace(fused: list[Item], by_hand: list[Item], flow: Flow, blocks: Any) -> None:
+def test_a_change_in_the_program_shows_in_the_trace(
+    fused: list[Item], by_hand: list[Item], flow: Flow, blocks: Any
+) -> None:
     """The comparison of traces can fail: with one wait longer it does."""
     place = max(n for n, item in enumerate(by_hand) if isinstance(item, Instruction) and item.op is Op.WAIT)
     item = by_hand[place]
@@ -400,7 +410,7 @@ def test_a_word_that_does_not_take_ends_the_burn() -> None:
 def test_page_load_writes_the_block_back_to_back() -> None:
     """Each word of the block gets its address, its data and a strobe; then D is let go."""
     load = ins(Op.PAGE_LOAD, strobe=line_byte(CE, L), setup=S, width=16, hold=HD)
-    items = [ins(Op.EACH_BLOCK, to="end"), load, ins(Op.NEXT_BLOCK), Label("end")]
+    items: list[Item] = [ins(Op.EACH_BLOCK, to="end"), load, ins(Op.NEXT_BLOCK), Label("end")]
     _, host = work(items, flow=Flow.WRITE, blocks=[(0, 3, write_block(b"\x01\x02\x03"))])
     kept = [text for text in host.texts() if text[0] == "D" or text in (f"{CE}L", f"{CE}H")]
     assert kept[:10] == ["D=01", "22L", "22H", "D=02", "22L", "22H", "D=03", "22L", "22H", "D=Z"]
@@ -410,8 +420,8 @@ def test_write_poll_waits_for_the_chip_and_fails_without_it() -> None:
     """The word in hand is written at its address and polled with the outputs on."""
     op = ins(Op.WRITE_POLL, strobe=line_byte(CE, L), setup=S, width=16, hold=HD, enable=BOTH_LOW, disable=BOTH_HIGH,
              float=FL, kind=PollKind.EQUAL, mantissa=50, exponent=4)
-    items = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), op, ins(Op.NEXT_WORD), Label("block"),
-             ins(Op.NEXT_BLOCK), Label("end")]
+    items: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), op, ins(Op.NEXT_WORD),
+                         Label("block"), ins(Op.NEXT_BLOCK), Label("end")]
     block = [(0, 1, write_block(b"\x42"))]
     assert work(items, chip=PlainChip(b"\x42"), flow=Flow.WRITE, blocks=block)[0].outcome is Outcome.DONE
     end, _ = work(items, chip=PlainChip(b"\x43"), flow=Flow.WRITE, blocks=block)

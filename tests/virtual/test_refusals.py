@@ -46,6 +46,7 @@ RAISED_RAIL = ins(Op.RAIL, rail=Rail.RAISED, step=VH_12V)
 SETTLE = ins(Op.WAIT, ticks=25 * MS)
 OE_ON = ins(Op.SWITCHES, on=1 << 2)
 A9_ON = ins(Op.SWITCHES, on=1 << 4)
+IDENTIFY_LEVEL = [RAISED_RAIL, SETTLE, measure_rail(12_000), ins(Op.ADDRESS, at=1 << 9), A9_ON]
 END = ins(Op.END)
 
 
@@ -73,7 +74,13 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
     "look before the seating check": ([*power_up(), ins(Op.GATE_LOOK, wait=8)], Fault.NOT_SEATED),
     "seated without VCC": ([ins(Op.SEATED)], Fault.NO_VCC),
     "seated in the probe range": (
-        [ins(Op.RELEASE), vcc_rail(VCC_5V), ins(Op.RANGE, which=Range.PROBE), ins(Op.WAIT, ticks=7 * MS), ins(Op.SEATED)],
+        [
+            ins(Op.RELEASE),
+            vcc_rail(VCC_5V),
+            ins(Op.RANGE, which=Range.PROBE),
+            ins(Op.WAIT, ticks=7 * MS),
+            ins(Op.SEATED),
+        ],
         Fault.NO_VCC,
     ),
     "another step than the identify step with the gate shut": (
@@ -91,11 +98,11 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
         Fault.GATE_SHUT,
     ),
     "the gate without a look": (
-        [*seated(), RAISED_RAIL, SETTLE, measure_rail(12_000), ins(Op.ADDRESS, at=512), A9_ON, ins(Op.GATE, wait=8)],
+        [*seated(), *IDENTIFY_LEVEL, ins(Op.GATE, wait=8)],
         Fault.NO_ID_MODE,
     ),
     "a look with the identify level on": (
-        [*seated(), RAISED_RAIL, SETTLE, measure_rail(12_000), ins(Op.ADDRESS, at=512), A9_ON, ins(Op.GATE_LOOK, wait=8)],
+        [*seated(), *IDENTIFY_LEVEL, ins(Op.GATE_LOOK, wait=8)],
         Fault.LINE_AT_RAISED,
     ),
     "a switch outside the permit": ([*past_gate(), *raise_oe()[:-2], ins(Op.SWITCHES, on=1)], Fault.NOT_IN_PERMIT),
@@ -134,7 +141,7 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
     ),
     "a line pulled low at a raised position": ([*past_gate(), *raise_oe(), lines((OE, L))], Fault.LINE_AT_RAISED),
     "an address that pulls a raised position low": (
-        [*seated(), RAISED_RAIL, SETTLE, measure_rail(12_000), ins(Op.ADDRESS, at=512), A9_ON, ins(Op.ADDRESS, at=0)],
+        [*seated(), *IDENTIFY_LEVEL, ins(Op.ADDRESS, at=0)],
         Fault.LINE_AT_RAISED,
     ),
     "a line pulled low where VCC is": ([*power_up(), lines((30, L))], Fault.LINE_AT_RAISED),
@@ -142,8 +149,14 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
         [*past_gate(), *raise_oe(), ins(Op.PULSE, line=line_byte(OE, L), width=16, max=16)],
         Fault.LINE_AT_RAISED,
     ),
-    "driving D while the outputs are on": ([*past_gate(), lines((CE, L), (OE, L)), ins(Op.DRIVE, word=1)], Fault.BUS_CONFLICT),
-    "outputs on while D is driven": ([*past_gate(), ins(Op.DRIVE, word=1), lines((CE, L), (OE, L))], Fault.BUS_CONFLICT),
+    "driving D while the outputs are on": (
+        [*past_gate(), lines((CE, L), (OE, L)), ins(Op.DRIVE, word=1)],
+        Fault.BUS_CONFLICT,
+    ),
+    "outputs on while D is driven": (
+        [*past_gate(), ins(Op.DRIVE, word=1), lines((CE, L), (OE, L))],
+        Fault.BUS_CONFLICT,
+    ),
     "a pulse that turns the outputs on while D is driven": (
         [*past_gate(), lines((OE, L)), ins(Op.DRIVE, word=1), pulse()],
         Fault.BUS_CONFLICT,
@@ -237,7 +250,7 @@ def test_without_raised_pairs_no_rail_step_is_permitted() -> None:
 def test_a_vouched_permit_needs_the_button() -> None:
     """The gate of a vouched permit opens only with the board's button held."""
     items = [*power_up(), ins(Op.SEATED), ins(Op.GATE, wait=0)]
-    vouched = {"identity": Identity.VOUCHED_NONE, "alternatives": ()}
+    vouched: dict[str, Any] = {"identity": Identity.VOUCHED_NONE, "alternatives": ()}
     assert ran(items, **vouched)[0].fault["code"] == Fault.GATE_SHUT
     assert ran(items, board=Board(button=True), **vouched)[0].outcome is Outcome.DONE
 
@@ -251,7 +264,8 @@ def test_a_permit_above_14_5_v_needs_the_button() -> None:
 
 def test_the_gate_shuts_at_power_down() -> None:
     """After VCC went and came back the gate is shut and the seating check has to be passed again."""
-    down = [ins(Op.HIGH, how=0), ins(Op.RANGE, which=Range.OFF), ins(Op.WAIT, ticks=MS), ins(Op.RANGE, which=Range.FULL)]
+    off, on = ins(Op.RANGE, which=Range.OFF), ins(Op.RANGE, which=Range.FULL)
+    down = [ins(Op.HIGH, how=0), off, ins(Op.WAIT, ticks=MS), on]
     again = [ins(Op.WAIT, ticks=7 * MS), *power_up()[5:6], RAISED_RAIL]
     assert ran([*past_gate(), *down, *again])[0].fault["code"] == Fault.NOT_SEATED
 
@@ -338,7 +352,7 @@ def test_writes_before_the_gate_are_for_command_identify_alone() -> None:
     """A permit that wants an ID without a level may ask for it by writes, once seated, and passes its gate so."""
     asks = [ins(Op.SEATED), lines((CE, L), (OE, L)), ins(Op.GATE_LOOK, wait=32), ins(Op.LINES, lines=BOTH_HIGH)]
     asks += [ins(Op.DRIVE, word=0x90), ins(Op.RELEASE), ins(Op.LINES, lines=BOTH_LOW), ins(Op.GATE, wait=32)]
-    by_command = {"identify_switch": 0xFF, "identify_step": 0, "raised": ()}
+    by_command: dict[str, Any] = {"identify_switch": 0xFF, "identify_step": 0, "raised": ()}
     end, _ = ran([*power_up(), *asks], **by_command)
     assert end.fault["code"] == Fault.NO_ID_MODE  # the plain chip takes no commands: its cells read the same
     assert ran([*power_up(), ins(Op.DRIVE, word=0x90)], **by_command)[0].fault["code"] == Fault.GATE_SHUT

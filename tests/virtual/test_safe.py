@@ -91,7 +91,7 @@ def test_an_abort_in_a_pulse_ends_it_and_makes_safe_in_order() -> None:
     end = host.end()
     assert (end.outcome, end.fault["code"], end.fault["pulsing"]) == (Outcome.ABORTED, Fault.ABORTED, 1)
     assert end.fault["address"] == 0x1234
-    assert host.trace[begun] == (t + 3 * 4_167, f"{CE}H")  # at 38400 baud; the zero that ended the last frame is the first
+    assert host.trace[begun] == (t + 3 * 4_167, f"{CE}H")  # at 38400 baud; the last frame's zero is the first
     check_order(host, begun, pulsed=True)
 
 
