@@ -29,6 +29,7 @@ MAY_IMPORT = {
     "jobs": BASE | EXECUTORS,
     "report": BASE | EXECUTORS | {"jobs"},
     "cli": BASE | EXECUTORS | {"jobs", "report"},
+    "__main__": {"cli"},
 }
 # The one place that opens a rig by its name has to know the virtual one.
 OPENS_RIGS = "pulsewright.link.open"
