@@ -7,7 +7,7 @@ from dataclasses import replace
 import pytest
 
 from pulsewright.errors import Interrupted, LinkFault, OtherFirmware, RigFault, RigRestarted
-from pulsewright.link.faulty import Harm
+from pulsewright.link.faulty import Harm, Way
 from pulsewright.link.results import Block, LinkProgress
 from pulsewright.link.session import Session
 from pulsewright.wire.tables import Fault, Flow, Outcome, State
@@ -206,19 +206,34 @@ def test_noise_is_told_from_silence() -> None:
     assert "other bytes" in caught.value.got
 
 
-@pytest.mark.parametrize("way", ["to rig", "from rig"])
-def test_a_cut_line_is_a_link_fault_with_counters(way: str) -> None:
-    """A line cut while the rig works ends in a LinkFault, and the rig ends by its own dead-man."""
+def _cut_while_working(way: Way) -> Desk:
+    """A desk on which one way is cut while the first block is burned."""
     probe = Desk()
     probe.session.connect()
-    at = dict(probe.line.passed)
-    cut = [Harm("to rig", at["to rig"] + 150, "cut"), Harm("from rig", at["from rig"] + 160, "cut")]
-    desk = Desk(FakeRig(word_ticks=10 * MS), [harm for harm in cut if harm.way == way])
+    at = {"to rig": probe.line.passed["to rig"] + 150, "from rig": probe.line.passed["from rig"] + 160}
+    desk = Desk(FakeRig(word_ticks=10 * MS), [Harm(way, at[way], "cut")])
     desk.session.connect()
+    return desk
+
+
+def test_a_deaf_host_is_a_link_fault_with_counters() -> None:
+    """Nothing comes from the rig any more: LinkFault, the counters of this end, and the rig is safe."""
+    desk = _cut_while_working("from rig")
     with pytest.raises(LinkFault) as caught:
         desk.session.run(sequence(Flow.WRITE), image_blocks())
-    assert "frames here" in caught.value.facts[0]
-    assert desk.rig.state is not State.RUNNING
+    assert caught.value.facts[0].startswith("frames here")
+    assert "not known" in caught.value.facts[1]
+    assert not desk.rig.powered
+
+
+def test_a_deaf_rig_trips_by_its_dead_man() -> None:
+    """Nothing reaches the rig any more: it says itself what it did, and the result is kept without its counters."""
+    desk = _cut_while_working("to rig")
+    result = desk.session.run(sequence(Flow.WRITE), image_blocks())
+    assert result.outcome is Outcome.TRIPPED
+    assert result.trouble is not None
+    assert result.trouble.name == "dead_man"
+    assert result.counters.rig is None
     assert not desk.rig.powered
 
 

@@ -41,12 +41,13 @@ def result_of(outcome: Outcome, trouble: Trouble | None, rest: bytes, window: Wi
     )
 
 
-def interrupted(result: RunResult) -> Interrupted:
-    """What the operator is told after Ctrl-C; the rig has said that it is safe."""
+def interrupted(result: RunResult, kind: str) -> Interrupted:
+    """What the operator is told after Ctrl-C in a sequence of this kind; the rig has said that it is safe."""
     facts = [f"{sum(block.words for block in result.blocks)} words were answered for"]
     trouble = result.trouble
     if trouble is not None and trouble.pulsing:
-        facts.append(f"word {trouble.address:04X} is undefined: its pulse was cut")
+        what = "the whole chip" if kind == "erase" else f"word {trouble.address:04X}"
+        facts.append(f"{what} is undefined: its pulse was cut")
     if trouble is not None and trouble.code not in (Fault.ABORTED, Fault.NONE):
         facts.append(f"the rig also says {trouble.name.replace('_', ' ')} ({trouble.numbers()})")
     did = SAFE if result.outcome is not Outcome.DONE else "had just ended the sequence, and is safe"

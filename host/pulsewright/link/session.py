@@ -113,7 +113,7 @@ class Session:
             run = _Run(exchange, window, self._permit_number)
             self._work(run)
             stage, running = "asking for the rig's state", False
-            return self._finish(run)
+            return self._finish(run, sequence.kind)
         except Silent:
             raise self._lost(f"{stage} ({sequence.title})", boot, running=running) from None
         except LinkFault as fault:
@@ -205,17 +205,22 @@ class Session:
 
     # ---- endings --------------------------------------------------------------------------------------------------
 
-    def _finish(self, run: _Run) -> RunResult:
+    def _finish(self, run: _Run, kind: str) -> RunResult:
         answer = run.exchange.answer
         assert answer is not None  # _work returns no earlier
         self._accepted("the start", answer)
         trouble, rest = greeting.trouble_of(answer.fields["data"])
-        if trouble is not None:
-            self._clear_latched()
-        self._ask_state()
+        self._rig_counters = None
+        try:
+            if trouble is not None:
+                self._clear_latched()
+            else:
+                self._ask_state()
+        except Silent:
+            pass  # how the run ended is known; that the link is gone now, the next command finds out
         result = endings.result_of(Outcome(answer.fields["outcome"]), trouble, rest, run.window, self._counters())
         if self._interrupted():
-            raise endings.interrupted(result)
+            raise endings.interrupted(result, kind)
         return result
 
     def _counters(self) -> Counters:

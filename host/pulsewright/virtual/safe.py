@@ -7,7 +7,7 @@ Each measured wait has a limit: past it the converter is shut down, VCC follows,
 
 from __future__ import annotations
 
-from pulsewright.units import TICKS_PER_MS
+from pulsewright.units import TICKS_PER_MS, TICKS_PER_US
 from pulsewright.virtual.board import POSITIONS, RAISED_FULL_MV, RAISED_POSITIONS, VCC_FULL_MV, count_of
 from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Machine, Trip, Waiting, until
@@ -18,6 +18,7 @@ from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import CONVERTER_OFF_MS, OP_COST, Bias, Fault, Level, Op, Range
 
 _STEP = OP_COST[Op.LINES]
+_HOLD_TICKS = 5 * TICKS_PER_US  # a pulse's raised level stays a little: no part of the fact tables asks for over 2 us
 _VCC_CUT_AFTER_TICKS = 1 * TICKS_PER_MS  # a VCC trip: raised levels go this long before
 CUTS_VCC_AT_ONCE = (Fault.VCC_OUTSIDE,)
 
@@ -28,6 +29,8 @@ def make_safe(m: Machine, reason: Trip | None) -> Waiting:
     m.gate = False
     m.forget_approval()
     _end_pulse(m)
+    if m.closed:
+        yield from until(m, m.edge + _HOLD_TICKS)
     _open_switches(m)
     at_once = reason is not None and reason.code in CUTS_VCC_AT_ONCE
     if at_once:
