@@ -7,7 +7,8 @@ from typing import Any
 import pytest
 
 from pulsewright.virtual.board import Board
-from pulsewright.virtual.serial_line import byte_ticks
+from pulsewright.virtual.contacts import NEVER
+from pulsewright.virtual.serial_line import SerialLine, byte_ticks
 from pulsewright.wire.fields import unpack
 from pulsewright.wire.frames import Message, decode_hello, encode_frame
 from pulsewright.wire.ops import Instruction, Label, ins
@@ -103,6 +104,29 @@ def test_bytes_at_another_rate_are_noise() -> None:
     host.rig.receive(b"\0", host.rig.t)  # ends the noise
     host.index = 20
     assert status(host)["state"] == State.IDLE
+
+
+def test_bytes_handed_over_at_once_follow_one_another() -> None:
+    """Two frames put on the line at the same tick arrive one behind the other, ten bits a byte."""
+    line = SerialLine()
+    line.receive(b"ab\0", 100)
+    line.receive(b"c\0", 100)
+    arrived = []
+    while line.arrives_at < NEVER:
+        arrived.append((line.arrives_at, line.take()))
+    ticks = byte_ticks(38_400)
+    assert arrived == [(100 + 3 * ticks, b"ab\0"), (100 + 5 * ticks, b"c\0")]
+
+
+def test_frames_under_no_permit_do_not_feed_the_dead_man() -> None:
+    """A keep-alive with permit 0 is a valid frame, but not one of this permit."""
+    host = Host()
+    host.start(build([*power_up(), ins(Op.WAIT, ticks=900 * MS), END]))
+    host.keep_alive = False
+    for _ in range(30):
+        host.send(Message(Frame.KEEP_ALIVE, 0, host.index))
+        host.pass_time(25 * MS)
+    assert host.end().fault["code"] == Fault.DEAD_MAN
 
 
 @pytest.mark.parametrize("baud", [0, 1_199, 2_000_001])

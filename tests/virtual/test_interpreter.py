@@ -196,6 +196,15 @@ def test_the_answer_tells_the_turn_in_which_the_last_loop_was_left() -> None:
     assert (end.outcome, end.done["tries"], len(erasing.pulses)) == (Outcome.DONE, 4, 3)
 
 
+def test_a_loop_used_up_around_a_scan_tells_all_its_turns() -> None:
+    """A scan left early in the last turn does not hide how often the loop around it ran."""
+    turns: list[Item] = [ins(Op.LOOP, count=3), ENABLE, ins(Op.SCAN, first=0, count=90, word=0xFF, wait=16), DISABLE,
+                         ins(Op.BRANCH, when=1, depth=0, to="done"), ins(Op.NEXT), ins(Op.FAIL, why=Fail.ERASE),
+                         Label("done")]
+    end, _ = work(turns, chip=PlainChip(b"\xff" * 40 + b"\x00"))
+    assert (end.outcome, end.fault["address"], end.done["tries"]) == (Outcome.FAILED, 40, 3)
+
+
 def turn_of_erase() -> list[Item]:
     """A pulse with OE raised, and the level gone again."""
     gone = [ins(Op.SWITCHES, on=0), ins(Op.WAIT, ticks=20 * US), ins(Op.RELEASE)]

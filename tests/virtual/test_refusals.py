@@ -161,6 +161,14 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
         [*past_gate(), lines((OE, L)), ins(Op.DRIVE, word=1), pulse()],
         Fault.BUS_CONFLICT,
     ),
+    "a pulse that ends with the outputs on while D is driven": (
+        [*past_gate(), lines((OE, L)), ins(Op.DRIVE, word=1), ins(Op.PULSE, line=line_byte(CE, H), width=16, max=16)],
+        Fault.BUS_CONFLICT,
+    ),
+    "a pulse that ends low at a raised position": (
+        [*past_gate(), *raise_oe(), ins(Op.PULSE, line=line_byte(OE, H), width=16, max=16)],
+        Fault.LINE_AT_RAISED,
+    ),
     "VCC to a chip whose outputs would meet a driven D": (
         [vcc_rail(VCC_5V), ins(Op.RANGE, which=Range.FULL)],
         Fault.BUS_CONFLICT,
@@ -308,7 +316,7 @@ def test_vcc_that_leaves_its_window_trips_within_a_millisecond() -> None:
     code = build([*past_gate(), ins(Op.WAIT, ticks=400 * MS), END])
     host.start(code)
     host.pass_time(120 * MS)
-    host.chip.draw[28] = 400_000
+    host.chip.draw[28] = 200_000
     begun = host.rig.t
     end = host.end()
     assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.VCC_OUTSIDE)
