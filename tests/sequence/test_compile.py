@@ -9,7 +9,7 @@ from typing import Any
 import pytest
 
 from pulsewright.chip.load import load
-from pulsewright.chip.model import Definition, RepeatStep
+from pulsewright.chip.model import Definition, EachStep, RepeatStep
 from pulsewright.errors import CannotMake
 from pulsewright.rig.file import load_rig
 from pulsewright.rig.model import Rig
@@ -154,7 +154,8 @@ def test_unknown_loop_unit_is_refused(definition: Definition, rig: Rig) -> None:
     """A loop over pages is refused with the place of the step, not compiled as something else."""
     assert definition.program is not None
     (each,) = definition.program.steps
-    program = replace(definition.program, steps=(replace(each, unit="page"),))  # type: ignore[call-arg]  # a loop step
+    assert isinstance(each, EachStep)
+    program = replace(definition.program, steps=(replace(each, unit="page"),))
     with pytest.raises(CannotMake, match="page"):
         compile_burn(replace(definition, program=program), rig, 0, 15, "")
 

@@ -13,7 +13,7 @@ from pulsewright.chip.model import Definition, ExpectStep, Mode
 from pulsewright.rig.file import load_rig
 from pulsewright.rig.model import Rig
 from pulsewright.sequence import compile as compiler
-from pulsewright.sequence import lower, permits, seating
+from pulsewright.sequence import levels, lower, permits, seating
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Sequence
@@ -51,7 +51,7 @@ def forget_gate(patch: pytest.MonkeyPatch) -> None:
 
 def step_too_high(patch: pytest.MonkeyPatch) -> None:
     """H3: the raised rail's next higher step is taken."""
-    right = lower.choose_raised
+    right = levels.choose_raised
 
     def wrong(definition: Definition, rig: Rig, wanted: Any) -> Any:
         return rig.raised.step(right(definition, rig, wanted).number + 1)

@@ -167,7 +167,7 @@ def _doubles(tree: Node, places: Places) -> list[Problem]:
 
 
 def load_rig(path: Path | str | None = None) -> Rig:
-    """The rig a file describes; None: the reference rig. RigFileMistake with every problem, FileMistake if unreadable."""
+    """The rig a file describes; None: the reference rig. RigFileMistake with every problem, or FileMistake."""
     file = REFERENCE if path is None else Path(path)
     try:
         tree, text = read_toml(file, "rig file")

@@ -1,4 +1,4 @@
-"""A program under construction: ops with their origins, waits that add up what must settle, and what stands at the pins."""
+"""A program under construction: ops with their origins, waits that add up, and what stands at the pins."""
 
 from __future__ import annotations
 

@@ -140,7 +140,8 @@ def enter(
 ) -> None:
     """From the mode in force to another, in a fixed order.
 
-    Raised off, D off, outputs off, VCC, rail, address, D, raised on, enables. `data` overrides what the mode row says of D; `drive` False leaves D released whatever the row says.
+    Raised off, D off, outputs off, VCC, rail, address, D, raised on, enables. `data` overrides what the mode row says
+    of D; `drive` False leaves D released whatever the row says.
     """
     mode = b.definition.modes[name]
     levels = b.pins.control_levels(mode)
