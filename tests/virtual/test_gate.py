@@ -76,8 +76,9 @@ def test_a_chip_without_id_mode_is_refused_whatever_its_cells_hold() -> None:
 def test_one_cell_that_differs_shows_an_id_mode() -> None:
     """An image that imitates the ID in all of the 64 cells but one is told from a chip without ID mode."""
     for odd in (0, 17, 63):
-        cells = bytearray(bytes(ID) * 32)
-        cells[odd] ^= 0x10
+        cells = bytearray(bytes(ID) * 300)
+        assert identified(PlainChip(bytes(cells)))[0].fault["code"] == Fault.NO_ID_MODE
+        cells[0x200 + odd] ^= 0x10  # the look is taken with A9 high
         assert identified(PlainChip(bytes(cells)))[0].outcome is Outcome.DONE
 
 

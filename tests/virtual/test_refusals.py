@@ -223,6 +223,16 @@ def test_what_is_refused_moves_nothing(name: str) -> None:
     assert kept == wanted
 
 
+@pytest.mark.parametrize("name", [name for name in REFUSED if name.startswith("a pulse that ends")])
+def test_a_pulse_with_a_bad_end_is_refused_before_it_begins(name: str) -> None:
+    """However wide it would be, the trip comes at the same tick."""
+    items = REFUSED[name][0]
+    last = items[-1]
+    assert isinstance(last, Instruction)
+    wide = [*items[:-1], ins(Op.PULSE, **{**last.args, "width": 1_600, "max": 1_600})]
+    assert ran(items)[0].fault["tick"] == ran(wide)[0].fault["tick"]
+
+
 def test_a_level_above_the_permits_ceiling_is_refused() -> None:
     """A switch is not closed when the rail stands above the ceiling of its pair."""
     end, _ = ran([*past_gate(), *raise_oe()], raised=((2, vpp(13_900)), (4, vpp(14_250))))
