@@ -6,7 +6,8 @@ import pytest
 
 from pulsewright.virtual.board import Board
 from pulsewright.virtual.rails import Ramp
-from pulsewright.virtual.socket import Socket, vcc_positions
+from pulsewright.virtual.socket import Socket
+from pulsewright.virtual.supplied import vcc_positions
 from pulsewright.wire.tables import Bias, Level, Range
 from tests.virtual.kit import (
     ADDRESS,

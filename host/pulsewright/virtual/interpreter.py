@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from pulsewright.virtual import gate, ops, ops_flow, ops_supply
+from pulsewright.virtual import gate, ops, ops_flow, ops_read, ops_supply
 from pulsewright.virtual.blocks import Blocks
 from pulsewright.virtual.loader import Loaded
 from pulsewright.virtual.machine import Ended, Machine, Trip, Waiting
@@ -18,7 +18,7 @@ from pulsewright.wire.tables import BLOBS, Fault, Flow, Op, Outcome
 Maker = Callable[[Machine, ops.Args, int], ops.Step]
 _MAKERS: dict[Op, Maker] = {
     Op.END: ops_flow.end,
-    Op.FAIL: ops.fail,
+    Op.FAIL: ops_read.fail,
     Op.HIGH: ops.high,
     Op.LINES: ops.lines,
     Op.ADDRESS: ops.address,
@@ -30,14 +30,14 @@ _MAKERS: dict[Op, Maker] = {
     Op.WAIT: ops.wait,
     Op.PULSE: ops.pulse,
     Op.OVER_PULSE: ops.over_pulse,
-    Op.SAMPLE: ops.sample,
-    Op.KEEP: ops.keep,
-    Op.COMPARE: ops.compare,
-    Op.COMPARE_WORD: ops.compare_word,
-    Op.COMPARE_KEPT: ops.compare_kept,
-    Op.SENSE: ops.sense,
-    Op.REPORT: ops.report,
-    Op.POLL: ops.poll,
+    Op.SAMPLE: ops_read.sample,
+    Op.KEEP: ops_read.keep,
+    Op.COMPARE: ops_read.compare,
+    Op.COMPARE_WORD: ops_read.compare_word,
+    Op.COMPARE_KEPT: ops_read.compare_kept,
+    Op.SENSE: ops_read.sense,
+    Op.REPORT: ops_read.report,
+    Op.POLL: ops_read.poll,
     Op.RAIL: ops_supply.rail,
     Op.RANGE: ops_supply.set_range,
     Op.SWITCHES: ops_supply.switches,

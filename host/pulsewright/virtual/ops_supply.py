@@ -16,7 +16,7 @@ from pulsewright.virtual.board import (
 from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Machine, Trip, Waiting, until
 from pulsewright.virtual.ops import Args, Step
-from pulsewright.virtual.socket import vcc_positions
+from pulsewright.virtual.supplied import vcc_positions
 from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import DEAD_MAN_MS, MONITOR_MS, OP_COST, Bias, Channel, Fault, Group, Op, Rail, Range
 

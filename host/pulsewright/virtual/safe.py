@@ -12,7 +12,7 @@ from pulsewright.virtual.board import POSITIONS, RAISED_FULL_MV, RAISED_POSITION
 from pulsewright.virtual.contacts import NEVER
 from pulsewright.virtual.machine import Machine, Trip, Waiting, until
 from pulsewright.virtual.ops_supply import CONVERSION_TICKS, shut
-from pulsewright.virtual.socket import vcc_positions
+from pulsewright.virtual.supplied import vcc_positions
 from pulsewright.wire.ops import line_of
 from pulsewright.wire.permit import NO_SWITCH
 from pulsewright.wire.tables import CONVERTER_OFF_MS, OP_COST, Bias, Fault, Level, Op, Range
