@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import zlib
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from typing import Any
 
 from pulsewright.virtual.board import RAISED_FULL_MV, VCC_FULL_MV, Board, count_of
@@ -16,6 +16,7 @@ from pulsewright.wire.frames import Message, decode_frame, encode_frame
 from pulsewright.wire.ops import Header, Instruction, Label, assemble, ins, line_byte
 from pulsewright.wire.permit import Permit, VccStep
 from pulsewright.wire.tables import BLOBS, Channel, Flow, Frame, Identity, Level, Op, Outcome, Rail, Range
+from tests.virtual.pin_log import Log
 
 US, MS = 16, 16_000
 PINS_A = (10, 9, 8, 7, 6, 5, 4, 3, 25, 24, 21, 23, 2, 26, 27, 1)
@@ -98,31 +99,6 @@ class PlainChip:
 
     def restore(self, state: Mapping[str, object]) -> None:
         """Nothing is kept."""
-
-
-@dataclass
-class Log:
-    """A watcher that writes down what it is told."""
-
-    groups: list[tuple[int, tuple[tuple[int, int | None], ...]]] = field(default_factory=list)
-    samples: list[int] = field(default_factory=list)
-    driving: list[tuple[int, bool]] = field(default_factory=list)
-    fights: list[tuple[int, ...]] = field(default_factory=list)
-
-    def edges(self, t: int, levels: Levels, changed: Sequence[int], driven: Sequence[int] | None = None) -> None:
-        self.groups.append((t, tuple((pin, levels[pin]) for pin in changed)))
-        if driven:
-            self.fights.append(tuple(driven))
-
-    def sampled(self, t: int) -> None:
-        self.samples.append(t)
-
-    def rig_drives(self, t: int, driving: bool) -> None:
-        self.driving.append((t, driving))
-
-    def levels_of(self, pin: int) -> list[tuple[int, int | None]]:
-        """(tick, level) of every group that names the pin."""
-        return [(t, level) for t, changed in self.groups for name, level in changed if name == pin]
 
 
 # ---- programs -----------------------------------------------------------------------------------------------------

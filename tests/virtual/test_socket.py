@@ -23,9 +23,9 @@ from tests.virtual.kit import (
     SHIFTED,
     US,
     WIRING,
-    Log,
     PlainChip,
 )
+from tests.virtual.pin_log import Log
 
 VCC_AT = vcc_positions(0b10)
 DATA = (13, 14, 15, 17, 18, 19, 20, 21)
