@@ -62,9 +62,10 @@ def test_a_missing_image_is_a_file_mistake(capsys: pytest.CaptureFixture[str]) -
 
 
 def test_an_output_that_cannot_be_written_is_a_file_mistake(capsys: pytest.CaptureFixture[str]) -> None:
-    """A folder that is not there: exit 2, and no half a file."""
+    """A folder that is not there: exit 2 before the chip is read at all, and no record of a job."""
     facts = answer(capsys, "read", "27e512", "--rig", "virtual", "--range", "0..255", "-o", "nowhere/saved.bin")
     assert (facts["exit"], facts["error"]) == (2, "FileMistake")
+    assert not Path("state/records").exists()
 
 
 def test_h9_a_part_without_id_wants_the_word(capsys: pytest.CaptureFixture[str]) -> None:

@@ -7,7 +7,7 @@ from pathlib import Path
 
 import pytest
 
-from pulsewright.chip.load import load
+from pulsewright.chip.load import load, memory_marked
 from pulsewright.chip.model import Definition
 from pulsewright.errors import ConsentNeeded, UsageMistake, VouchNeeded
 from pulsewright.jobs.consent import check_consent, check_vouch, remembered, voltages
@@ -87,13 +87,26 @@ def test_the_prompt_decides(answer: bool, outcome: str | None) -> None:
         return answer
 
     if outcome is None:
-        with pytest.raises(ConsentNeeded):
+        with pytest.raises(ConsentNeeded) as refused:
             check_consent(definition, in_process=False, ask=ask)
         assert remembered() == set()
+        assert refused.value.facts == (f"hash {definition.digest}",)  # what was just shown is not shown again
     else:
         assert check_consent(definition, in_process=False, ask=ask) == outcome
         assert remembered() == {definition.digest}
     assert any("14.0 V" in line for line in shown[0])
+
+
+def test_the_reasons_name_each_mark_once() -> None:
+    """A list of twenty values from memory is few lines, and no value is left out of them."""
+    definition = load("27e512")
+    with pytest.raises(ConsentNeeded) as refused:
+        check_consent(definition, in_process=False)
+    facts = list(refused.value.facts)
+    reasons = facts[facts.index("because:") + 1 : -1]
+    assert sum("from memory:" in line for line in reasons) == 1
+    names = {word.strip(",") for line in reasons for word in line.split()}
+    assert {mark.partition(":")[0] for mark in memory_marked(definition)} <= names
 
 
 def test_the_virtual_rig_in_this_process_does_not_ask() -> None:

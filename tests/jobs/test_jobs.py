@@ -142,9 +142,10 @@ def test_a_burn_with_erase_erases_once_and_says_what_was_lost() -> None:
     session = FakeSession(bytearray(WORDS), erase_pulses=2)
     result = burn(context(session, erase=True), image(b"\x01" * 100))
     assert session.kinds == ["read", "read", "erase", "burn", "read"]
-    assert result.lines[0].startswith("erased in 2 of 20 pulses")
+    assert result.lines[0].startswith("100 words burnt")
+    assert result.lines[2].startswith("erased in 2 of 20 pulses")
     assert result.facts["cleared_words"] == WORDS - 100
-    assert f"{WORDS - 100} words that the image does not give" in result.lines[1]
+    assert f"{WORDS - 100} words that the image does not give" in result.lines[3]
 
 
 def test_an_erase_that_is_not_needed_is_not_made() -> None:

@@ -75,3 +75,12 @@ def test_no_color_leaves_no_colour(monkeypatch: pytest.MonkeyPatch) -> None:
     progress.end()
     assert "\x1b[3" not in stream.getvalue()
     assert "erased in 3 of 20 pulses" in stream.getvalue()
+
+
+def test_words_that_a_block_skips_do_not_lead_past_the_end() -> None:
+    """The rig answers for whole blocks; the line never tells more words than the stage has."""
+    progress = LiveProgress(Terminal(), lambda: 0.0)
+    progress.begin("burn", 100)
+    progress.link(LinkProgress("run", 1, 256, 10))
+    assert "100 of 100 words" in progress.text()
+    progress.end()

@@ -36,7 +36,8 @@ def test_an_unknown_name_gets_the_nearest() -> None:
     """A slip of the keyboard is answered with the right word."""
     with pytest.raises(UsageMistake) as caught:
         models.make_model("27e521")
-    assert caught.value.hint == "did you mean 27e512?"
+    assert caught.value.hint.startswith("did you mean 27e512?")
+    assert "--model FILE" in caught.value.hint
 
 
 def test_the_guides_example_loads_and_reads(tmp_path: Path) -> None:

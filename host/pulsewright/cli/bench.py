@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 from pulsewright.cli.desk import Desk, Parser, add, add_group
+from pulsewright.errors import UsageMistake
 
 if TYPE_CHECKING:
     from pulsewright.virtual.bench import Bench
@@ -80,9 +81,16 @@ def _new(args: argparse.Namespace, desk: Desk) -> int:
     contents: bytes | str = args.contents
     if Path(args.contents).is_file():
         contents = _image(args, name)
+    elif args.contents.partition(":")[0] not in ("blank", "noise"):
+        raise UsageMistake(
+            f"no file is called {args.contents}, and no contents either",
+            wanted="blank, noise, noise:SEED, or an image file",
+            got=args.contents,
+            hint="check the name and the folder",
+        )
     bench = Bench.new(args.bench, name, contents=contents, faults=args.fault, model=args.model)
     facts = bench.report()
-    lines = [f"{args.bench}: {facts['chip']}, contents CRC-32 {facts['crc32']}"]
+    lines = [f"{args.bench}: {facts['chip']}, contents CRC-32 {facts['crc32'].upper()}"]
     if args.fault:
         lines.append(f"faults: {', '.join(args.fault)}")
     return desk.answer(lines, {**facts, "bench": args.bench, "faults": args.fault})
@@ -122,10 +130,11 @@ def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[
     from pulsewright.report.modes import table
     from pulsewright.units import show_mv
 
-    lines = [f"{facts['chip']}, contents CRC-32 {facts['crc32']}"]
+    lines = [f"{facts['chip']}, contents CRC-32 {facts['crc32'].upper()}"]
     lines.append(f"faults: {', '.join(bench.faults.texts) or 'none'}")
-    rows = [[pin, show_mv(seen["max_mv"])] for pin, seen in facts["pins"].items()]
-    lines += table(["pin", "highest"], rows) if rows else ["its pins have seen nothing yet"]
+    signals = _signals(bench.chip_name)
+    rows = [[pin, signals.get(int(pin), ""), show_mv(seen["max_mv"])] for pin, seen in facts["pins"].items()]
+    lines += table(["pin", "signal", "highest"], rows) if rows else ["its pins have seen nothing yet"]
     lines.append(f"limits of the data sheet broken: {facts.get('violation_count', len(facts['violations']))}")
     lines += [
         f"  {one['rule']} at pin {one['pin']} after {one['at_us']} us: wanted {one['wanted']}, got {one['got']}"
@@ -137,6 +146,18 @@ def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[
     if saved:
         lines.append(f"contents written to {saved}")
     return lines
+
+
+def _signals(name: str) -> dict[int, str]:
+    """What a shipped definition of that name calls each pin; nothing where there is none."""
+    from pulsewright.chip.load import load, shipped
+    from pulsewright.chip.model import PACKAGE_PINS
+    from pulsewright.report.pinout import pin_name
+
+    if name not in {part.name for part in shipped()}:
+        return {}
+    definition = load(name)
+    return {pin: pin_name(definition, pin) for pin in range(1, PACKAGE_PINS[definition.package] + 1)}
 
 
 def _serve(args: argparse.Namespace, desk: Desk) -> int:

@@ -25,8 +25,15 @@ def _check(args: argparse.Namespace, desk: Desk) -> int:
 
     from pulsewright.chip.check import check_file
     from pulsewright.chip.load import load
-    from pulsewright.errors import DefinitionMistake
+    from pulsewright.errors import DefinitionMistake, FileMistake, Where
 
+    if not Path(args.file).is_file():
+        raise FileMistake(
+            "there is no such definition file",
+            where=Where(args.file),
+            wanted="the path of a TOML file",
+            hint="start with a copy of a shipped one: `chips --json` tells where each is",
+        )
     problems = check_file(Path(args.file))
     errors = [problem for problem in problems if not problem.warning]
     warnings = [problem for problem in problems if problem.warning]

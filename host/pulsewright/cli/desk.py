@@ -44,14 +44,32 @@ class Parser(argparse.ArgumentParser):
 
     def error(self, message: str) -> NoReturn:
         """UsageMistake instead of an exit of its own, with the nearest right word where a word was not known."""
-        near = ""
-        unknown = re.search(r"invalid choice: '(.*?)' \(choose from (.*)\)", message)
+        unknown = re.search(r"argument (\w+): invalid choice: '(.*?)' \(choose from (.*)\)", message)
         if unknown:
-            import difflib
+            words = re.findall(r"[\w-]+", unknown[3])
+            wanted = f"one of {', '.join(words)}"
+            raise UsageMistake(
+                f"no {unknown[1]} is called {unknown[2]}", wanted=wanted, hint=self._nearest(unknown[2], words)
+            )
+        missing = message.removeprefix("the following arguments are required: ")
+        if missing != message:
+            raise UsageMistake(f"{missing} is missing", wanted=self._usage(), hint=f"{self.prog} --help")
+        raise UsageMistake(message.removeprefix("argument "), hint=f"{self.prog} --help")
 
-            close = difflib.get_close_matches(unknown[1], re.findall(r"[\w-]+", unknown[2]), n=1)
-            near = f"{close[0]}, or " if close else ""
-        raise UsageMistake(message, hint=f"{near}{self.prog} --help")
+    def not_known(self, words: list[str]) -> NoReturn:
+        """UsageMistake for words that are left over, with the option they may be meant as."""
+        options = [option for option in self._option_string_actions if len(option) > 2]
+        hint = self._nearest(words[0].partition("=")[0], options)
+        raise UsageMistake(f"{self.prog} does not know {' '.join(words)}", wanted=self._usage(), hint=hint)
+
+    def _usage(self) -> str:
+        return " ".join(self.format_usage().split()).removeprefix("usage: ")
+
+    def _nearest(self, word: str, words: list[str]) -> str:
+        import difflib
+
+        close = difflib.get_close_matches(word, words, n=1)
+        return f"{close[0]}, or {self.prog} --help" if close else f"{self.prog} --help"
 
 
 class Desk:
@@ -110,7 +128,7 @@ def add(
     parser.add_argument(
         "--json", action="store_true", help="one JSON object on standard output, all else on standard error"
     )
-    parser.set_defaults(handler=handler)
+    parser.set_defaults(handler=handler, parser=parser)
     return parser
 
 
@@ -137,9 +155,12 @@ def address(text: str) -> int:
 
 def byte(text: str) -> int:
     """A byte option."""
-    value = address(text)
-    if value > 0xFF:
-        raise argparse.ArgumentTypeError(f"{text!r} is not a byte: 0 to 0xFF")
+    try:
+        value = parse_address(text)
+    except UnitMistake:
+        value = -1
+    if not 0 <= value <= 0xFF:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a byte such as 0xFF or 255")
     return value
 
 

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import argparse
+import os
 from collections.abc import Callable
 from contextlib import ExitStack
 from typing import TYPE_CHECKING
@@ -24,6 +25,7 @@ from pulsewright.cli.desk import (
     count,
     prompt,
 )
+from pulsewright.errors import FileMistake, Where
 
 if TYPE_CHECKING:
     from pulsewright.chip.model import Definition
@@ -195,11 +197,28 @@ def _read(args: argparse.Namespace, desk: Desk) -> int:
     from pulsewright.image.load import save
     from pulsewright.jobs.read import read
 
-    result = _run(args, desk, _definition(args), read)
+    definition = _definition(args)
+    _writable(args.out)
+    result = _run(args, desk, definition, read)
     save(args.out, result.data)
     return _answer(
         desk, replace(result, lines=(*result.lines, f"written to {args.out}"), facts={**result.facts, "file": args.out})
     )
+
+
+def _writable(path: str) -> None:
+    """FileMistake before a chip is read for minutes into a file that cannot be written."""
+    from pathlib import Path
+
+    folder = Path(path).absolute().parent
+    if Path(path).is_dir() or not folder.is_dir() or not os.access(folder, os.W_OK):
+        raise FileMistake(
+            f"cannot write {path}",
+            where=Where(path),
+            wanted="a file in a folder that exists and may be written",
+            did="nothing was sent to it",
+            hint=f"another name, or make the folder {folder} first",
+        )
 
 
 def _blank(args: argparse.Namespace, desk: Desk) -> int:

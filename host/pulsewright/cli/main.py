@@ -47,7 +47,9 @@ def main(argv: Sequence[str] | None = None) -> int:
     words = list(sys.argv[1:] if argv is None else argv)
     desk = Desk("--json" in words)
     try:
-        args = make_parser().parse_args(words)
+        args, unknown = make_parser().parse_known_args(words)
+        if unknown:
+            args.parser.not_known(unknown)
         desk.as_json = args.json
         return int(args.handler(args, desk))
     except SystemExit as left:  # argparse after --help and --version

@@ -26,6 +26,7 @@ def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tupl
     from pulsewright.link.open import open_rig
     from pulsewright.rig.file import load_rig
 
+    _look_for_a_slip(name)
     rig_file = load_rig()
     rig = open_rig(name, chip_name)
     try:
@@ -34,3 +35,19 @@ def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tupl
         yield rig_file, rig
     finally:
         rig.close()
+
+
+def _look_for_a_slip(name: str) -> None:
+    """UsageMistake for a name that is nearly "virtual" and no path: no port is meant by it."""
+    import difflib
+    from pathlib import Path
+
+    word, colon, bench = name.partition(":")
+    near = difflib.get_close_matches(word.lower(), ["virtual"], n=1, cutoff=0.75)
+    if near and word != "virtual" and "/" not in word and not Path(name).exists():
+        raise UsageMistake(
+            f"no rig is called {name}",
+            wanted="a serial port, a pySerial URL, virtual, or virtual:BENCH",
+            did="nothing: no port was opened",
+            hint=f"--rig virtual{colon}{bench}",
+        )

@@ -88,6 +88,22 @@ def _needs_erase(ctx: JobContext, needed: Change, fitted: Fitted, have: bytes) -
     )
 
 
+def _keep_outside(ctx: JobContext, have: bytes) -> None:
+    """Difference where a range was named and the erase of the whole chip would clear words outside it."""
+    definition = ctx.definition
+    blank = definition.blank
+    outside = sum(word != blank for word in (*have[: ctx.first], *have[ctx.last + 1 :]))
+    if outside:
+        raise Difference(
+            f"the erase that this burn needs would also clear {show_count(outside, 'word')} outside {ctx.span()}",
+            where=Where(definition.path, key="erase"),
+            wanted="a chip that is blank outside the range",
+            got=f"{show_count(outside, 'word')} that are not {ctx.hex(blank)}",
+            did="VCC off; nothing was written",
+            hint="read the chip into a file, put the new words into it, burn that without --range",
+        )
+
+
 def _burn_words(ctx: JobContext, fitted: Fitted, to_write: bytes) -> tuple[str, dict[str, object]]:
     """The burn sequence over the words marked; an error says how many words were done before it."""
     first, last = ctx.first, ctx.last
@@ -110,7 +126,6 @@ def _burn_words(ctx: JobContext, fitted: Fitted, to_write: bytes) -> tuple[str, 
     if done.words:
         at = show_address(done.worst, ctx.definition.words)
         line += f"; most for one word: {done.worst_tries} of {most} at {at}"
-    ctx.progress.fact(line)
     return line, {"pulses": done.facts(), "data_sha256": sequence.data_sha256}
 
 
@@ -128,12 +143,14 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     looked, facts, tail = save_first(ctx, first, last)
     have = _laid(looked.data, first, definition.words, definition.blank)
     needed = change(have, fitted.data, fitted.used)
-    lines: list[str] = []
+    lines: list[str] = []  # what the erase did, behind what the burn did: the first line is the job's result
     facts |= {"skipped_words": needed.equal, "erased": False}
     if needed.impossible and method.bits == "1 to 0":
         if not ctx.options.erase:
             raise _needs_erase(ctx, needed, fitted, have)
+        _keep_outside(ctx, have)
         line, more = erase_whole(ctx)
+        ctx.progress.fact(line)
         lost = sum(1 for word, used in zip(have, fitted.used, strict=True) if not used and word != definition.blank)
         lines.append(line)
         if lost:
@@ -146,12 +163,12 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     if needed.differing:
         line, more = _burn_words(ctx, fitted, needed.to_write)
         facts |= more
-        lines.append(f"{line}; {show_count(needed.equal, 'word')} right already")
+        burnt = f"{line}; {show_count(needed.equal, 'word')} right already"
     else:
-        lines.append(f"nothing to burn: {show_count(needed.used, 'word')} right already")
+        burnt = f"nothing to burn: {show_count(needed.used, 'word')} right already"
     verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault, proven=True)
     return JobResult(
-        (*lines, *verified, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
+        (burnt, *verified, *lines, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
     )
 
 

@@ -92,10 +92,12 @@ def check_consent(
         return "given by --accept-voltages"
     if definition.digest in remembered():
         return "remembered"
-    facts = [*voltages(definition), "because:", *(f"  {reason}" for reason in reasons)]
-    if ask is not None and ask([f"{definition.name}: this job uses", *facts]):
-        remember(definition)
-        return "given at the prompt"
+    facts = [*voltages(definition), "because:", *_grouped(reasons)]
+    if ask is not None:
+        if ask([f"{definition.name}: this job uses", *facts]):
+            remember(definition)
+            return "given at the prompt"
+        facts = []  # the operator has just seen them
     raise ConsentNeeded(
         f"nobody has agreed yet to the voltages of {definition.name}",
         where=Where(definition.path),
@@ -103,6 +105,18 @@ def check_consent(
         facts=[*facts, f"hash {definition.digest}"],
         hint=f"compare each line with a data sheet, then --accept-voltages {definition.digest}",
     )
+
+
+def _grouped(reasons: list[str]) -> list[str]:
+    """The reasons as few lines: each mark once, with all that bears it."""
+    import textwrap
+
+    groups: dict[str, list[str]] = {}
+    for reason in reasons:
+        name, colon, mark = reason.partition(": ")
+        groups.setdefault(mark if colon else name, []).extend([name] if colon else [])
+    lines = [f"{mark}: {', '.join(names)}" if names else mark for mark, names in groups.items()]
+    return [row for line in lines for row in textwrap.wrap(line, 110, initial_indent="  ", subsequent_indent="    ")]
 
 
 def check_vouch(definition: Definition, raises: bool, vouch: str) -> None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from pulsewright.chip.model import Definition
-from pulsewright.errors import UsageMistake, Where
+from pulsewright.errors import FileMistake, UsageMistake, Where
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.plan import tries_of
@@ -44,7 +44,11 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
     facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
     if not ctx.options.save:
         return result, facts, []
-    path = save_dump(ctx.definition, result.data, first)
+    try:
+        path = save_dump(ctx.definition, result.data, first)
+    except FileMistake as mistake:
+        mistake.did = "VCC off; the chip is as it was"
+        raise
     ctx.progress.fact(f"saved to {path}")
     facts["saved"] = str(path)
     if ctx.record is not None:
@@ -66,7 +70,6 @@ def erase_whole(ctx: JobContext) -> tuple[str, dict[str, object]]:
     pulses = result.tries
     word = ctx.hex(definition.blank)
     line = f"erased in {pulses} of {most} pulses; {definition.words} words read {word} at VCC {show_mv(vcc_mv)}"
-    ctx.progress.fact(line)
     return line, {
         **id_facts(definition, result),
         "erase_pulses": pulses,

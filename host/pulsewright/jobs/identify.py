@@ -8,7 +8,7 @@ from pulsewright.link.results import RunResult
 from pulsewright.sequence.compile import compile_identify
 from pulsewright.units import show_address
 
-CANNOT_TELL = "the seating check cannot tell about contacts of address lines, and of others than D, CE, OE, GND and VCC"
+CANNOT_TELL = "the seating check looks at D, CE, OE, GND and VCC: it cannot tell whether the other pins have contact"
 
 
 def matched_row(definition: Definition, result: RunResult) -> MakerRow | None:

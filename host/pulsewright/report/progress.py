@@ -98,7 +98,7 @@ class LiveProgress:
     def link(self, progress: LinkProgress) -> None:
         """The next refresh shows it."""
         if progress.stage == "run":
-            self._done = progress.words
+            self._done = min(progress.words, self._words)  # blocks count words that are skipped in them, too
 
     def fact(self, text: str) -> None:
         """A line above the live one."""

@@ -256,6 +256,13 @@ _HINT = "`bench new` makes a fresh one"
 
 def _parse(path: Path) -> dict[str, Any]:
     """The file's object with every key of the right kind; all problems in one error."""
+    if not path.exists():
+        raise FileMistake(
+            f"there is no bench {path}",
+            where=Where(str(path)),
+            wanted="a file that `bench new` made",
+            hint=f"pulsewright bench new {path} --chip CHIP",
+        )
     try:
         kept = json.loads(read_whole(path))
     except UnicodeDecodeError as error:

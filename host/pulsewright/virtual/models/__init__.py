@@ -31,8 +31,13 @@ def make_model(name: str) -> ChipModel:
     make = MODELS.get(name.lower())
     if make is None:
         near = difflib.get_close_matches(name.lower(), MODELS, n=1)
-        hint = f"did you mean {near[0]}?" if near else "give a model of your own with --model FILE"
-        raise UsageMistake(f"no chip model for {name}", wanted=", ".join(MODELS), got=name, hint=hint)
+        own = f"`bench new BENCH --chip {name} --model FILE` with a model of your own"
+        raise UsageMistake(
+            f"the virtual rig has no model of the chip {name}",
+            wanted=f"{', '.join(MODELS)}, or a bench with a model of your own",
+            got=name,
+            hint=f"did you mean {near[0]}? else {own}" if near else own,
+        )
     return make()
 
 
