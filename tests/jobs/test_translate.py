@@ -119,7 +119,7 @@ def test_a_wrong_id_shows_both() -> None:
     error = error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.WRONG_ID, id_bytes=b"\x01\x02"))
     assert isinstance(error, IdentityRefused)
     assert error.got == "01 at 0000, 02 at 0001"
-    assert error.wanted == "DA at 0000 (manufacturer), 08 at 0001 (device): DA"
+    assert error.wanted == "DA at 0000 (manufacturer), 08 at 0001 (device): maker row DA"
 
 
 def test_no_id_mode_says_what_has_the_same_look() -> None:

@@ -194,7 +194,7 @@ def cells_text(cells: Many[IdCell], words: int) -> str:
 def wanted_ids(definition: Definition) -> list[str]:
     """The IDs that would be accepted, with their makers."""
     rows = (definition.row,) if definition.row is not None else definition.makers
-    return [f"{cells_text(cells, definition.words)}: {row.maker}" for row in rows for cells in row.ids]
+    return [f"{cells_text(cells, definition.words)}: maker row {row.maker}" for row in rows for cells in row.ids]
 
 
 def _id_text(story: Story) -> str:
@@ -275,7 +275,7 @@ def _program(story: Story) -> PulsewrightError:
         wanted=wanted,
         got=story.word(story.fault.sample),
         did=MADE_SAFE,
-        hint="erase and burn again; a word that stays so is dead",
+        hint="the same burn again: a word that stays so is dead; where others fail then, VPP may sag under load",
     )
 
 
