@@ -52,6 +52,8 @@ class FakeRig:
         self.touched: dict[int, int] = {}
         self.runs = 0
         self.deaf_above: int | None = None  # a rate above which nothing gets through
+        self.mute_above: int | None = None  # a rate above which the host hears only noise
+        self.stubborn = False  # does not stop when told to
         self.reset_at = _NEVER
         self.host_baud: int | None = None
         self._rx: deque[tuple[int, int]] = deque()
@@ -104,7 +106,8 @@ class FakeRig:
             self.t = max(self.t, at)
             if at == tx:
                 byte = self._tx.popleft()[1]
-                self._out.append(byte if self.host_baud in (None, self.baud) else (byte ^ 0x5A) | 1)
+                heard = self.host_baud in (None, self.baud) and self.baud <= (self.mute_above or self.baud)
+                self._out.append(byte if heard else (byte ^ 0x5A) | 1)
                 if not self._tx and self._next_baud:
                     self.baud, self._next_baud = self._next_baud, 0
                     self._rate_deadline = self.t + 500 * MS if self.baud != HELLO_BAUD else _NEVER
@@ -340,7 +343,7 @@ class FakeRig:
         self._at = None
 
     def _abort(self) -> None:
-        if self.state is not State.RUNNING:
+        if self.state is not State.RUNNING or self.stubborn:
             return
         second, self._making_safe = self._making_safe, True
         self._work_at = self.t if second else self.t + self.self_timed_ticks

@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from itertools import pairwise, product
 
 import pytest
 
 from pulsewright.errors import Interrupted, LinkFault, OtherFirmware, RigFault, RigRestarted
-from pulsewright.link.faulty import Harm, Way
+from pulsewright.link.faulty import Harm, Kind, Way
+from pulsewright.link.line import Line
 from pulsewright.link.results import Block, LinkProgress
 from pulsewright.link.session import Session
-from pulsewright.wire.tables import Fault, Flow, Outcome, State
+from pulsewright.wire.frames import Message
+from pulsewright.wire.tables import Fault, Flow, Frame, Outcome, State
 from tests.link.fake_rig import MS, FakeRig, fault
 from tests.link.kit import IMAGE, WORDS, Desk, image_blocks, sequence
 
@@ -160,6 +163,39 @@ def test_a_rate_that_does_not_hold_is_left(holds: int, baud: int) -> None:
     desk = Desk(rig)
     assert desk.session.connect().baud == baud
     assert desk.session.run(sequence(Flow.READ)).data == b"\xff" * WORDS
+
+
+def test_a_rate_at_which_only_the_rig_hears_is_left() -> None:
+    """A rig that hears the host at the new rate stays there; it is brought back by a break, and the session goes on."""
+    rig = FakeRig()
+    rig.mute_above = 500_000
+    desk = Desk(rig)
+    assert desk.session.connect().baud == 500_000
+    assert desk.session.run(sequence(Flow.READ)).data == b"\xff" * WORDS
+
+
+def test_every_heartbeat_is_answered_at_once(monkeypatch: pytest.MonkeyPatch) -> None:
+    """The next frame after a heartbeat is a keep-alive with its index, before the session waits for anything else."""
+    log: list[Message] = []
+    send, receive = Line.send, Line.receive
+
+    def sending(line: Line, message: Message, *, again: bool = False) -> None:
+        log.append(message)
+        send(line, message, again=again)
+
+    def receiving(line: Line, until_us: int) -> Message | None:
+        message = receive(line, until_us)
+        log.extend([message] if message else [])
+        return message
+
+    monkeypatch.setattr(Line, "send", sending)
+    monkeypatch.setattr(Line, "receive", receiving)
+    desk = Desk(FakeRig(word_ticks=100 * MS))
+    desk.session.connect()
+    desk.session.run(sequence(Flow.WRITE), image_blocks())
+    pairs = [(now, then) for now, then in pairwise(log) if now.kind is Frame.HEARTBEAT]
+    assert len(pairs) > 10
+    assert all(then.kind is Frame.KEEP_ALIVE and then.index == now.index for now, then in pairs)
 
 
 def test_a_closed_session_leaves_the_rig_at_the_rate_of_greetings() -> None:
@@ -314,6 +350,18 @@ def test_a_second_interrupt_skips_the_wait() -> None:
     assert at + 400_000 <= desk.line.now_us() < at + 600_000
 
 
+def test_a_rig_that_will_not_stop_is_kept_alive_no_longer() -> None:
+    """After some seconds of telling it, the session gives it up to its dead-man: LinkFault, and nothing stands."""
+    desk = Desk(FakeRig(word_ticks=60 * MS), interrupts=[200_000])
+    desk.rig.stubborn = True
+    desk.session.connect()
+    with pytest.raises(LinkFault) as caught:
+        desk.session.run(sequence(Flow.WRITE), image_blocks())
+    assert "same boot number" in caught.value.did
+    assert "dead man" in caught.value.facts[-1]
+    assert not desk.rig.powered
+
+
 def _stopped_late(harms: list[Harm], marks: list[int]) -> tuple[Desk, int]:
     """A write job with slow words, stopped 200 ms after it began; `marks` gets the bytes sent up to the interrupt."""
     desk = Desk(FakeRig(word_ticks=60 * MS, self_timed_ticks=1_000 * MS), harms)
@@ -334,11 +382,12 @@ def _stopped_late(harms: list[Harm], marks: list[int]) -> tuple[Desk, int]:
 
 
 def test_a_lost_abort_is_sent_again() -> None:
-    """Whichever byte of the abort is lost, the rig is stopped all the same, and its self-timed wait is not skipped."""
+    """Whichever byte of the abort is harmed, the rig is stopped, and its self-timed wait is not skipped."""
     marks: list[int] = []
     _stopped_late([], marks)
-    for lost in range(marks[0], marks[0] + 40):
-        desk, at = _stopped_late([Harm("to rig", lost, "drop")], [])
+    each: tuple[Kind, ...] = ("drop", "flip", "double")
+    for lost, kind in product(range(marks[0], marks[0] + 40), each):
+        desk, at = _stopped_late([Harm("to rig", lost, kind)], [])
         assert not desk.rig.powered
         assert at + 1_000_000 <= desk.line.now_us() < at + 1_500_000
         assert len(desk.rig.touched) < WORDS

@@ -30,6 +30,7 @@ class _Run:
     window: Window
     permit: int
     aborts: int = 0
+    first_abort_us: int = 0
     last_abort_us: int = 0
 
 
@@ -167,12 +168,12 @@ class Session:
         return counted
 
     def _beat(self, run: _Run, message: Message) -> None:
+        now_us = self._transport.now_us()
         if not run.aborts:
             self._send(run.window.beat(), again=True)
-        elif (
-            message.fields["state"] == State.RUNNING
-            and self._transport.now_us() - run.last_abort_us >= _REPEAT_ABORT_US
-        ):
+        elif message.fields["state"] == State.RUNNING and now_us - run.last_abort_us >= _REPEAT_ABORT_US:
+            if now_us - run.first_abort_us >= self._line.timing.give_up_us:
+                raise Silent  # it will not stop: keep it alive no longer, and its dead-man ends it
             self._abort(run)
         self._tell("run", run.window)
 
@@ -202,6 +203,7 @@ class Session:
     def _abort(self, run: _Run) -> None:
         self._line.abort(run.permit, run.exchange.message.index)
         run.last_abort_us = self._transport.now_us()
+        run.first_abort_us = run.first_abort_us or run.last_abort_us
 
     # ---- endings --------------------------------------------------------------------------------------------------
 
