@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from dataclasses import replace
 
 import pytest
@@ -237,3 +237,22 @@ def test_a_fault_that_was_latched_is_told_once(burn: Sequence) -> None:
     assert facts.earlier is not None
     assert facts.earlier.name == "dead_man"
     assert Session(InProcess(desk.rig)).connect().earlier is None
+
+
+def test_a_fault_on_this_end_stops_the_rig_first() -> None:
+    """Blocks that fail to come, or a progress view that breaks: the rig is safe before the error goes on."""
+    desk = Desk()
+    sequence = compile_burn(load(PART), load_rig(), 0, 0xFFFF, "")
+
+    def failing() -> Iterator[Block]:
+        for at in range(0, 0x800, 0x100):
+            yield Block(at, 0x100, None, bytes(0x100))
+        raise OSError("the image went away")
+
+    desk.session.connect()
+    begun_us = desk.line.now_us()
+    with pytest.raises(OSError, match="went away"):
+        desk.session.run(sequence, failing())
+    assert desk.rig.socket.socket_vcc_mv(desk.rig.t) < 500
+    assert desk.rig.socket.mv(desk.rig.t, 24) < 800
+    assert desk.line.now_us() - begun_us < 1_000_000  # the abort, not the wait for a dead-man on top of eight blocks

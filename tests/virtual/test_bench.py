@@ -292,7 +292,7 @@ def test_a_new_bench_replaces_a_bench_and_nothing_else(tmp_path: Path) -> None:
 
 def test_no_bench_is_a_file_mistake(tmp_path: Path) -> None:
     """A path that leads nowhere is said plainly."""
-    with pytest.raises(FileMistake, match="cannot read"):
+    with pytest.raises(FileMistake, match="there is no bench"):
         Bench.load(tmp_path / "none.bench")
 
 

@@ -7,8 +7,9 @@ from typing import Any
 
 import pytest
 
+from pulsewright.virtual.board import Board
 from pulsewright.wire.ops import ins
-from pulsewright.wire.tables import Fault, Frame, Op, Outcome
+from pulsewright.wire.tables import Fault, Frame, Identity, Op, Outcome
 from tests.virtual.kit import (
     A9,
     ID,
@@ -59,6 +60,25 @@ def test_a_wrong_id_drops_the_level_before_anything_is_sent() -> None:
     answered = next(at for at, message in zip(host.heard_at, host.heard, strict=True)
                     if message.kind is Frame.ANSWER and message.index == host.index)
     assert answered > fell + MS
+
+
+@pytest.mark.parametrize("read", [(ID[0], ID[1] ^ 1), (ID[0] ^ 0x80, ID[1])])
+def test_an_id_that_is_half_right_is_wrong(read: tuple[int, int]) -> None:
+    """Every cell of an alternative must hold: one right byte opens nothing."""
+    chip = PlainChip()
+    chip.id = read
+    end, _ = identified(chip)
+    assert (end.outcome, end.fault["code"], end.id) == (Outcome.TRIPPED, Fault.WRONG_ID, bytes(read))
+
+
+@pytest.mark.parametrize("identity", [Identity.NONE, Identity.VOUCHED_NONE])
+def test_a_part_without_id_is_seated_before_its_gate_opens(identity: Identity) -> None:
+    """Where no ID is wanted the seating check is all there is, and the gate wants it."""
+    host = Host(board=Board(button=True))
+    code = build([*power_up(), ins(Op.GATE, wait=8), ins(Op.END)])
+    none: dict[str, Any] = {"alternatives": (), "identify_switch": 0xFF, "identify_step": 0, "identify_ceiling": 0}
+    end = host.run(code, permit_for(code, identity=identity, raised=(), **none))
+    assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.NOT_SEATED)
 
 
 def test_a_chip_without_id_mode_is_refused_whatever_its_cells_hold() -> None:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
+from contextlib import suppress
 from dataclasses import dataclass, replace
 
 from pulsewright.errors import Interrupted, LinkFault, RigFault, RigRestarted
@@ -112,7 +113,7 @@ class Session:
             window = self._window(sequence, header, blocks)
             exchange = self._commands.begin(Frame.RUN, self._permit_number)
             run = _Run(exchange, window, self._permit_number)
-            self._work(run)
+            self._work_or_abort(run)
             stage, running = "asking for the rig's state", False
             return self._finish(run, sequence.kind)
         except Silent:
@@ -135,6 +136,21 @@ class Session:
             self._accepted("the sequence", self._commands.ask(Frame.LOAD, offset=at, code=code))
             self._tell("load", None)
         self._accepted("the seal", self._commands.ask(Frame.SEAL))
+
+    def _work_or_abort(self, run: _Run) -> None:
+        """`_work`; where anything but the link itself fails on this end, the rig is stopped before that goes on."""
+        try:
+            self._work(run)
+        except (Silent, LinkFault):
+            raise
+        except BaseException:
+            with suppress(Silent, LinkFault):
+                self._abort(run)
+                run.aborts = 2
+                self._on_progress = None
+                self._interrupted = lambda: 2
+                self._work(run)
+            raise
 
     def _work(self, run: _Run) -> None:
         """Until the closing answer: blocks out, replies in, heartbeats answered, an interrupt passed on."""
