@@ -12,6 +12,7 @@ from pulsewright.jobs.context import JobContext, Options
 from pulsewright.link.line import RigCounters
 from pulsewright.link.results import Block, BlockDone, Counters, RigFacts, RunResult, Trouble
 from pulsewright.rig.file import load_rig
+from pulsewright.rig.model import Rig
 from pulsewright.sequence.types import Sequence
 from pulsewright.wire.frames import Hello
 from pulsewright.wire.tables import Fail, Fault, Outcome
@@ -23,6 +24,32 @@ ID = b"\xda\x08"
 def noise(seed: int = 1) -> bytearray:
     """Contents that hold every byte value."""
     return bytearray((at * 31 + (at >> 8) * seed) & 0xFF for at in range(WORDS))
+
+
+def facts_of(rig: Rig, hello: Hello) -> RigFacts:
+    """What a board that fits a rig file tells of itself."""
+    nominal = tuple(
+        tuple(rail.scaling.count_at_least(step.mv) for step in rail.steps) for rail in (rig.vcc, rig.raised)
+    )
+    return RigFacts(
+        hello=hello,
+        board="fake",
+        window_blocks=4,
+        block_bytes=512,
+        program_bytes=1024,
+        driven_from=0,
+        off_below=0,
+        clear_above_vcc=0,
+        fall_limit_ticks=0,
+        off_limit_ticks=0,
+        lines=32,
+        data_lines=rig.site.data_lines,
+        switches=tuple(switch.position for switch in rig.switches),
+        vcc_switches=tuple(switch.position for switch in rig.vcc_switches),
+        top_baud=1_000_000,
+        nominal=nominal,
+        ceilings=tuple(switch.scaling.count_at_most(switch.ceiling_mv) for switch in rig.switches),
+    )
 
 
 @dataclass
@@ -42,7 +69,7 @@ class FakeSession:
     def facts(self) -> RigFacts:
         """A board that needs no telling."""
         hello = Hello(1, 4, 512, 0xA4572FA2, 7, 0, 0, 0, 0, 0, 0)
-        return RigFacts(hello, "fake", 4, 512, 1024, 0, 0, 0, 0, 0, 36, (), (), (), 1_000_000, (), ())
+        return facts_of(load_rig(), hello)
 
     def run(self, sequence: Sequence, blocks: Iterable[Block] = ()) -> RunResult:
         """What a chip would have answered."""

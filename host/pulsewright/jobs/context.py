@@ -8,6 +8,7 @@ from typing import Protocol
 
 from pulsewright.chip.model import Definition
 from pulsewright.errors import FileMistake, Interrupted, ProofRefused, PulsewrightError, UsageMistake
+from pulsewright.jobs.board import check_board
 from pulsewright.jobs.consent import check_consent, check_vouch
 from pulsewright.jobs.record import Record
 from pulsewright.jobs.story import MADE_SAFE, readings_of
@@ -154,6 +155,7 @@ class JobContext:
             self.definition, in_process=self.open_rig.in_process, accepted=self.options.accepted, ask=self.ask
         )
         rig = self.session.facts
+        check_board(self.rig, rig)
         record.content["rig"] = {
             "file": self.rig.path,
             "name": self.rig.name,
