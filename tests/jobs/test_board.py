@@ -32,7 +32,7 @@ def test_a_board_that_fits_is_accepted() -> None:
         ({"switches": (1, 3, 25, 24, 26)}, "raised switches at positions"),
         ({"vcc_switches": (28, 30, 32)}, "VCC switches at positions"),
         ({"nominal": (FITS.nominal[0], tuple(c * 9 // 10 for c in FITS.nominal[1]))}, "rail RAISED step 1"),
-        ({"nominal": (FITS.nominal[0][:4], FITS.nominal[1])}, "VCC step 4: the rig file says 5.25 V, the board nothing"),
+        ({"nominal": (FITS.nominal[0][:4], FITS.nominal[1])}, "VCC step 4: the rig file says 5.25 V, the board none"),
         ({"ceilings": (*FITS.ceilings[:4], 879)}, "ceiling at position 26: the rig file says 14.5 V"),
     ],
 )

@@ -51,7 +51,7 @@ def _rail(rail: Rail, nominal: Sequence[Sequence[int]]) -> Iterator[str]:
     for step in rail.steps:
         there = counts[step.number] if step.number < len(counts) else None
         if there is None or abs(there - rail.scaling.count_at_most(step.mv)) > _ROUNDING:
-            told = "nothing" if there is None else f"count {there}, {show_mv(rail.scaling.mv(there))}"
+            told = "none" if there is None else f"count {there}, {show_mv(rail.scaling.mv(there))}"
             yield f"rail {rail.name} step {step.number}: the rig file says {show_mv(step.mv)}, the board {told}"
 
 
