@@ -122,6 +122,7 @@ def read_work() -> Items:
 def burn_work() -> Items:
     """12 V at OE measured once, then each word pulsed and read back, primitive by primitive."""
     return [
+        measure(1, 406, 422),
         ins(Op.SWITCHES, on=4),
         ins(Op.WAIT, ticks=80),
         measure(18, 406, 422),

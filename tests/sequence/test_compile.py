@@ -22,7 +22,7 @@ from pulsewright.sequence.compile import (
 )
 from pulsewright.sequence.types import Sequence
 from pulsewright.wire.ops import Instruction, decode_program
-from pulsewright.wire.tables import PROGRAM_BYTES, Op
+from pulsewright.wire.tables import PROGRAM_BYTES, Channel, Op
 
 US = 16  # ticks
 
@@ -173,3 +173,19 @@ def test_other_package_is_refused(definition: Definition, rig: Rig) -> None:
     """A package the site does not take is refused by name."""
     with pytest.raises(CannotMake, match="DIP-40"):
         compile_identify(replace(definition, package="DIP-40"), rig)
+
+
+def test_a_rail_that_stays_is_measured_anew_in_the_window_it_is_used_in(definition: Definition, rig: Rig) -> None:
+    """12 V serves identify and program: the burn measures the rail again, for the monitor to hold it to VPP.program."""
+    windows = [
+        (measure.args["low"], measure.args["high"])
+        for measure in ops_of(compile_burn(definition, rig, 0, 7, ""), Op.MEASURE)
+        if measure.args["channel"] == Channel.RAISED_RAIL
+    ]
+    scaling = rig.raised.scaling
+
+    def counts(name: str) -> tuple[int, int]:
+        step = definition.supplies[name]
+        return scaling.count_at_least(step.min_mv), scaling.count_at_most(step.max_mv)
+
+    assert windows == [counts("VH.identify"), counts("VPP.program")]

@@ -228,6 +228,10 @@ CASES: list[tuple[str, str, str, Bend, str]] = [
     ("A9 unmeasured at the gate", "H8", "read", drop(Op.MEASURE, 8), "not measured at its position"),
     ("A9 unmeasured before the pulse", "H8", "erase", drop(Op.MEASURE, 11), "never measured at its position"),
     ("OE in a wide window", "H8", "burn", set_(Op.MEASURE, -1, high=430), "a window that no supply has"),
+    ("rail only in the ID's window", "H8", "burn", drop(Op.MEASURE, 9), "in another window than VPP.program's"),
+    ("VCC measured on its way", "H8", "erase", set_(Op.WAIT, -1, ticks=5 * MS), "VCC is measured before it has"),
+    ("rail measured on its way", "H8", "erase", set_(Op.WAIT, -9, ticks=24 * MS), "rail is measured before it has"),
+    ("OE measured on its way", "H8", "erase", set_(Op.WAIT, -8, ticks=70), "switch 2 is measured before it has"),
     # H11: nothing above VCC
     ("driven without VCC", "H11", "read", put(Op.RANGE, 0, ins(Op.HIGH, how=1)), "H is driven while VCC is low"),
     ("driven into 3.75 V", "H11", "erase", drop(Op.HIGH, 1), "VCC moves below what driven lines need"),

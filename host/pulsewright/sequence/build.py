@@ -29,6 +29,8 @@ class PinState:
     switches: int = 0
     vcc: RailStep | None = None
     raised: RailStep | None = None
+    raised_low: int = 0  # counts of the window in which the raised rail was measured last
+    raised_high: int = 0
     high_driven: bool = False
     mode: str = ""
 

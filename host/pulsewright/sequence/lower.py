@@ -61,20 +61,21 @@ def move_vcc(b: Builder, step: SupplyStep, rail_step: RailStep | None = None) ->
 
 
 def move_raised_rail(b: Builder, wanted: dict[str, SupplyStep]) -> None:
-    """The raised rail to the step that serves these pins, every switch open, settled and measured."""
+    """The raised rail to the step that serves these pins, settled; measured in the window it is to be held in."""
     target = choose_raised(b.definition, b.rig, wanted)
-    if b.state.raised == target:
-        return
-    open_switches(b, 0)
-    b.emit(Op.RAIL, rail=Rail.RAISED, step=target.number)
-    b.edge(b.rig.raised.settle_ps)
-    b.wait(0)
     scaling = b.rig.raised.scaling
     low = scaling.count_at_least(max(step.min_mv for step in wanted.values()))
     high = scaling.count_at_most(min(step.max_mv for step in wanted.values()))
+    if b.state.raised == target and low <= b.state.raised_low and b.state.raised_high <= high:
+        return
+    open_switches(b, 0)
+    if b.state.raised != target:
+        b.emit(Op.RAIL, rail=Rail.RAISED, step=target.number)
+        b.edge(b.rig.raised.settle_ps)
+        b.wait(0)
     limit = ticks(_MEASURE_LIMIT_PS, Rounding.AT_LEAST)
     b.emit(Op.MEASURE, channel=Channel.RAISED_RAIL, low=low, high=high, limit=limit)
-    b.state.raised = target
+    b.state.raised, b.state.raised_low, b.state.raised_high = target, low, high
 
 
 def measure_raised(b: Builder, wanted: dict[str, SupplyStep]) -> None:

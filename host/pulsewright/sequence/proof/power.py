@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Final
 
+from pulsewright.sequence.proof.modes import Raised
 from pulsewright.sequence.proof.state import (
     ADDRESS,
     BIAS,
@@ -12,9 +13,12 @@ from pulsewright.sequence.proof.state import (
     HIGH,
     LOW,
     OFF,
+    ON,
     PULSE,
+    RAIL_MOVED,
     RELEASED,
     VCC,
+    VCC_MOVED,
     Clocks,
     State,
     edge,
@@ -22,6 +26,7 @@ from pulsewright.sequence.proof.state import (
     started,
 )
 from pulsewright.sequence.proof.tables import SEAT_OFF, SEAT_POSITION, SEAT_POWER, SEAT_PROBE, Tables
+from pulsewright.sequence.proof.timing import at_least
 from pulsewright.units import show_mv
 from pulsewright.wire.ops import Instruction
 from pulsewright.wire.tables import Bias, Channel, Group, Rail, Range
@@ -62,14 +67,14 @@ def rail(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
                 f"from {show_mv(t.rig.driven_from_mv)}",
                 step,
             )
-        return state._replace(vcc=step, vcc_good=False), edge(clocks)
+        return state._replace(vcc=step, vcc_good=False), edge(clocks, VCC_MOVED)
     if not t.need(ins.args["rail"] == Rail.RAISED, "H3", "a rail that is not known", "", ins.args["rail"]):
         return state, clocks
     t.need(not state.on, "H4", "the raised rail moves with switches closed", 0, f"{state.on:b}")
     if step:
         t.need(state.range == Range.FULL and state.vcc_good, "H4", "the raised rail rises before VCC stands")
         _raised_step(t, state, step)
-    return state._replace(rail=step, rail_good=False, positions_good=0), edge(clocks)
+    return state._replace(rail=step, rail_window=None, positions=()), edge(clocks, RAIL_MOVED)
 
 
 def _raised_step(t: Tables, state: State, step: int) -> None:
@@ -100,7 +105,7 @@ def range_(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     elif t.need(which == Range.FULL, "H1", "a range that is not known", "", which):
         t.need(state.range == Range.PROBE and bool(state.facts & SEAT_PROBE), "H1",
                "full VCC before it was measured through the probe resistor")  # fmt: skip
-    return state._replace(range=min(which, 2), vcc_good=False), edge(clocks)
+    return state._replace(range=min(which, 2), vcc_good=False), edge(clocks, VCC_MOVED)
 
 
 def high(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
@@ -142,9 +147,9 @@ def measure(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result
     if channel == Channel.SOCKET_VCC:
         return _measure_vcc(t, state, clocks, low, high_)
     if channel == Channel.RAISED_RAIL:
-        return _measure_rail(t, state, low, high_), clocks
+        return _measure_rail(t, state, clocks, low, high_), clocks
     if channel >= Channel.POSITION:
-        return _measure_position(t, state, channel - Channel.POSITION, low, high_), clocks
+        return _measure_position(t, state, clocks, channel - Channel.POSITION, low, high_), clocks
     t.need(channel == Channel.VCC_RAIL, "H8", "a channel that is not known", "", channel)
     return state, clocks
 
@@ -161,10 +166,17 @@ def _measure_vcc(t: Tables, state: State, clocks: Clocks, low: int, high_: int) 
            f"{window.low}..{window.high}" if window else "a step of the permit", f"{low}..{high_}")  # fmt: skip
     if state.vcc_good:
         return state, clocks
+    _settled(t, clocks, VCC_MOVED, "VCC", at_least(t.rig.vcc.settle_ps))
     return state._replace(vcc_good=True), started(clocks, VCC)
 
 
-def _measure_rail(t: Tables, state: State, low: int, high_: int) -> State:
+def _settled(t: Tables, clocks: Clocks, since: int, what: str, need: int) -> None:
+    """A level on its way may lie in the window of the step it comes from, or pass through it."""
+    passed = elapsed(clocks, since)
+    t.need(passed >= need, "H8", f"{what} is measured before it has settled", f"{need} ticks", passed)
+
+
+def _measure_rail(t: Tables, state: State, clocks: Clocks, low: int, high_: int) -> State:
     scaling = t.rig.raised.scaling
     wants = [want for row in t.rows for want in row.raised.values() if state.rail in want.steps]
     inside = any(
@@ -174,10 +186,11 @@ def _measure_rail(t: Tables, state: State, low: int, high_: int) -> State:
     if not state.rail:
         return state
     t.need(inside, "H8", "the raised rail is measured against a window that no supply has", "", f"{low}..{high_}")
-    return state._replace(rail_good=True)
+    _settled(t, clocks, RAIL_MOVED, "the raised rail", at_least(t.rig.raised.settle_ps))
+    return state._replace(rail_window=(low, high_))
 
 
-def _measure_position(t: Tables, state: State, number: int, low: int, high_: int) -> State:
+def _measure_position(t: Tables, state: State, clocks: Clocks, number: int, low: int, high_: int) -> State:
     switch = next((one for one in t.rig.switches if one.number == number), None)
     if switch is None:
         t.find("H8", f"the rig has no raised switch {number} to measure at")
@@ -198,7 +211,22 @@ def _measure_position(t: Tables, state: State, number: int, low: int, high_: int
         "",
         f"{low}..{high_}",
     )
-    return state._replace(positions_good=state.positions_good | 1 << number)
+    _settled(t, clocks, ON, f"the level at switch {number}", at_least(switch.rise_ps))
+    return state._replace(positions=tuple(sorted({*state.positions, (number, low, high_)})))
+
+
+def measured_for(state: State, want: Raised) -> bool:
+    """Whether the level was measured at its position inside the window of this very supply."""
+    scaling = want.switch.scaling
+    least, most = scaling.count_at_least(want.supply.min_mv), scaling.count_at_most(want.top_mv)
+    return any(number == want.switch.number and least <= low and high <= most for number, low, high in state.positions)
+
+
+def rail_measured_for(t: Tables, state: State, want: Raised) -> bool:
+    """Whether the raised rail was measured inside the window of this supply: the monitor holds it where it was."""
+    scaling = t.rig.raised.scaling
+    least, most = scaling.count_at_least(want.supply.min_mv), scaling.count_at_most(want.top_mv)
+    return state.rail_window is not None and least <= state.rail_window[0] and state.rail_window[1] <= most
 
 
 # ---- what must hold whatever was done -------------------------------------------------------------------------------

@@ -5,6 +5,7 @@ from __future__ import annotations
 from pulsewright.sequence.proof.lines import held
 from pulsewright.sequence.proof.modes import Row, lines_fit
 from pulsewright.sequence.proof.permit import check_ceiling
+from pulsewright.sequence.proof.power import measured_for, rail_measured_for
 from pulsewright.sequence.proof.state import (
     ADDRESS,
     CONTROL,
@@ -62,7 +63,8 @@ def _may_close(t: Tables, state: State, on: int) -> None:
     t.need(
         state.range == Range.FULL and state.vcc_good, "H1", "a raised level before VCC stands measured in its window"
     )
-    t.need(state.rail != 0 and state.rail_good, "H8", "a raised level whose rail was not measured since it moved")
+    measured = state.rail != 0 and state.rail_window is not None
+    t.need(measured, "H8", "a raised level whose rail was not measured since it moved")
     if state.gate:
         allowed = {number for number, _ in t.permit.raised}
         wrong = [number for number in range(8) if on >> number & 1 and number not in allowed]
@@ -81,8 +83,11 @@ def standing(t: Tables, state: State) -> None:
     rows = t.matching(state)
     if state.gate and not state.must_drop:
         if t.need(bool(rows), "H3", "raised levels that no mode wants at these lines", *_sums(t, state)):
-            for number in rows[0].raised:
+            for number, want in rows[0].raised.items():
                 check_ceiling(t, rows[0], number, state.rail)
+                t.need(rail_measured_for(t, state, want), "H8",
+                       f"the raised rail was measured in another window than {want.supply.name}'s",
+                       want.sums[state.rail].wanted, state.rail_window)  # fmt: skip
         return
     row = t.identify_row
     if row is None or not t.need(
@@ -203,7 +208,9 @@ def gate(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
         number,
         f"{state.on:b}",
     )
-    t.need(bool(state.positions_good >> number & 1), "H8", "the identify level was not measured at its position")
+    want = None if t.identify_row is None else t.identify_row.raised.get(number)
+    measured = want is not None and measured_for(state, want)
+    t.need(measured, "H8", "the identify level was not measured at its position")
     rise = at_least(t.timing.rise_ps(state.on))
     t.need(
         elapsed(clocks, ON) >= rise, "H7", "the identify level has not risen yet", f"{rise} ticks", elapsed(clocks, ON)

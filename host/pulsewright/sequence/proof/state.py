@@ -21,7 +21,9 @@ VCC: Final = 6  # VCC measured in its window
 PULSE: Final = 7  # end of the last pulse
 DISABLED: Final = 8  # the lines left a pattern in which the chip may drive D
 BIAS: Final = 9  # a weak pull changed
-CLOCKS: Final = 10
+VCC_MOVED: Final = 10  # VCC at the socket was told to move
+RAIL_MOVED: Final = 11  # the raised rail was told to move
+CLOCKS: Final = 12
 
 LONG_AGO: Final = 1 << 40
 FRESH: Final = -1
@@ -96,8 +98,8 @@ class State(NamedTuple):
     vcc: int = 0
     vcc_good: bool = False
     rail: int = 0
-    rail_good: bool = False
-    positions_good: int = 0
+    rail_window: tuple[int, int] | None = None  # counts in which the raised rail was measured since it moved
+    positions: tuple[tuple[int, int, int], ...] = ()  # switch and counts of each level measured at its position since
     on: int = 0
     opened: int = 0  # raised switches that opened at OFF and may still fall
     data: str | int = RELEASED

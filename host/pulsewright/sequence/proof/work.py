@@ -6,6 +6,7 @@ from typing import Final
 
 from pulsewright.sequence.proof.algorithm import IMAGE, Pulse
 from pulsewright.sequence.proof.modes import Row
+from pulsewright.sequence.proof.power import measured_for
 from pulsewright.sequence.proof.state import (
     ADDRESS,
     BIAS,
@@ -229,8 +230,6 @@ def pulse(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     line, level = entry & 63, "H" if entry >> 6 == Level.HIGH else "L"
     t.need(entry >> 6 in (Level.LOW, Level.HIGH), "H7", "a pulse to no level")
     t.need(state.gate and not state.must_drop, "H2", "a pulse before the gate")
-    unmeasured = state.on & ~state.positions_good
-    t.need(not unmeasured, "H8", "a raised level was never measured at its position", 0, f"{unmeasured:b}")
     found = [
         one
         for one, at in zip(t.pulses, t.pulse_lines, strict=True)
@@ -239,6 +238,7 @@ def pulse(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     if t.need(bool(found), "H7", f"no step of the definition pulses line {line} to {level} in this mode",
               ", ".join(f"{one.pin} to {one.to} in {one.mode}" for one in t.pulses)):  # fmt: skip
         one = found[0]
+        _measured(t, state, one)
         _window(t, one, width, most)
         _data(t, state, one)
         _setups(t, state, clocks, one)
@@ -254,6 +254,12 @@ def pulse(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 
 def _with(levels: tuple[str, ...], line: int, level: str) -> tuple[str, ...]:
     return (*levels[:line], level, *levels[line + 1 :])
+
+
+def _measured(t: Tables, state: State, one: Pulse) -> None:
+    for want in next((row.raised for row in t.rows if row.name == one.mode), {}).values():
+        t.need(measured_for(state, want), "H8", "a raised level was never measured at its position",
+               f"{want.role} in the window of {want.supply.name}", state.positions)  # fmt: skip
 
 
 def _window(t: Tables, one: Pulse, width: int, most: int) -> None:
