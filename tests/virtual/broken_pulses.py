@@ -208,6 +208,20 @@ def between_levels(bus: Bus) -> None:
     pulse_with_a7(bus, 1_500)
 
 
+def too_many_for_a_word(bus: Bus) -> None:
+    """A 26th program pulse at one address."""
+    for _ in range(26):
+        bus.program(5, 0x0F)
+
+
+def too_many_erases(bus: Bus) -> None:
+    """A 21st erase pulse, VCC having been at 3.75 V between them."""
+    for _ in range(21):
+        bus.erase()
+        bus.power(3750)
+        bus.power(HIGH)
+
+
 PULSES: list[tuple[Callable[[Bus], None], set[str]]] = [
     (unknown_pulse, {"unknown pulse", "raised window"}),
     (erase_without_a9, {"unknown pulse"}),
@@ -215,7 +229,7 @@ PULSES: list[tuple[Callable[[Bus], None], set[str]]] = [
     (too_short, {"pulse width"}),
     (too_long, {"pulse width"}),
     (erase_too_long, {"pulse width"}),
-    (wrong_vcc, {"pulse vcc"}),
+    (wrong_vcc, {"pulse vcc", "raised vcc"}),
     (erase_data, {"pulse data"}),
     (erase_address, {"pulse address"}),
     (address_setup, {"address setup"}),
@@ -233,4 +247,6 @@ PULSES: list[tuple[Callable[[Bus], None], set[str]]] = [
     (not_driven, {"data not driven", "floating input"}),
     (floating, {"floating input"}),
     (between_levels, {"floating input"}),
+    (too_many_for_a_word, {"too many pulses"}),
+    (too_many_erases, {"too many pulses"}),
 ]

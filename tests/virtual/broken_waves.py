@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Callable
 
 from tests.virtual.waveform import (
+    A9,
     CE,
     HIGH,
     MS,
@@ -83,6 +84,15 @@ def vcc_step_under_raised(bus: Bus) -> None:
     """VCC moved from a step to another with a raised level standing."""
     bus.raise_to({OE: 12_000})
     bus.ramp({VCC: 3750, CE: 3750}, MS)
+
+
+def raised_at_low_vcc(bus: Bus) -> None:
+    """The identify level at VCC 3.75 V, with nothing pulsed."""
+    bus.power(3750)
+    bus.set({A9: 3750})
+    bus.raise_to({A9: 12_000})
+    bus.wait(2 * US)
+    bus.raise_to({A9: 3750})
 
 
 def too_steep(bus: Bus) -> None:
@@ -176,6 +186,7 @@ WAVES: list[tuple[Callable[[Bus], None], set[str]]] = [
     (left_above_vcc, {"above VCC"}),
     (oe_left_above_vcc, {"raised window"}),
     (raised_without_vcc, {"supply order"}),
+    (raised_at_low_vcc, {"raised vcc"}),
     (raised_beside_vcc, {"supply order"}),
     (vcc_down_first, {"supply order"}),
     (vcc_down_meanwhile, {"supply order"}),

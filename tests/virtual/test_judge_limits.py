@@ -82,6 +82,18 @@ def lowest_vcc(bus: Bus) -> None:
         bus.program(5, 0x0F)
 
 
+def most_pulses(bus: Bus) -> None:
+    """25 program pulses on each of two words, 20 erase pulses, and as many again after a power-down."""
+    for _ in range(2):
+        for word in (5, 6):
+            for _ in range(25):
+                bus.program(word, 0x0F)
+        for _ in range(20):
+            bus.erase()
+        bus.down()
+        bus.up()
+
+
 def lowest_high(bus: Bus) -> None:
     """A pulse with lines at just 2.0 V and just 0.8 V, CE at 0.8 V as well."""
     bus.set({A[0]: 2_000, A[1]: 800})
@@ -119,6 +131,7 @@ def quick_walk_in_a_verify(bus: Bus) -> None:
     [
         *(highest_vcc, lowest_level, highest_line, line_under_falling_vcc, whole_hold, whole_release, whole_setup),
         *(steepest_rise, quick_float, lowest_vcc, lowest_high, quick_read_after_power_down, quick_walk_in_a_verify),
+        most_pulses,
     ],
 )
 def test_the_limit_itself_is_allowed(wave: Callable[[Bus], None]) -> None:

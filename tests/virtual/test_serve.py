@@ -242,8 +242,7 @@ def test_a_port_closed_in_a_run_makes_the_chip_safe(tmp_path: Path) -> None:
         session.connect()
         sequence = compile_read(load(PART), load_rig(), 0, 4095)
         with pytest.raises(RuntimeError, match="the host dies"):
-            session.run(sequence, dying(2))
-        port.close()
+            session.run(sequence, dying(2, port))
         port = Port(name)
         session = Session(port)
         facts = session.connect()
@@ -253,10 +252,11 @@ def test_a_port_closed_in_a_run_makes_the_chip_safe(tmp_path: Path) -> None:
         port.close()
 
 
-def dying(blocks: int) -> Iterator[Block]:
-    """Read requests of a host that dies after some."""
+def dying(blocks: int, port: Port) -> Iterator[Block]:
+    """Read requests of a host that dies after some, its port with it."""
     for number in range(blocks):
         yield Block(256 * number, 256)
+    port.close()
     raise RuntimeError("the host dies")
 
 

@@ -144,7 +144,7 @@ class Session:
         except (Silent, LinkFault):
             raise
         except BaseException:
-            with suppress(Silent, LinkFault):
+            with suppress(Exception):  # the first error is the one to tell; a rig that cannot be told has its dead-man
                 self._abort(run)
                 run.aborts = 2
                 self._on_progress = None

@@ -25,7 +25,8 @@ def wiring(package: str, seat: str = "") -> dict[int, int]:
             raise UsageMistake(f"a {package} chip fills the socket and cannot sit shifted", got="shifted")
         return {pin + above + (-1 if pin <= pins // 2 else 1): pin for pin in range(1, pins + 1)}
     if seat == "reversed":
-        return {pins + 1 - pin + above: pin for pin in range(1, pins + 1)}
+        half = pins // 2  # turned by half a turn, pin 1 is where the first pin of the other row belongs
+        return {(pin + half - 1) % pins + 1 + above: pin for pin in range(1, pins + 1)}
     return {pin + above: pin for pin in range(1, pins + 1)}
 
 
