@@ -29,6 +29,7 @@ class PulseLimit:
     vcc_mv: tuple[int, int]
     data: int | None = None  # what must stand on D, None: anything driven
     low_pins: tuple[int, ...] = ()  # pins that must be low meanwhile
+    most: int = 0  # such pulses one after the other at one address, while VCC stands; 0: the sheet does not say
     source: str = ""
 
 

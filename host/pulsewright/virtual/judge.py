@@ -21,6 +21,7 @@ RULES = (
     *("unknown pulse", "pulse width", "pulse vcc", "pulse data", "pulse address", "data not driven", "floating input"),
     *("address setup", "data setup", "raised setup", "vcc setup", "address hold", "data hold", "raised hold"),
     *("address in pulse", "data in pulse", "access time", "float time", "identify level", "bus fight"),
+    *("raised vcc", "too many pulses"),
 )
 KEPT = 200  # violations kept in full; all are counted
 _ADDRESS, _DATA, _CONTROL = 1, 2, 4
@@ -57,6 +58,7 @@ class Judge:
         windows = (limits.vcc_read_mv, *limits.vcc_steps_mv, *(pulse.vcc_mv for pulse in limits.pulses))
         self._windows = tuple(dict.fromkeys(windows))
         self._raised_windows = {pin: _windows_of(limits, pin) for pin in limits.raised_pins}
+        self._raised_vcc = tuple(dict.fromkeys((limits.vcc_read_mv, *(pulse.vcc_mv for pulse in limits.pulses))))
         self._watch = PulseWatch(limits, self._report)
         self._access = limits.access_ticks
         self._vcc_pin = 0 if misplaced else limits.vcc_pin
@@ -205,6 +207,7 @@ class Judge:
             self._vcc_window, self._vcc_t = window, t
         if vcc < POWERED_MV:
             self._verifying = False
+            self._watch.powered_down()
         self._set_ceilings()
         for pin in range(1, len(levels)):
             level = levels[pin]
@@ -269,6 +272,9 @@ class Judge:
         if self._window_of(pin, level) is None:
             wanted = " or ".join(_span(window) for window in self._raised_windows[pin])
             self._report("raised window", pin, t, wanted or "never raised", show_mv(level))
+        elif self._vcc_window and not any(low <= self._vcc_mv <= high for low, high in self._raised_vcc):
+            wanted = " or ".join(_span(window) for window in self._raised_vcc)
+            self._report("raised vcc", pin, t, f"VCC at {wanted}", show_mv(self._vcc_mv))
 
     def _enables(self, t: int, levels: Levels) -> None:
         limits = self.limits

@@ -51,6 +51,7 @@ class PulseWatch:
         self._limits = limits
         self._report = report
         self._active = {pulse.pin: pulse.active_low for pulse in limits.pulses}
+        self._address_of = itemgetter(*limits.address_pins)
         self._inputs_of = itemgetter(*limits.address_pins, *limits.enable_pins, *limits.data_pins)
         self._clean: set[int] = set()  # levels that are low or high
         self.seen = Seen()
@@ -63,6 +64,8 @@ class PulseWatch:
         self.began = LONG_AGO
         self.ended = LONG_AGO
         self._last: PulseLimit | None = None
+        self._at: tuple[str, tuple[bool, ...]] | None = None  # kind and address of the last pulse since power-up
+        self._pulses = 0  # so many, one after the other
         self.address_t = LONG_AGO
         self.data_t = LONG_AGO
         self.driving = True  # at rest the rig holds every line low, D too
@@ -126,7 +129,20 @@ class PulseWatch:
         if vcc is None or not kind.vcc_mv[0] <= vcc <= kind.vcc_mv[1]:
             low, high = kind.vcc_mv
             self._report("pulse vcc", self._limits.vcc_pin, t, f"{show_mv(low)} to {show_mv(high)}", _shown(vcc))
+        if kind.most:
+            self._count(t, kind, levels)
         self._inputs(t, kind, levels)
+
+    def powered_down(self) -> None:
+        """VCC is gone: pulses are counted anew."""
+        self._at = None
+
+    def _count(self, t: int, kind: PulseLimit, levels: Levels) -> None:
+        at = kind.name, tuple(level is not None and level >= VIH_MV for level in self._address_of(levels))
+        self._pulses = self._pulses + 1 if at == self._at else 1
+        self._at = at
+        if self._pulses > kind.most:
+            self._report("too many pulses", kind.pin, t, f"at most {kind.most} at one address", str(self._pulses))
 
     def _inputs(self, t: int, kind: PulseLimit, levels: Levels) -> None:
         if not self._clean.issuperset(self._inputs_of(levels)):

@@ -38,6 +38,7 @@ SETUP = 32  # 2 us class throughout, set-up and hold: from memory
 RECOVERY = 32  # 2 us from the raised level gone to the next enable [S18], "2 us class" from memory
 RISE = 1  # at least 50 ns, as on other parts with a shared OE/VPP [S18]
 PROGRAM_PULSE = (1_520, 1_680)  # 95..105 us: from memory
+PROGRAM_PULSES, ERASE_PULSES = 25, 20  # at most, of a word and of the chip: from memory
 ERASE_PULSE = (1_520_000, 1_680_000)  # 95..105 ms: from memory
 
 # Currents, uA: 30 mA at most, active and programming, 1 mA standby [S38]; A9 as a 28F020 takes it; the rest invented
@@ -70,6 +71,7 @@ LIMITS = Limits(
             setup_ticks=_SETUPS,
             hold_ticks=_HOLDS,
             vcc_mv=VCC_5V,
+            most=PROGRAM_PULSES,
             source="levels S37, widths and times from memory",
         ),
         PulseLimit(
@@ -84,6 +86,7 @@ LIMITS = Limits(
             vcc_mv=VCC_5V,
             data=0xFF,
             low_pins=NOT_A9,
+            most=ERASE_PULSES,
             source="levels, addresses low and D high S37, widths and times from memory",
         ),
     ),
