@@ -97,6 +97,12 @@ def test_saving_by_a_hex_name_writes_hex(tmp_path: Path, name: str) -> None:
     assert (tmp_path / name).read_bytes() == b":0100000001FE\n:00000001FF\n"
 
 
+def test_saving_a_part_keeps_its_addresses(tmp_path: Path) -> None:
+    """HEX of a part of the chip begins at the part's own first address."""
+    save(tmp_path / "a.hex", b"\x01", first=0x100)
+    assert (tmp_path / "a.hex").read_bytes() == b":0101000001FD\n:00000001FF\n"
+
+
 def test_saving_by_another_name_writes_raw(tmp_path: Path) -> None:
     """Any other name gets the bytes as they are; a named format wins."""
     save(tmp_path / "a.bin", b"\x01\x0d\x0a")

@@ -9,6 +9,7 @@ import pytest
 
 from pulsewright.chip.load import load
 from pulsewright.errors import ChipFault, FileMistake, UsageMistake
+from pulsewright.image.load import load as load_image
 from pulsewright.jobs.record import Record, find_record, read_record, record_paths, safe_name, save_dump, source_marks
 
 
@@ -71,12 +72,21 @@ def test_what_is_no_record_is_said(tmp_path: Path, text: str) -> None:
 
 
 def test_a_dump_is_named_by_chip_and_checksum(state: Path) -> None:
-    """The CRC-32 of "123456789" is CBF43926 [CRC-32/ISO-HDLC of the catalogue]; a part says where it begins."""
-    path = save_dump(load("27e512"), b"123456789", 0x100)
+    """The CRC-32 of "123456789" is CBF43926 [CRC-32/ISO-HDLC of the catalogue]."""
+    path = save_dump(load("27e512"), b"123456789", 0)
     assert path.parent == state / "saved"
     assert path.read_bytes() == b"123456789"
     assert path.name.startswith("27e512-")
-    assert path.name.endswith("-CBF43926-from-100.bin")
+    assert path.name.endswith("-CBF43926.bin")
+
+
+def test_the_dump_of_a_part_lands_where_it_was(state: Path) -> None:
+    """What begins above address 0 is kept with its addresses: burnt back, it lands in the same place."""
+    path = save_dump(load("27e512"), b"123456789", 0x100)
+    assert path.name.endswith("-CBF43926-from-100.hex")
+    image = load_image(path)
+    assert (image.first, image.last) == (0x100, 0x108)
+    assert image.segments[0].data == b"123456789"
 
 
 def test_a_chip_name_becomes_a_safe_file_name() -> None:

@@ -194,16 +194,21 @@ def _identify(args: argparse.Namespace, desk: Desk) -> int:
 def _read(args: argparse.Namespace, desk: Desk) -> int:
     from dataclasses import replace
 
-    from pulsewright.image.load import save
+    from pulsewright.image.load import RAW, format_for, save
     from pulsewright.jobs.read import read
+    from pulsewright.units import show_address
 
     definition = _definition(args)
     _writable(args.out)
     result = _run(args, desk, definition, read)
-    save(args.out, result.data)
-    return _answer(
-        desk, replace(result, lines=(*result.lines, f"written to {args.out}"), facts={**result.facts, "file": args.out})
-    )
+    first = args.range[0] if args.range else 0
+    save(args.out, result.data, first=first)
+    written = f"written to {args.out}"
+    if first and format_for(args.out) == RAW:
+        at = show_address(first, definition.words)
+        written += f": raw bytes, the first one is that of chip address {at}; a .hex file would keep the addresses"
+    facts = {**result.facts, "file": args.out, "file_first": first}
+    return _answer(desk, replace(result, lines=(*result.lines, written), facts=facts))
 
 
 def _writable(path: str) -> None:

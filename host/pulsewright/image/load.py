@@ -68,15 +68,19 @@ def tell_format(data: bytes, name: str = "") -> str:
     return RAW
 
 
-def save(path: Path | str, data: bytes, *, format: str | None = None) -> None:  # noqa: A002 - as in load
-    """Write the bytes of a chip, from address 0: Intel HEX for a name in HEX_SUFFIXES, else raw; whole or not at all.
+def save(path: Path | str, data: bytes, *, first: int = 0, format: str | None = None) -> None:  # noqa: A002 - as in load
+    """Write the bytes of a chip from its address `first` on, whole or not at all.
 
-    FileMistake where it cannot be written.
+    Intel HEX, which keeps the addresses, for a name in HEX_SUFFIXES, else raw. FileMistake where it cannot be written.
     """
-    chosen = _checked(format) or (INTEL_HEX if Path(path).suffix.lower() in HEX_SUFFIXES else RAW)
-    if chosen == INTEL_HEX:
-        data = write_intel_hex(image_of(data)).encode("ascii")
+    if (_checked(format) or format_for(path)) == INTEL_HEX:
+        data = write_intel_hex(image_of(data, start=first)).encode("ascii")
     write_whole(path, data)
+
+
+def format_for(path: Path | str) -> str:
+    """The format that `save` gives a file of this name."""
+    return INTEL_HEX if Path(path).suffix.lower() in HEX_SUFFIXES else RAW
 
 
 def _checked(wanted: str | None) -> str | None:

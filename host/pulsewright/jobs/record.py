@@ -13,6 +13,7 @@ from pulsewright.chip.model import Definition
 from pulsewright.errors import FileMistake, PulsewrightError, UsageMistake, Where
 from pulsewright.files import read_whole, write_whole
 from pulsewright.image.checksum import crc32
+from pulsewright.image.load import save
 from pulsewright.jobs.state import data_folder, made
 
 FORMAT = 1
@@ -91,12 +92,15 @@ def safe_name(name: str) -> str:
 
 
 def save_dump(definition: Definition, data: bytes, first: int) -> Path:
-    """Keep what a chip held, under its name, the time and its CRC; FileMistake if that fails."""
+    """Keep what a chip held, under its name, the time and its CRC; FileMistake if that fails.
+
+    Raw for a whole chip; what begins above address 0 as Intel HEX, so that it lands where it was when it is burnt back.
+    """
     folder = made(data_folder("saved"))
     stamp = datetime.now(UTC).strftime("%Y%m%dT%H%M%SZ")
-    part = f"-from-{first:X}" if first else ""
-    path = folder / f"{safe_name(definition.name)}-{stamp}-{crc_text(data)}{part}.bin"
-    write_whole(path, data)
+    part = f"-from-{first:X}.hex" if first else ".bin"
+    path = folder / f"{safe_name(definition.name)}-{stamp}-{crc_text(data)}{part}"
+    save(path, data, first=first)
     return path
 
 
