@@ -51,5 +51,6 @@ def test_a_burn_of_a_range_touches_nothing_else(desk: Desk) -> None:
     assert desk.contents() == before[:0x100] + bytes(0x100) + before[0x200:]
     desk.clean()
     assert desk("verify", "27e512", answer["saved"], "--rig", "virtual:b.bench")["exit"] == 1
-    assert desk("burn", "27e512", answer["saved"], "--rig", "virtual:b.bench")["exit"] == 1  # needs an erase: nothing written
+    back = desk("burn", "27e512", answer["saved"], "--rig", "virtual:b.bench")
+    assert back["exit"] == 1  # needs an erase: nothing is written
     assert desk.contents() == before[:0x100] + bytes(0x100) + before[0x200:]

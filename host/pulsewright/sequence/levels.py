@@ -50,6 +50,11 @@ def _drop_mv(switch: Switch, current_ua: int) -> int:
     return -(-switch.drop_mv * current_ua // switch.drop_at_ua)
 
 
+def top_mv(definition: Definition, rig: Rig, pin: str, step: SupplyStep) -> int:
+    """The highest level a raised pin may stand at: the least of window, absolute maximum and the switch's ceiling."""
+    return min(_ceiling_mv(definition, pin, step), PinMap(definition, rig).switch(pin).ceiling_mv)
+
+
 def raised_sums(definition: Definition, rig: Rig, pin: str, step: SupplyStep, rail_step: RailStep) -> Sums:
     """The sums for a raised pin. A current that no source gives counts as the rig file's `unstated_current`."""
     switch = PinMap(definition, rig).switch(pin)
@@ -57,7 +62,7 @@ def raised_sums(definition: Definition, rig: Rig, pin: str, step: SupplyStep, ra
     lowest = rail_step.mv - rail_step.error_mv - _drop_mv(switch, current) - _dip_mv(rail_step, rig)
     return Sums(
         rail_step.mv + rail_step.error_mv + rail_step.overshoot_mv,
-        min(_ceiling_mv(definition, pin, step), switch.ceiling_mv),
+        top_mv(definition, rig, pin, step),
         lowest,
         step.min_mv,
     )

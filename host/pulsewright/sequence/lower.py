@@ -17,7 +17,7 @@ from pulsewright.chip.model import (
 from pulsewright.errors import CannotMake
 from pulsewright.rig.model import RailStep
 from pulsewright.sequence.build import US, Builder
-from pulsewright.sequence.levels import choose_raised, choose_vcc
+from pulsewright.sequence.levels import choose_raised, choose_vcc, top_mv
 from pulsewright.units import Rounding, ticks
 from pulsewright.wire.ops import line_byte
 from pulsewright.wire.tables import Channel, Fail, Level, Op, Rail
@@ -65,7 +65,7 @@ def move_raised_rail(b: Builder, wanted: dict[str, SupplyStep]) -> None:
     target = choose_raised(b.definition, b.rig, wanted)
     scaling = b.rig.raised.scaling
     low = scaling.count_at_least(max(step.min_mv for step in wanted.values()))
-    high = scaling.count_at_most(min(step.max_mv for step in wanted.values()))
+    high = scaling.count_at_most(min(top_mv(b.definition, b.rig, pin, step) for pin, step in wanted.items()))
     if b.state.raised == target and low <= b.state.raised_low and b.state.raised_high <= high:
         return
     open_switches(b, 0)
@@ -82,7 +82,8 @@ def measure_raised(b: Builder, wanted: dict[str, SupplyStep]) -> None:
     """Each raised level measured at its position (H8)."""
     for pin, step in wanted.items():
         switch = b.pins.switch(pin)
-        low, high = switch.scaling.count_at_least(step.min_mv), switch.scaling.count_at_most(step.max_mv)
+        low = switch.scaling.count_at_least(step.min_mv)
+        high = switch.scaling.count_at_most(top_mv(b.definition, b.rig, pin, step))
         limit = ticks(_MEASURE_LIMIT_PS, Rounding.AT_LEAST)
         b.emit(Op.MEASURE, channel=Channel.POSITION + switch.number, low=low, high=high, limit=limit)
 

@@ -9,7 +9,7 @@ from pulsewright.chip.model import Definition
 from pulsewright.rig.model import RailStep, Rig
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.identity import wanted_ids
-from pulsewright.sequence.levels import choose_raised
+from pulsewright.sequence.levels import choose_raised, top_mv
 from pulsewright.sequence.lower import raised_steps
 from pulsewright.sequence.pinmap import PinMap
 from pulsewright.units import Rounding, ticks
@@ -23,7 +23,7 @@ def _ceilings(b: Builder, modes: Iterable[str]) -> dict[int, int]:
     for name in modes:
         for pin, step in raised_steps(b, b.definition.modes[name]).items():
             switch = b.pins.switch(pin)
-            count = switch.scaling.count_at_most(min(step.max_mv, switch.ceiling_mv))
+            count = switch.scaling.count_at_most(top_mv(b.definition, b.rig, pin, step))
             ceilings[switch.number] = max(count, ceilings.get(switch.number, 0))
     return ceilings
 
@@ -57,7 +57,7 @@ def make_permit(b: Builder, modes: Iterable[str], vcc_used: dict[str, RailStep],
         pin, supply = next(iter(wanted.items()))
         switch = b.pins.switch(pin).number
         step = choose_raised(definition, rig, wanted).number
-        ceiling = b.pins.switch(pin).scaling.count_at_most(supply.max_mv)
+        ceiling = b.pins.switch(pin).scaling.count_at_most(top_mv(definition, rig, pin, supply))
     return Permit(
         identity=identity,
         alternatives=tuple(tuple((cell.at, cell.is_) for cell in ids) for ids in wanted_ids(definition)),
