@@ -122,6 +122,15 @@ REFUSED: dict[str, tuple[list[Item], Fault]] = {
         [*past_gate(), *raise_oe()[:3], vcc_rail(VCC_6V), OE_ON],
         Fault.NO_VCC,
     ),
+    "a raised level on a rail that was measured while it was not there yet": (
+        [*past_gate(), ins(Op.RAIL, rail=Rail.RAISED, step=0), ins(Op.WAIT, ticks=100 * MS), *raise_oe()[:1],
+         ins(Op.MEASURE, channel=1, low=0, high=500, limit=MS), OE_ON],
+        Fault.NOT_MEASURED,
+    ),
+    "the raised rail while VCC is not measured at its new step": (
+        [*past_gate(), vcc_rail(VCC_6V), ins(Op.RAIL, rail=Rail.RAISED, step=VPP_14V)],
+        Fault.NO_VCC,
+    ),
     "the raised rail moved with a switch closed": (
         [*past_gate(), *raise_oe(), RAISED_RAIL],
         Fault.STILL_RAISED,

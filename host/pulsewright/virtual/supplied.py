@@ -14,6 +14,7 @@ from pulsewright.virtual.rails import Ramp
 from pulsewright.wire.tables import Range
 
 THROUGH_DIODES_UA = 2_000  # what a chip fed through its input diodes takes: from memory
+SAGS_TO_MV = 7_500  # a little above a chip's own 7 V: below, it takes what an input takes; invented
 _ALL = range(1, POSITIONS + 1)
 
 
@@ -108,8 +109,7 @@ class Supplied(Contacts):
         """The level of a closed raised switch at its load, the rail sagging where the load is above its limit."""
         rail = self.raised_rail.level(t)
         if self._sag:
-            load = max(1, self._load_of_rail(t))
-            rail = rail * min(load, self.board.raised_limit_ua) // load
+            rail = self._sagged(t, rail)
         drop = self.board.drop_mv(position, self.load_ua(t, position))
         return max(rail - drop, self._plain(position) or 0)
 
@@ -136,10 +136,12 @@ class Supplied(Contacts):
     def rail_mv(self, t: int) -> int:
         """The raised rail as its converter sees it."""
         level = self.raised_rail.level(t)
-        if self._sag and self._closed:
-            load = max(1, self._load_of_rail(t))
-            level = level * min(load, self.board.raised_limit_ua) // load
-        return level
+        return self._sagged(t, level) if self._sag and self._closed else level
+
+    def _sagged(self, t: int, level: int) -> int:
+        """The raised rail at its limit. It sinks no lower than to where a chip takes nothing more from the pin."""
+        load = max(1, self._load_of_rail(t))
+        return max(level * min(load, self.board.raised_limit_ua) // load, min(level, SAGS_TO_MV))
 
     # ---- ramps' ends ----------------------------------------------------------------------------------------------
 
