@@ -177,6 +177,18 @@ def test_a_word_that_fails_tells_how_far_it_came() -> None:
     assert "again" in failed.value.hint
 
 
+def test_a_job_that_fails_names_the_dump(state: Path) -> None:
+    """Whoever is left with a half-burnt chip is told in the error itself where its old contents are."""
+    session = FakeSession(stuck={0x120: 0x10})
+    with pytest.raises(ChipFault) as failed:
+        burn(context(session), image(bytes(0x200)))
+    (path,) = (state / "saved").iterdir()
+    assert f"what the chip held before is saved in {path}" in failed.value.facts
+    with pytest.raises(ChipFault) as failed:
+        burn(context(session, save=False), image(bytes(0x200)))
+    assert not any("saved in" in fact for fact in failed.value.facts)
+
+
 def test_a_margin_that_fails_after_a_burn_is_the_chips_fault() -> None:
     """A word that read back while burning but differs in the verify pass: exit 4, with the direction's verdict."""
     session = FakeSession()

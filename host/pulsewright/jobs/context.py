@@ -281,8 +281,10 @@ def job(ctx: JobContext, name: str, work: Callable[[JobContext], JobResult]) -> 
 
 
 def _told(ctx: JobContext, record: Record, error: PulsewrightError) -> PulsewrightError:
-    """The error, once its record is kept and named in it."""
+    """The error, once its record is kept and named in it; where the chip may have changed, its dump as well."""
     ctx.progress.end()
+    if "saved" in record.content:
+        error.facts = (*error.facts, f"what the chip held before is saved in {record.content['saved']}")
     kept = _kept(record, error.what, error.exit_code, error)
     error.facts = (*error.facts, f"record: {kept}" if kept else _NO_RECORD)
     return error
