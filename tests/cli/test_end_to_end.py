@@ -206,11 +206,12 @@ def test_a_bit_that_will_not_program_is_the_chips_fault(desk: Desk) -> None:
 
 
 def test_a_rail_that_gives_nothing_changes_nothing(desk: Desk) -> None:
-    """A raised rail without current never shows the ID: exit 3, the chip is whole and holds what it held."""
+    """A raised rail without current trips before the gate: exit 5, the chip is whole and holds what it held."""
     desk.bench("--contents", "noise:4", "--fault", "rail-sag=0")
     before = desk.contents()
     answer = desk("erase", "27e512", *RIG)
-    assert (answer["exit"], answer["error"]) == (3, "IdentityRefused")
+    assert (answer["exit"], answer["error"]) == (5, "Tripped")
+    assert "raised rail" in answer["result"]
     assert desk.contents() == before
     assert desk("bench", "show", "b.bench")["damaged"] is False
 
