@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import get_args
+from typing import Any, get_args
 
 import pytest
 from hypothesis import given, settings
@@ -12,7 +12,8 @@ from pulsewright.errors import LinkFault
 from pulsewright.link.faulty import Faulty, Harm, Kind, Way
 from pulsewright.link.inprocess import InProcess
 from pulsewright.link.results import RunResult
-from pulsewright.wire.tables import HELLO_REQUEST, Flow, Outcome
+from pulsewright.wire.frames import Message, encode_frame
+from pulsewright.wire.tables import HELLO_REQUEST, Flow, Frame, Outcome, State
 from tests.link.fake_rig import MS, FakeRig
 from tests.link.kit import IMAGE, WORDS, Desk, image_blocks, sequence
 
@@ -123,3 +124,22 @@ def test_a_stall_delays_and_loses_nothing() -> None:
         answer += data
     assert len(answer) == 32
     assert line.now_us() > 20_000
+
+
+def test_a_reply_of_an_earlier_sequence_is_not_taken_for_this_one(monkeypatch: pytest.MonkeyPatch) -> None:
+    """A block's reply that comes late, under the permit before, is dropped: its words are those of another reading."""
+    desk = Desk()
+    desk.session.connect()
+    desk.rig.cells[:WORDS] = bytes(WORDS)
+    assert desk.session.run(sequence(Flow.READ)).data == bytes(WORDS)
+    desk.rig.cells[:WORDS] = IMAGE
+    reply, late = desk.rig._reply, list(desk.rig._replies.values())
+
+    def with_late(kind: Frame, index: int, **fields: Any) -> Message:
+        if desk.rig.state is State.RUNNING and late:
+            desk.rig._send(encode_frame(late.pop(0)))
+        return reply(kind, index, **fields)
+
+    monkeypatch.setattr(desk.rig, "_reply", with_late)
+    assert desk.session.run(sequence(Flow.READ)).data == IMAGE
+    assert not late
