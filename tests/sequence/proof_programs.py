@@ -53,6 +53,7 @@ def seating() -> Items:
         ins(Op.COMPARE, word=0, mask=0xFF),
         *_or_fail("off", Fail.SEAT_STANDS_UP),
         *[measure(16 + number, 0, 10) for number in range(5)],
+        measure(2, 0, 37),
         ins(Op.RAIL, rail=0, step=3),
         ins(Op.RANGE, which=1),
         ins(Op.WAIT, ticks=6 * MS),

@@ -11,11 +11,12 @@ from pulsewright.chip.load import load
 from pulsewright.chip.model import Definition
 from pulsewright.rig.file import load_rig
 from pulsewright.sequence.proof import prove
-from pulsewright.wire.ops import ins
+from pulsewright.wire.ops import Instruction, Label, ins
 from pulsewright.wire.tables import Identity, Op
 from tests.sequence.proof_programs import (
     MS,
     OFF,
+    ON,
     US,
     Items,
     by_rule,
@@ -140,3 +141,28 @@ def test_each_finding_names_its_op_and_numbers() -> None:
 
     assert code[first.offset] == Op.PULSE
     assert (first.rule, first.wanted, first.got) == ("H7", "1520 to 1680 ticks", "1504")
+
+
+def again(items: Items) -> Items:
+    """The same ops a second time: their labels get other names."""
+    return [
+        Label(f"{item.name} again")
+        if isinstance(item, Label)
+        else Instruction(item.op, {**item.args, "to": f"{item.args['to']} again"})
+        if "to" in item.args
+        else item
+        for item in items
+    ]
+
+
+def test_a_power_down_takes_the_look_with_it() -> None:
+    """After VCC was away the gate needs a look of its own (H2), as it needs a seating check of its own (H1)."""
+    look = ins(Op.GATE_LOOK, wait=20)
+    off = [ins(Op.HIGH, how=0), ins(Op.LINES, lines=ON), ins(Op.ADDRESS, at=0), ins(Op.RANGE, which=0)]
+    whole = [*seating(), look, *off, *again(seating()), *gate(), ins(Op.END)]
+    blind = [*seating(), look, *off, *again(seating()), *(item for item in gate() if item != look), ins(Op.END)]
+    codes = encoded("identify", whole), encoded("identify", blind)
+    good, bad = (prove(code, permit("identify", code), CHIP, RIG) for code in codes)
+
+    assert good.findings == ()
+    assert any("without the look before it" in one.text for one in by_rule(bad, "H2"))

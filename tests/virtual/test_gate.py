@@ -9,9 +9,11 @@ import pytest
 
 from pulsewright.virtual.board import Board
 from pulsewright.wire.ops import ins
-from pulsewright.wire.tables import Fault, Frame, Identity, Op, Outcome
+from pulsewright.wire.tables import Fault, Frame, Identity, Op, Outcome, Range
 from tests.virtual.kit import (
     A9,
+    BOTH_HIGH,
+    BOTH_LOW,
     ID,
     MS,
     PIN_A9,
@@ -152,3 +154,13 @@ def test_an_abort_in_the_walk_drops_the_level() -> None:
     assert (end.outcome, end.done["matched"]) == (Outcome.ABORTED, 0xFF)
     assert f"{A9} falls" in host.texts()
     assert len(host.log.samples) < 100
+
+
+def test_a_look_from_before_a_power_down_counts_no_more() -> None:
+    """Whoever takes VCC away has to look again: the gate stays shut without."""
+    looked = [ins(Op.SEATED), ins(Op.LINES, lines=BOTH_LOW), ins(Op.GATE_LOOK, wait=32), ins(Op.LINES, lines=BOTH_HIGH)]
+    off = [ins(Op.HIGH, how=0), ins(Op.LINES, lines=BOTH_LOW), ins(Op.RANGE, which=Range.OFF), *power_up()]
+    again = [item for item in to_gate() if getattr(item, "op", None) is not Op.GATE_LOOK]
+    rest = [*again, ins(Op.GATE, wait=32), ins(Op.SWITCHES, on=0), ins(Op.END)]
+    assert Host().run(build([*power_up(), *looked, *rest])).outcome is Outcome.DONE
+    assert Host().run(build([*power_up(), *looked, *off, *rest])).fault["code"] == Fault.NO_ID_MODE

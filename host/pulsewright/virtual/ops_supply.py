@@ -92,8 +92,9 @@ def _vcc_stands(m: Machine) -> bool:
 
 
 def shut(m: Machine) -> None:
-    """Power-down: seating and gate are to be passed again."""
+    """Power-down: seating, look and gate are to be passed again."""
     m.seated = False
+    m.look = None
     m.gate = False
     m.forget_approval()
 

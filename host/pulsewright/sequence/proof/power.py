@@ -12,6 +12,7 @@ from pulsewright.sequence.proof.state import (
     DATA,
     HIGH,
     LOW,
+    NOT_LOOKED,
     OFF,
     ON,
     PULSE,
@@ -25,7 +26,7 @@ from pulsewright.sequence.proof.state import (
     elapsed,
     started,
 )
-from pulsewright.sequence.proof.tables import SEAT_OFF, SEAT_POSITION, SEAT_POWER, SEAT_PROBE, Tables
+from pulsewright.sequence.proof.tables import SEAT_DEAD, SEAT_OFF, SEAT_POSITION, SEAT_POWER, SEAT_PROBE, Tables
 from pulsewright.sequence.proof.timing import at_least
 from pulsewright.units import show_mv
 from pulsewright.wire.ops import Instruction
@@ -33,6 +34,7 @@ from pulsewright.wire.tables import Bias, Channel, Group, Rail, Range
 
 Result = tuple[State, Clocks]
 _PROBE_LEAST_MV: Final = 1500  # design, seating check: less means turned or short
+_GONE_MV: Final = 500  # H5: VCC that is off
 _STANDS_LOW_MV: Final = 800  # TTL low: a raised position under it does not stand up
 
 
@@ -93,9 +95,10 @@ def range_(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     still(t, state, clocks, "VCC is switched")
     if which == Range.OFF:
         t.need(not state.driven, "H11", "VCC goes and H is driven")
-        return state._replace(range=0, vcc_good=False, facts=0, seated=False, gate=False), edge(clocks)
+        after = state._replace(range=0, vcc_good=False, facts=0, seated=False, gate=False, looked=NOT_LOOKED)
+        return after, edge(clocks)
     if which == Range.PROBE:
-        wanted = SEAT_OFF
+        wanted = SEAT_OFF | SEAT_DEAD
         for one in t.rig.switches:
             wanted |= SEAT_POSITION << one.number
         t.need(state.range == Range.OFF, "H1", "the probe range does not come from VCC off")
@@ -156,7 +159,8 @@ def measure(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result
 
 def _measure_vcc(t: Tables, state: State, clocks: Clocks, low: int, high_: int) -> Result:
     if state.range == Range.OFF:
-        return state, clocks
+        gone = high_ <= t.rig.socket_vcc.count_at_most(_GONE_MV)
+        return (state._replace(facts=state.facts | SEAT_DEAD) if gone else state), clocks
     if state.range == Range.PROBE:
         stands = t.rig.socket_vcc.count_at_least(_PROBE_LEAST_MV)
         return (state._replace(facts=state.facts | SEAT_PROBE) if low >= stands else state), clocks

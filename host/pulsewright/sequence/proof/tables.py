@@ -35,6 +35,7 @@ SEAT_PROBE: Final = 1 << 1  # through the probe resistor VCC stands
 SEAT_UP: Final = 1 << 2  # outputs off: D follows the bias up
 SEAT_DOWN: Final = 1 << 3  # outputs off: D follows the bias down
 SEAT_HELD: Final = 1 << 4  # outputs on: D holds against the bias
+SEAT_DEAD: Final = 1 << 5  # VCC off: it was measured to be gone
 SEAT_POSITION: Final = 1 << 8
 SEAT_POWER: Final = 1 << 24
 
