@@ -109,7 +109,12 @@ def add_commands(commands: Commands[Parser]) -> None:
         (UV, LICENSED),
     )
     _image_options(burning)
-    burning.add_argument("--erase", action="store_true", help="erase first, if a word needs a 0 to become a 1")
+    burning.add_argument(
+        "--erase",
+        action="store_true",
+        help="erase the whole chip first, if a word needs a 0 to become a 1; refused where words outside --range "
+        "would be lost",
+    )
     _changing(burning)
     verifying = one(
         "verify",
