@@ -221,6 +221,7 @@ CASES: list[tuple[str, str, str, Bend, str]] = [
     ("a bus write", "H7", "burn", put(Op.END, -1, ins(Op.POLL, kind=0, mantissa=1, exponent=1)), "allows the op poll"),
     ("A9 has not risen", "H7", "read", gate_early, "has not risen yet"),
     ("address line moves as A9 falls", "H7", "read", address_early, "still falls"),
+    ("ID cells as A9 falls", "H7", "read", put_after(Op.SWITCHES, 1, ins(Op.GATE_LOOK, wait=20)), "raised level falls"),
     # H8: measured before used
     ("VCC unmeasured", "H8", "read", drop(Op.MEASURE, 7), "before VCC was measured"),
     ("VCC unmeasured after a move", "H8", "erase", drop(Op.MEASURE, -2), "before VCC was measured"),

@@ -161,6 +161,9 @@ def _identifies(t: Tables, state: State, clocks: Clocks, wait: int) -> None:
     since = elapsed(clocks, CONTROL) + wait  # every cell is sampled a whole wait after its address
     need = at_least(control_ps + t.timing.line_ps(state))
     t.need(since >= need, "H7", "time from the enabling edge to the first ID cell", f"{need} ticks", since)
+    if state.opened:  # an address line may be at its position
+        need, since = t.timing.fall_ticks(state.opened), elapsed(clocks, OFF)
+        t.need(since >= need, "H7", "ID cells are read while a raised level falls", f"{need} ticks", since)
     t.need(state.data == RELEASED, "H2", "D is driven at the gate", "released", state.data)
     t.need(lines_fit(row, _free_address(t, row, state)), "H2", "the lines at the gate are not the identify mode's")
     t.need(t.vcc_serves(row, state), "H2", "VCC at the gate is not the identify mode's", row.vcc, f"step {state.vcc}")

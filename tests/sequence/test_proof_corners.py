@@ -1,0 +1,120 @@
+"""Checks of the proof that only an odd program or permit meets: each seen to refuse."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+from typing import Any
+
+import pytest
+
+from pulsewright.sequence.proof import prove
+from pulsewright.wire.ops import Instruction, Label, ins
+from pulsewright.wire.permit import VccStep
+from pulsewright.wire.tables import Identity, Op
+from tests.sequence.proof_programs import MS, OFF, ON, by_rule, encoded, lines, permit, program
+from tests.sequence.test_proof_parts import NO_ID, without_gate_level, without_identity
+from tests.sequence.test_proof_rules import CHIP, RIG, Bend, found, put, set_
+
+
+def branch(to: str, depth: int = 0, when: int = 2) -> Instruction:
+    """A branch, always taken."""
+    return ins(Op.BRANCH, when=when, depth=depth, to=to)
+
+
+CORNERS: list[tuple[str, str, str, Bend, str]] = [
+    ("an address outside", "H7", "read", put(Op.READ_RUN, 0, ins(Op.ADDRESS, at=65_536)), "address outside the chip"),
+    ("a step from nowhere", "H7", "read", put(Op.ADDRESS, 0, ins(Op.STEP, by=1)), "an address that was never set"),
+    ("an address from nowhere", "H7", "read", put(Op.ADDRESS, 0, ins(Op.ADDRESS_WORD)), "register that was never set"),
+    ("a word from nowhere", "H7", "burn", put(Op.EACH_BLOCK, 0, ins(Op.DRIVE_WORD)), "when none is in hand"),
+    ("a wide word", "H6", "erase", set_(Op.DRIVE, word=0x1FF), "a word wider than the chip's"),
+    (
+        "D in no mode", "H6", "burn",
+        put(Op.EACH_BLOCK, 0, ins(Op.LINES, lines=lines(l22="Z", l24="H")), ins(Op.DRIVE, word=0)), "no mode of the",
+    ),
+    (
+        "a line twice", "H6", "read",
+        put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l24="L") + lines(l24="L"))), "stands twice in one group",
+    ),
+    ("VCC moved, not measured", "H1", "read", put(Op.SWITCHES, 0, ins(Op.RAIL, rail=0, step=3)), "before VCC stands"),
+    ("too long", "H5", "read", put(Op.END, 0, *[ins(Op.WAIT, ticks=1)] * 200), "longer than the board's program"),
+    ("four loops", "H5", "read", put(Op.END, 0, *[ins(Op.LOOP, count=2)] * 4, *[ins(Op.NEXT)] * 4), "loops too deep"),
+    (
+        "words in words", "H5", "read",
+        put(Op.END, 0, *[ins(Op.EACH_WORD, to="x")] * 2, *[ins(Op.NEXT_WORD)] * 2, Label("x")), "inside itself",
+    ),
+    ("backward", "H5", "read", put(Op.END, 0, Label("x"), ins(Op.KEEP), branch("x")), "leads backward"),
+    (
+        "into a loop", "H5", "read",
+        put(Op.END, 0, branch("x", 1), ins(Op.LOOP, count=2), Label("x"), ins(Op.NEXT)), "into a loop from outside",
+    ),
+    ("a strange condition", "H5", "read", put(Op.END, 0, branch("x", when=3), Label("x")), "condition that is not known"),
+    ("to the end", "H5", "read", lambda items: [*items[:-1], branch("x"), items[-1], Label("x")], "where no op begins"),
+    ("a line to no pin", "H11", "read", put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l2="H"))), "meets no pin"),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("rule", "kind", "bend", "text"), [one[1:] for one in CORNERS], ids=[c[0] for c in CORNERS])
+def test_an_odd_program_is_refused(rule: str, kind: str, bend: Bend, text: str) -> None:
+    """The rule that it breaks finds it and says what it is."""
+    told = found(kind, bend, rule)
+    assert told.startswith(rule)
+    assert text in told
+
+
+ONE = ((0, 0xDA), (1, 8))
+PERMITS: list[tuple[str, str, dict[str, Any], str]] = [
+    ("nine alternatives", "H2", {"alternatives": (ONE,) * 9}, "too many alternatives"),
+    ("an alternative of no cell", "H2", {"alternatives": (ONE, ())}, "number of ID cells"),
+    ("an ID cell outside", "H2", {"alternatives": (((65_536, 0xDA), (1, 8)),)}, "an ID cell outside the chip"),
+    ("an ID cell too wide", "H2", {"alternatives": (((0, 0x1DA), (1, 8)),)}, "an ID cell outside the chip"),
+    ("VCC twice", "H3", {"vcc": (VccStep(3, 594, 656, 6 * MS),) * 2}, "VCC steps of the permit"),
+    ("no VCC", "H3", {"vcc": ()}, "VCC steps of the permit"),
+    (
+        "VCC unused", "H3",
+        {"vcc": (VccStep(1, 446, 492, 6 * MS), VccStep(3, 594, 656, 6 * MS))}, "VCC steps that the program never uses",
+    ),
+    ("safe names a line twice", "H5", {"safe": OFF + OFF[:1]}, "twice"),
+    ("safe is no mode", "H5", {"safe": lines(l22="H", l24="L")}, "no row of the mode table in which D floats"),
+    ("nine patterns", "H6", {"drives": (ON,) * 9}, "too many patterns"),
+]  # fmt: skip
+
+
+@pytest.mark.parametrize(("rule", "bend", "text"), [one[1:] for one in PERMITS], ids=[one[0] for one in PERMITS])
+def test_an_odd_permit_is_refused(rule: str, bend: dict[str, Any], text: str) -> None:
+    """A good burn under a permit with one odd field."""
+    code = encoded("burn", program("burn"))
+    proof = prove(code, permit("burn", code, **bend), CHIP, RIG)
+    assert any(text in str(one) for one in by_rule(proof, rule)), list(map(str, proof.findings))
+
+
+@pytest.mark.parametrize(
+    ("kind", "bend", "text"),
+    [
+        ("read", {"identity": Identity.NONE, "raised": ((2, 422),)}, "identity none, yet raised levels"),
+        ("burn", {"identity": Identity.NONE}, "identity none, yet the program can write"),
+        ("read", {"identity": Identity.WANTED}, "wants an ID of a part that has none"),
+        ("read", {"identity": Identity.NONE, "alternatives": (ONE,)}, "names ID cells though it wants no identity"),
+        ("read", {"identity": Identity.NONE, "identify_switch": 4}, "an identify level that the definition does not"),
+    ],
+)
+def test_an_odd_permit_of_a_part_without_id_is_refused(kind: str, bend: dict[str, Any], text: str) -> None:
+    """Without an ID in the definition the permit names neither cells nor level, and without a word raises nothing."""
+    code = encoded(kind, without_gate_level(kind))
+    proof = prove(code, permit(kind, code, **{**NO_ID, **bend}), without_identity(), RIG)
+    assert any(text in str(one) for one in by_rule(proof, "H2")), list(map(str, proof.findings))
+
+
+def test_an_identify_mode_with_two_levels_is_refused() -> None:
+    """The permit has one identify level: a mode table that wants two cannot be identified by."""
+    identify = CHIP.modes["identify"]
+    two = replace(identify, levels={**identify.levels, "OE": "VH.identify"})
+    code = encoded("read", program("read"))
+    proof = prove(code, permit("read", code), replace(CHIP, modes={**CHIP.modes, "identify": two}), RIG)
+    assert any("identify mode cannot be made" in one.text for one in by_rule(proof, "H2"))
+
+
+def test_another_way_to_identify_is_not_understood() -> None:
+    """A definition that asks for its ID by commands is refused, not taken for one that does it by a level."""
+    code = encoded("read", program("read"))
+    proof = prove(code, permit("read", code), replace(CHIP, identify="commands"), RIG)
+    assert any("not understood" in one.text for one in by_rule(proof, "H2"))
