@@ -47,7 +47,7 @@ CORNERS: list[tuple[str, str, str, Bend, str]] = [
         "into a loop", "H5", "read",
         put(Op.END, 0, branch("x", 1), ins(Op.LOOP, count=2), Label("x"), ins(Op.NEXT)), "into a loop from outside",
     ),
-    ("a strange condition", "H5", "read", put(Op.END, 0, branch("x", when=3), Label("x")), "condition that is not known"),
+    ("a strange condition", "H5", "read", put(Op.END, 0, branch("x", when=3), Label("x")), "that is not known"),
     ("to the end", "H5", "read", lambda items: [*items[:-1], branch("x"), items[-1], Label("x")], "where no op begins"),
     ("a line to no pin", "H11", "read", put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l2="H"))), "meets no pin"),
 ]  # fmt: skip
