@@ -10,15 +10,24 @@ import pytest
 from pulsewright.sequence.proof import prove
 from pulsewright.wire.ops import Instruction, Label, ins
 from pulsewright.wire.permit import VccStep
-from pulsewright.wire.tables import Identity, Op
-from tests.sequence.proof_programs import MS, OFF, ON, by_rule, encoded, lines, permit, program
+from pulsewright.wire.tables import Flow, Identity, Level, Op
+from tests.sequence.proof_programs import ADDRESS, MS, OFF, ON, Items, by_rule, encoded, lines, measure, permit, program
 from tests.sequence.test_proof_parts import NO_ID, without_gate_level, without_identity
-from tests.sequence.test_proof_rules import CHIP, RIG, Bend, found, put, set_
+from tests.sequence.test_proof_rules import CHIP, RIG, Bend, found, put, put_after, set_
 
 
 def branch(to: str, depth: int = 0, when: int = 2) -> Instruction:
     """A branch, always taken."""
     return ins(Op.BRANCH, when=when, depth=depth, to=to)
+
+
+def many_states() -> Items:
+    """Twelve lines that are each high or low, nobody knows which."""
+    items: Items = [ins(Op.SAMPLE)]
+    for line in ADDRESS[:12]:
+        items += [ins(Op.COMPARE, word=line, mask=255), ins(Op.BRANCH, when=1, depth=0, to=f"s{line}")]
+        items += [ins(Op.LINES, lines=bytes([line | Level.HIGH << 6])), Label(f"s{line}")]
+    return items
 
 
 CORNERS: list[tuple[str, str, str, Bend, str]] = [
@@ -49,6 +58,19 @@ CORNERS: list[tuple[str, str, str, Bend, str]] = [
     ),
     ("a strange condition", "H5", "read", put(Op.END, 0, branch("x", when=3), Label("x")), "that is not known"),
     ("to the end", "H5", "read", lambda items: [*items[:-1], branch("x"), items[-1], Label("x")], "where no op begins"),
+    ("a rail that is not known", "H3", "read", put(Op.READ_RUN, 0, ins(Op.RAIL, rail=5, step=0)), "a rail that is not"),
+    ("a step for nothing", "H3", "burn", put(Op.EACH_BLOCK, 0, ins(Op.RAIL, rail=1, step=7)), "a raised step that no"),
+    ("the rail up unseated", "H1", "read", put(Op.SEATED, 0, ins(Op.RAIL, rail=1, step=1)), "before seating is"),
+    ("a channel that is not known", "H8", "read", put(Op.READ_RUN, 0, measure(5, 0, 9)), "a channel that is not known"),
+    ("the rail in a wide window", "H8", "erase", set_(Op.MEASURE, 10, low=400), "a window that no supply has"),
+    ("a third kind of H", "H11", "read", put(Op.READ_RUN, 0, ins(Op.HIGH, how=2)), "a meaning of H that is not known"),
+    ("VCC moved after a pulse", "H7", "erase", put_after(Op.PULSE, 0, ins(Op.RAIL, rail=0, step=1)), "too soon after"),
+    ("too many states", "H5", "read", put(Op.READ_RUN, 0, *many_states()), "too many states to follow"),
+    (
+        "words outside a block", "H5", "read",
+        put(Op.END, 0, ins(Op.EACH_WORD, to="x"), ins(Op.NEXT_WORD), Label("x")), "words outside a block",
+    ),
+    ("D sampled while driven", "H7", "erase", put(Op.PULSE, 0, ins(Op.SAMPLE)), "sampled while the rig drives it"),
     ("a line to no pin", "H11", "read", put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l2="H"))), "meets no pin"),
 ]  # fmt: skip
 
@@ -59,6 +81,20 @@ def test_an_odd_program_is_refused(rule: str, kind: str, bend: Bend, text: str) 
     told = found(kind, bend, rule)
     assert told.startswith(rule)
     assert text in told
+
+
+@pytest.mark.parametrize(
+    ("header", "rule", "text"),
+    [
+        ({"flow": Flow.NONE}, "H5", "blocks in a program whose header says it has none"),
+        ({"words": 0}, "H7", "a flow of no words"),
+    ],
+)
+def test_an_odd_header_is_refused(header: dict[str, Any], rule: str, text: str) -> None:
+    """A good reading under a header that does not fit it."""
+    code = encoded("read", program("read"), **header)
+    proof = prove(code, permit("read", code), CHIP, RIG)
+    assert any(text in one.text for one in by_rule(proof, rule))
 
 
 ONE = ((0, 0xDA), (1, 8))
