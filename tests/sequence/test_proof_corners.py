@@ -13,7 +13,7 @@ from pulsewright.wire.permit import VccStep
 from pulsewright.wire.tables import Flow, Identity, Level, Op
 from tests.sequence.proof_programs import ADDRESS, MS, OFF, ON, Items, by_rule, encoded, lines, measure, permit, program
 from tests.sequence.test_proof_parts import NO_ID, without_gate_level, without_identity
-from tests.sequence.test_proof_rules import CHIP, RIG, Bend, found, put, put_after, set_
+from tests.sequence.test_proof_rules import CHIP, RIG, Bend, drop, found, put, put_after, set_
 
 
 def branch(to: str, depth: int = 0, when: int = 2) -> Instruction:
@@ -71,6 +71,14 @@ CORNERS: list[tuple[str, str, str, Bend, str]] = [
         put(Op.END, 0, ins(Op.EACH_WORD, to="x"), ins(Op.NEXT_WORD), Label("x")), "words outside a block",
     ),
     ("D sampled while driven", "H7", "erase", put(Op.PULSE, 0, ins(Op.SAMPLE)), "sampled while the rig drives it"),
+    ("VCC off, H driven", "H11", "read", put(Op.READ_RUN, 0, ins(Op.RANGE, which=0)), "VCC goes and H is driven"),
+    ("back to the probe", "H1", "read", put(Op.READ_RUN, 0, ins(Op.RANGE, which=1)), "does not come from VCC off"),
+    ("probe at no step", "H3", "read", drop(Op.RAIL), "VCC through the probe at no step"),
+    ("a third range", "H1", "read", put(Op.READ_RUN, 0, ins(Op.RANGE, which=3)), "a range that is not known"),
+    ("supplies pulled up", "H11", "read", put(Op.READ_RUN, 0, ins(Op.BIAS, groups=4, how=2)), "at supply positions"),
+    ("an empty window", "H8", "read", put(Op.READ_RUN, 0, measure(2, 9, 8)), "a window with nothing inside"),
+    ("D driven, no VCC", "H11", "read", put(Op.RELEASE, 0, ins(Op.DRIVE, word=1)), "D is driven without VCC"),
+    ("3.75 V before the gate", "H2", "erase", set_(Op.RAIL, 0, step=1), "at another step than the one to read at"),
     ("a line to no pin", "H11", "read", put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l2="H"))), "meets no pin"),
 ]  # fmt: skip
 
