@@ -16,6 +16,7 @@ from tests.virtual.kit import (
     Host,
     Item,
     build,
+    code_of,
     past_gate,
     permit_for,
     raise_oe,
@@ -98,3 +99,13 @@ def test_vcc_under_3_v_past_the_gate_trips_before_it_has_settled() -> None:
     end = host.end()
     assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.VCC_OUTSIDE)
     assert end.fault["tick"] - begun <= MS + 4
+
+
+def test_a_writing_flow_is_a_write_to_a_permit_that_wants_no_identity() -> None:
+    """With an identify step and without identity even a program that only takes in words to write is refused."""
+    loop: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.NEXT_WORD), Label("block")]
+    for flow, fault in ((Flow.WRITE, Fault.BAD_PERMIT), (Flow.READ, Fault.NONE)):
+        code = build([*seated(), *loop, ins(Op.NEXT_BLOCK), Label("end"), END], flow)
+        changes = {"identity": Identity.NONE, "alternatives": (), "raised": ()}
+        answer = Host().seal(code, permit_for(code, **changes))
+        assert code_of(answer) == fault
