@@ -11,7 +11,20 @@ from pulsewright.sequence.proof import prove
 from pulsewright.wire.ops import Instruction, Label, ins
 from pulsewright.wire.permit import VccStep
 from pulsewright.wire.tables import Flow, Identity, Level, Op
-from tests.sequence.proof_programs import ADDRESS, MS, OFF, ON, Items, by_rule, encoded, lines, measure, permit, program
+from tests.sequence.proof_programs import (
+    ADDRESS,
+    MS,
+    OFF,
+    ON,
+    US,
+    Items,
+    by_rule,
+    encoded,
+    lines,
+    measure,
+    permit,
+    program,
+)
 from tests.sequence.test_proof_parts import NO_ID, without_gate_level, without_identity
 from tests.sequence.test_proof_rules import CHIP, RIG, Bend, drop, found, put, put_after, set_
 
@@ -29,6 +42,9 @@ def many_states() -> Items:
         items += [ins(Op.LINES, lines=bytes([line | Level.HIGH << 6])), Label(f"s{line}")]
     return items
 
+
+LINES_OFF = ins(Op.LINES, lines=OFF)
+PULSE = ins(Op.PULSE, line=22, width=100 * US, max=105 * US)  # CE
 
 CORNERS: list[tuple[str, str, str, Bend, str]] = [
     ("an address outside", "H7", "read", put(Op.READ_RUN, 0, ins(Op.ADDRESS, at=65_536)), "address outside the chip"),
@@ -79,6 +95,26 @@ CORNERS: list[tuple[str, str, str, Bend, str]] = [
     ("an empty window", "H8", "read", put(Op.READ_RUN, 0, measure(2, 9, 8)), "a window with nothing inside"),
     ("D driven, no VCC", "H11", "read", put(Op.RELEASE, 0, ins(Op.DRIVE, word=1)), "D is driven without VCC"),
     ("3.75 V before the gate", "H2", "erase", set_(Op.RAIL, 0, step=1), "at another step than the one to read at"),
+    ("D read in standby", "H7", "read", put(Op.READ_RUN, 0, LINES_OFF, ins(Op.SAMPLE)), "sampled in no mode"),
+    ("compared with nothing", "H7", "read", put(Op.READ_RUN, 0, ins(Op.COMPARE_WORD)), "when none is in hand"),
+    ("nothing compared", "H7", "read", put(Op.READ_RUN, 0, ins(Op.COMPARE_WORD)), "something else than its cell"),
+    ("nothing reported", "H7", "read", put(Op.READ_RUN, 0, ins(Op.REPORT)), "reports something else"),
+    ("a driven line sensed", "H6", "read", put(Op.SENSE, 0, ins(Op.SENSE, line=22, **{"is": 0})), "but not released"),
+    ("a pulse to no level", "H7", "burn", set_(Op.PULSE, line=22 | Level.RELEASED << 6), "a pulse to no level"),
+    ("a pulse before the gate", "H2", "burn", put(Op.GATE, 0, PULSE), "a pulse before the gate"),
+    (
+        "VCC just measured", "H7", "erase",
+        put(Op.PULSE, 0, ins(Op.RAIL, rail=0, step=3), ins(Op.WAIT, ticks=6 * MS), measure(2, 600, 650)),
+        "set-up of VCC before the pulse",
+    ),
+    (
+        "seated on a driven bus", "H7", "read",
+        put(Op.SAMPLE, 1, ins(Op.LINES, lines=ON), ins(Op.LINES, lines=OFF)), "sampled before it floats",
+    ),
+    (
+        "read while A9 falls", "H7", "read",
+        put(Op.READ_RUN, 0, ins(Op.SWITCHES, on=16), ins(Op.SWITCHES, on=0)), "sampled too soon after a raised level",
+    ),
     ("a line to no pin", "H11", "read", put(Op.READ_RUN, 0, ins(Op.LINES, lines=lines(l2="H"))), "meets no pin"),
 ]  # fmt: skip
 
