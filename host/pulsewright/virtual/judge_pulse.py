@@ -64,7 +64,7 @@ class PulseWatch:
         self.began = LONG_AGO
         self.ended = LONG_AGO
         self._last: PulseLimit | None = None
-        self._at: tuple[str, tuple[bool, ...]] | None = None  # kind and address of the last pulse since power-up
+        self._at: tuple[object, ...] | None = None  # kind and address of the last pulse since power-up
         self._pulses = 0  # so many, one after the other
         self.address_t = LONG_AGO
         self.data_t = LONG_AGO
@@ -138,7 +138,7 @@ class PulseWatch:
         self._at = None
 
     def _count(self, t: int, kind: PulseLimit, levels: Levels) -> None:
-        at = kind.name, tuple(level is not None and level >= VIH_MV for level in self._address_of(levels))
+        at = (kind.name,) if kind.low_pins else self._address_of(levels)
         self._pulses = self._pulses + 1 if at == self._at else 1
         self._at = at
         if self._pulses > kind.most:
