@@ -173,6 +173,16 @@ def test_an_abort_says_which_word_is_undefined() -> None:
     assert whole.facts == ()
 
 
+def test_a_cut_erase_pulse_leaves_every_word_undefined() -> None:
+    """The address an erase pulse is given at is no word of its own; the rail that failed is named once."""
+    sequence = compile_erase(DEFINITION, RIG)
+    tripped = error_of(sequence, result(Outcome.TRIPPED, Fault.RAISED_OUTSIDE, address=0x200, pulsing=True))
+    assert "a pulse was cut: every word undefined" in tripped.facts
+    assert tripped.what.count("raised rail") == 1
+    stopped = error_of(sequence, result(Outcome.ABORTED, Fault.ABORTED, address=0x200, pulsing=True))
+    assert stopped.facts == ("a pulse was cut: every word undefined",)
+
+
 @pytest.mark.parametrize("code", [code for code in Fault if Fault.DEAD_MAN <= code <= Fault.NOT_MEASURED])
 def test_every_trip_of_the_wire_is_told(code: Fault) -> None:
     """Each reason to trip becomes a refusal or a trip with words of its own, never a traceback."""

@@ -77,10 +77,18 @@ def translate(
     return _tripped(story)
 
 
+def _cut(story: Story) -> str:
+    """What a pulse that was cut has left undefined: an erase pulse means every word, not the one it was given at."""
+    erase = story.definition.erase
+    whole = story.sequence.kind == "erase" and erase is not None and erase.unit == "chip"
+    what = "every word" if whole else f"word {story.address()}"
+    return f"a pulse was cut: {what} undefined"
+
+
 def _interrupted(story: Story) -> PulsewrightError:
     facts = []
     if story.fault.pulsing:
-        facts.append(f"a pulse was cut: word {story.address()} undefined")
+        facts.append(_cut(story))
     return Interrupted(
         f"interrupted during {story.sequence.title}",
         step=story.step(),
@@ -326,13 +334,13 @@ def _tripped(story: Story) -> PulsewrightError:
     text = _TRIPS.get(Fault(code), Fault(code).name.lower()) if known else f"reason {code}"
     facts = [f"after {show_ticks(story.fault.tick)} on the rig's clock"]
     if story.fault.pulsing:
-        facts.append(f"a pulse was cut: word {story.address()} undefined")
+        facts.append(_cut(story))
     wanted = got = ""
     if code in (
         Fault.MEASURED_OUTSIDE, Fault.VCC_OUTSIDE, Fault.RAISED_OUTSIDE, Fault.STILL_RAISED, Fault.STILL_POWERED
     ):  # fmt: skip
         name, got, wanted = measured(story)
-        text = f"{text}: {name}"
+        text += "" if name in text else f": {name}"
     return Tripped(
         f"the rig tripped: {text}",
         where=story.where(),
