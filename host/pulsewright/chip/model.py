@@ -128,10 +128,61 @@ class PulseStep:
 
 @dataclass(frozen=True)
 class ExpectStep:
-    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: compare D; if equal, ends the repeat around it."""
+    """{ expect = "image" } or { expect = 0xFF, mask = 0x80 }: D, in the mode in force, compared.
+
+    In a repeat, at its top level: equal ends the repeat at the end of the turn. With `else_`: unequal runs these steps,
+    which begin and must end in the mode in force at the expect; equal goes on behind. Anywhere else unequal fails.
+    """
 
     value: str | int
     mask: int = 0xFF
+    where: Where = field(default_factory=Where)
+    else_: tuple[Step, ...] = ()
+
+
+@dataclass(frozen=True)
+class Cycle:
+    """One bus write cycle: `word` at address `at`; both None for "image", the word in hand at its own address."""
+
+    at: int | None
+    word: int | None
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class WriteStep:
+    """{ write = "protect_on" } or { write = ["AA@5555", "55@2AAA", "image"] }: bus write cycles, back to back.
+
+    In the mode and with the strobe of `[write]`; `command` is the name in `[commands]` or "". "image" only as the last
+    cycle, inside a loop over words.
+    """
+
+    cycles: tuple[Cycle, ...]
+    command: str = ""
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class LoadStep:
+    """{ load = "page" }: the words of the page in hand that are to be written, back to back, as bus write cycles.
+
+    Directly behind a WriteStep the cycles belong to one load: nothing longer than the load gap comes between.
+    """
+
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class PollStep:
+    """{ poll = "DQ7", mode = "read", within = "tWC" }: reads the chip in `mode` until it has done its work.
+
+    `bit`: "DQ7" (data polling: equals bit 7 of the word last written) or "DQ6" (stops toggling). Not done within the
+    maximum of `timing`: failed.
+    """
+
+    bit: str
+    mode: str
+    timing: str
     where: Where = field(default_factory=Where)
 
 
@@ -156,14 +207,55 @@ class RepeatStep:
 
 @dataclass(frozen=True)
 class EachStep:
-    """{ each = "word", steps = [...] }: once for each word of the image that is to be written."""
+    """{ each = "word", steps = [...] }: once for each word of the image that is to be written.
 
-    unit: str  # "word" (others: "page", "sector")
+    Each = "page": once for each page that has such words; an each = "word" inside it: once for each word of that page.
+    """
+
+    unit: str  # "word" or "page"
     steps: tuple[Step, ...]
     where: Where = field(default_factory=Where)
 
 
-Step = ModeStep | WaitStep | PulseStep | ExpectStep | RepeatStep | EachStep
+Step = ModeStep | WaitStep | PulseStep | ExpectStep | RepeatStep | EachStep | WriteStep | LoadStep | PollStep
+
+
+@dataclass(frozen=True)
+class BusWrite:
+    """[write]: how a bus write cycle is made: in `mode`, `pin` goes to `to` for `timing` and back.
+
+    Set-ups are the timing parameters tAS, tDS, tOES, tCS, holds tAH, tDH, tOEH, tCH, pause tWPH, tWPH2 (after the last
+    cycle of a command, before a load), as far as the definition has them, by their minima. `gap`: the window from load
+    to load of one page ("tBLC") or "". `busy`: the longest time the part works by itself after a write ("tWC").
+    """
+
+    mode: str
+    pin: str
+    to: str  # "L" or "H"
+    timing: str  # name of a Window with a min; a max binds where there is one
+    gap: str = ""
+    busy: str = ""
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class CommandIdentify:
+    """[identify] command: the ID is read in `mode` between the cycles `enter` and `leave`, `settle_ps` after each."""
+
+    enter: tuple[Cycle, ...]
+    leave: tuple[Cycle, ...]
+    mode: str
+    settle_ps: int = 0
+    where: Where = field(default_factory=Where)
+
+
+@dataclass(frozen=True)
+class Protect:
+    """[protect]: software data protection: the steps that switch it on and off; each ends in standby or can from there."""
+
+    on: tuple[Step, ...]
+    off: tuple[Step, ...]
+    where: Where = field(default_factory=Where)
 
 
 @dataclass(frozen=True)
@@ -175,6 +267,7 @@ class Method:
     steps: tuple[Step, ...]
     finally_: tuple[Step, ...] = ()
     where: Where = field(default_factory=Where)
+    unloaded: str = ""  # unit "page": what becomes of words that are not loaded: "kept", "undefined", "0xFF" (blank)
 
 
 @dataclass(frozen=True)
@@ -211,6 +304,12 @@ class Definition:
     erase: Method | None
     verify: tuple[VerifyPass, ...]
     notes: tuple[str, ...] = ()
+    page: int = 0  # words of a page; 0: the part has none
+    write: BusWrite | None = None
+    commands: Mapping[str, tuple[Cycle, ...]] = field(default_factory=dict)
+    identify_command: CommandIdentify | None = None  # when identify == "command"
+    protect: Protect | None = None
+    protected: Method | None = None  # [program.protected]: how a part with protection on is written
     digest: str = ""  # sha-256 of the resolved definition (file, methods, row), hex
     raw: Mapping[str, object] = field(default_factory=dict)  # the resolved TOML tree
 
