@@ -56,7 +56,7 @@ class PlainChip:
         self.deaf = 0  # so many pulses are not taken
         self.draw = {PIN_VCC: 1_000, PIN_OE: 100, PIN_A9: 0}
         self.pulse_ua = 20_000
-        self.toggles = 0  # reads in which bit 6 alternates and bit 7 is wrong
+        self.toggles = 0  # looks in which bit 6 alternates and bit 7 is wrong
         self.pulses: list[tuple[int, int]] = []
         self._levels: list[int | None] = [None] * 29
         self._begun: int | None = None
@@ -65,7 +65,10 @@ class PlainChip:
         return self._levels[pin] or 0
 
     def pins_changed(self, t: int, levels: Levels) -> None:
+        was_on = self._enabled()
         self._levels = list(levels)
+        if self.toggles and self._enabled() and not was_on:
+            self.toggles -= 1
         pulsing = self._mv(PIN_OE) > 9_000 and self._mv(PIN_CE) < 800 and self._mv(PIN_VCC) > 4_000
         if pulsing and self._begun is None:
             self._begun = t
@@ -80,14 +83,16 @@ class PlainChip:
     def _address(self) -> int:
         return sum((self._mv(pin) >= 2_000) << bit for bit, pin in enumerate(PINS_A))
 
+    def _enabled(self) -> bool:
+        return self._mv(PIN_VCC) >= 3_000 and self._mv(PIN_CE) <= 800 and self._mv(PIN_OE) <= 800
+
     def drive(self, t: int) -> tuple[int, int]:
-        if self._mv(PIN_VCC) < 3_000 or self._mv(PIN_CE) > 800 or self._mv(PIN_OE) > 800:
+        if not self._enabled():
             return 0, 0
         if self._mv(PIN_A9) > 9_000 and self.id is not None:
             return 0xFF, self.id[self._address() & 1]
         word = self.cells[self._address()]
         if self.toggles:
-            self.toggles -= 1
             word ^= 0x80 | (0x40 if self.toggles & 1 else 0)
         return 0xFF, word
 

@@ -190,8 +190,8 @@ def test_page_load_writes_the_block_back_to_back() -> None:
 
 def test_write_poll_waits_for_the_chip_and_fails_without_it() -> None:
     """The word in hand is written at its address and polled with the outputs on."""
-    op = ins(Op.WRITE_POLL, strobe=line_byte(CE, L), setup=S, width=16, hold=HD, enable=BOTH_LOW, disable=BOTH_HIGH,
-             float=FL, kind=PollKind.EQUAL, mantissa=50, exponent=4)
+    op = ins(Op.WRITE_POLL, strobe=line_byte(CE, L), setup=S, width=16, hold=HD, kind=PollKind.EQUAL,
+             enable=BOTH_LOW, access=AC, disable=BOTH_HIGH, gap=FL, mantissa=50, exponent=4)
     items: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), op, ins(Op.NEXT_WORD),
                          Label("block"), ins(Op.NEXT_BLOCK), Label("end")]
     block = [(0, 1, write_block(b"\x42"))]

@@ -207,8 +207,9 @@ def test_the_rail_answers_with_the_level_at_the_position() -> None:
 
 def polled(kind: PollKind, chip: PlainChip, *, mantissa: int = 200, exponent: int = 4) -> End:
     """Polls word 0x81 at address 0 in a word loop; fails where the limit passes."""
-    body: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.ADDRESS_WORD), ENABLE,
-            ins(Op.POLL, kind=kind, mantissa=mantissa, exponent=exponent), DISABLE,
+    body: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.ADDRESS_WORD),
+            ins(Op.POLL, kind=kind, enable=ENABLE.args["lines"], access=16, disable=DISABLE.args["lines"], gap=8,
+                mantissa=mantissa, exponent=exponent),
             ins(Op.BRANCH, when=1, depth=2, to="good"), ins(Op.FAIL, why=Fail.POLL), Label("good"),
             ins(Op.NEXT_WORD), Label("block"), ins(Op.NEXT_BLOCK), Label("end")]
     return work(body, chip=chip, flow=Flow.WRITE, blocks=[(0, 1, write_block(b"\x81"))])[0]

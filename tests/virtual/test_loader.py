@@ -156,8 +156,8 @@ def test_a_pulse_without_an_end_is_refused(item: Instruction) -> None:
         ins(Op.MEASURE, channel=3, low=0, high=1, limit=1),
         ins(Op.MEASURE, channel=21, low=0, high=1, limit=1),
         ins(Op.MEASURE, channel=2, low=2, high=1, limit=1),
-        ins(Op.POLL, kind=4, mantissa=1, exponent=1),
-        ins(Op.POLL, kind=0, mantissa=1, exponent=30),
+        ins(Op.POLL, kind=4, enable=b"", access=1, disable=b"", gap=1, mantissa=1, exponent=1),
+        ins(Op.POLL, kind=0, enable=b"", access=1, disable=b"", gap=1, mantissa=1, exponent=30),
     ],
     ids=str,
 )

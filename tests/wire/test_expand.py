@@ -20,7 +20,7 @@ FUSED = [
     ins(Op.PULSE_VERIFY, tries=25, switches=4, setup=1, line=22, width=10, max=11, hold=2, fall=3, recover=4, enable=ON,
         access=5, disable=OFF, float=6, factor=3, over_max=99),
     ins(Op.BUS_WRITES, **STROBE, cycles=((0x5555, 0xAA), (0x2AAA, 0x55))),
-    ins(Op.WRITE_POLL, **STROBE, enable=ON, disable=OFF, float=6, kind=0, mantissa=3, exponent=4),
+    ins(Op.WRITE_POLL, **STROBE, kind=0, enable=ON, access=5, disable=OFF, gap=6, mantissa=3, exponent=4),
     ins(Op.PAGE_LOAD, **STROBE),
 ]
 OPENING = (Op.LOOP, Op.EACH_BLOCK, Op.EACH_WORD)

@@ -251,7 +251,7 @@ class CommandIdentify:
 
 @dataclass(frozen=True)
 class Protect:
-    """[protect]: software data protection: the steps that switch it on and off; each ends in standby or can from there."""
+    """[protect]: software data protection: the steps that switch it on and off, from standby to standby."""
 
     on: tuple[Step, ...]
     off: tuple[Step, ...]

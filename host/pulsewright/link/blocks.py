@@ -22,6 +22,7 @@ class _Sent:
     index: int
     block: Block
     frame: Message
+    turn: int  # which pass over the data it belongs to
     answered: bool = False
     asked_again: bool = False
 
@@ -35,11 +36,14 @@ def requests(first: int, last: int, words: int) -> Iterator[Block]:
 class Window:
     """Blocks under way, at most `size` from the oldest unanswered one on; each reply is counted exactly once.
 
-    The end of data (words = 0) goes out when every block before it is answered: the rig then needs no kept reply.
+    The end of data (words = 0) goes out when every block before it is answered: the rig then needs no kept reply. A
+    program may want the data several times (`header.passes`): then the blocks go out again after each end of data.
     """
 
     def __init__(self, blocks: Iterable[Block], header: Header, permit: int, size: int) -> None:
-        self._source = iter(blocks)
+        self._blocks = tuple(blocks) if header.passes > 1 else blocks
+        self._source = iter(self._blocks)
+        self._turn = 0
         self._header = header
         self._permit = permit
         self._size = max(1, size)
@@ -71,22 +75,32 @@ class Window:
     def due(self) -> list[Message]:
         """New frames that the window has room for now."""
         frames = []
-        while not self._exhausted and len(self._sent) < self._size:
-            block = next(self._source, None)
-            if block is None:
-                self._exhausted = True
-                break
-            frames.append(self._append(block))
-        if self._exhausted and not self._ended and not self._sent:
-            self._ended = True
+        while True:
+            while not self._exhausted and len(self._sent) < self._room:
+                block = next(self._source, None)
+                if block is None:
+                    self._exhausted = True
+                    break
+                frames.append(self._append(block))
+            if not self._exhausted or self._ended or any(sent.block.words for sent in self._sent):
+                return frames
             frames.append(self._append(Block(0, 0)))
-        return frames
+            self._turn += 1
+            if self._turn >= self._header.passes:
+                self._ended = True
+                return frames
+            self._source, self._exhausted = iter(self._blocks), False
+
+    @property
+    def _room(self) -> int:
+        """Frames that may be under way: an end of data has no answer of its own and takes no block's place."""
+        return self._size + sum(not sent.block.words for sent in self._sent)
 
     def _append(self, block: Block) -> Message:
         data = self._payload(block)
         fields = {"first": block.first, "words": block.words, "data": data}
         frame = Message(Frame.BLOCK, self._permit, self._next % _WRAP, fields)
-        self._sent.append(_Sent(self._next, block, frame))
+        self._sent.append(_Sent(self._next, block, frame, self._turn))
         self._next += 1
         return frame
 
@@ -116,6 +130,8 @@ class Window:
         sent.answered = True
         self._answered_ever += 1
         self._round = None
+        for other in self._sent:
+            other.answered |= other.index < sent.index and not other.block.words  # an end of data that was surely taken
         while self._sent and self._sent[0].answered:
             self._sent.popleft()
         lost = [other for other in self._sent if other.index < sent.index and not other.answered]
@@ -133,15 +149,18 @@ class Window:
                 raise RigFault(f"block {sent.index} came back with the wrong length",
                                wanted=f"{size} bytes", got=f"{len(data)} bytes", hint="flash the rig's firmware anew")
             self._data[sent.index] = bytes(data)
-            self.results.append(BlockDone(sent.index, block.first, block.words))
+            self.results.append(BlockDone(sent.index, block.first, block.words, turn=sent.turn))
             return
         fields = message.fields
         failed = None if fields["failed"] == _NONE_FAILED else fields["failed"]
         raw = fields["histogram"]
         histogram = tuple(int.from_bytes(raw[i : i + 2], "little") for i in range(0, len(raw) - 1, 2))
         self.results.append(
-            BlockDone(sent.index, block.first, block.words, fields["worst"], fields["worst_tries"], failed, histogram)
-        )
+            BlockDone(
+                sent.index, block.first, block.words, fields["worst"], fields["worst_tries"], failed, histogram,
+                written=fields["words"], turn=sent.turn,
+            )
+        )  # fmt: skip
 
     def refused(self, message: Message) -> list[Message]:
         """Goes back to the block that the rig wants; later refusals of the same loss change nothing."""

@@ -22,7 +22,10 @@ class Block:
 
 @dataclass(frozen=True)
 class BlockDone:
-    """What became of a block; `failed` is the first word that would not take, `histogram` words by number of tries."""
+    """What became of a block; `failed` is the first word that would not take, `histogram` words by number of tries.
+
+    `written`: words that were written at all; `turn`: which pass over the data the block belongs to, from 0.
+    """
 
     index: int
     first: int
@@ -31,6 +34,8 @@ class BlockDone:
     worst_tries: int = 0
     failed: int | None = None
     histogram: tuple[int, ...] = ()
+    written: int = 0
+    turn: int = 0
 
 
 @dataclass(frozen=True)

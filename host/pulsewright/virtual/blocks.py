@@ -50,8 +50,9 @@ class Blocks:
         self._send = send
         self._wanted = 0
         self._promised = 0  # words of all blocks accepted
-        self._ended = False
-        self.over = False  # the end of data was taken: no block will come any more
+        self._passes = header.passes  # ends of data still to come
+        self._to_end = header.passes  # ends of data still to be taken
+        self.over = False  # the last end of data was taken: no block will come any more
         self._kept: dict[int, bytes] = {}
         self._block = Block(0, 0, 0, [])
         self._histogram = [0] * HISTOGRAM
@@ -63,7 +64,7 @@ class Blocks:
     def receive(self, message: Message) -> None:
         """A block frame: lower than wanted = the kept reply again, equal = queued, higher = refused; or BadBlock."""
         behind = (self._wanted - message.index) % _WRAP
-        if behind == 0 and len(self.queue) < self._window and not self._ended:
+        if behind == 0 and len(self.queue) < self._window and self._passes > 0:
             self.queue.append(self._checked(message))
             self._wanted = (self._wanted + 1) % _WRAP
             return
@@ -89,7 +90,7 @@ class Blocks:
         if header.flow is Flow.READ or count == 0:
             if data:
                 raise BadBlock(Fault.BAD_BLOCK)
-            self._ended = count == 0
+            self._passes -= count == 0
             return Block(message.index, first, count, [(first + at, 0) for at in range(count)])
         mask_bytes = (count + 7) // 8
         mask, words = data[:mask_bytes], data[mask_bytes:]
@@ -106,17 +107,21 @@ class Blocks:
         m.report = bytearray()
         self._histogram = [0] * HISTOGRAM
         self._written, self._worst = 0, (0, 0)
-        self.over = block.count == 0
-        return self.over
+        if block.count:
+            return False
+        self._to_end -= 1
+        self.over = self._to_end <= 0
+        return True
 
     def words_of_block(self) -> Iterator[tuple[int, int]]:
         """Address and word of each word that is not to be left."""
         return iter(self._block.words)
 
     def count_word(self, address: int, tries: int) -> None:
-        """A word was written with so many tries (0, where the program has no loop, counts as 1)."""
-        tries = tries or 1
+        """A word was written with so many tries; 0, where no counted loop was around it, is in no histogram."""
         self._written += 1
+        if tries == 0:
+            return
         self._histogram[min(tries, HISTOGRAM) - 1] += 1
         if tries > self._worst[1]:
             self._worst = (address, tries)

@@ -19,6 +19,7 @@ Maker = Callable[[Machine, ops.Args, int], ops.Step]
 _MAKERS: dict[Op, Maker] = {
     Op.END: ops_flow.end,
     Op.FAIL: ops_read.fail,
+    Op.FAILING: ops_read.failing,
     Op.HIGH: ops.high,
     Op.LINES: ops.lines,
     Op.ADDRESS: ops.address,
@@ -71,13 +72,13 @@ def bind(m: Machine, loaded: Loaded, blocks: Blocks) -> None:
         elif op is Op.EACH_BLOCK:
             step = ops_flow.each_block(m, blocks, args["to"], after)
         elif op is Op.NEXT_BLOCK:
+            if loaded.header.flow is Flow.WRITE:
+                m.writing.update(range(opening, place))
             step = ops_flow.next_block(m, blocks, opening)
         elif op is Op.EACH_WORD:
             step = ops_flow.each_word(m, blocks, args["to"], after)
         elif op is Op.NEXT_WORD:
             writes = loaded.header.flow is Flow.WRITE
-            if writes:
-                m.writing.update(range(opening, place))
             step = ops_flow.next_word(m, blocks, opened["to"], opening + 1, writes=writes)
         else:
             step = _MAKERS[op](m, args, after)
@@ -140,7 +141,7 @@ def fault_of(m: Machine, trip: Trip) -> dict[str, int]:
     return {
         "code": int(trip.code),
         "op": m.op_codes[m.pc],
-        "pc": m.offsets[m.pc],
+        "pc": m.offsets[m.noted.pc if m.noted is not None and trip.outcome is Outcome.FAILED else m.pc],
         "tick": m.t & 0xFFFFFFFF,
         "got": trip.got & 0xFFFF,
         "low": trip.low & 0xFFFF,

@@ -126,7 +126,7 @@ def _check_header(header: Header) -> None:
         and all(_is_free_line(line) for line in lines)
         and len(set(lines)) == len(lines)
         and len(lines) <= 24
-        and (header.flow is Flow.NONE or 0 < header.block_words <= BLOCK_BYTES)
+        and (header.flow is Flow.NONE or (0 < header.block_words <= BLOCK_BYTES and header.passes > 0))
     )
     if not fits:
         raise Unfit(Fault.BAD_ARGUMENT)
@@ -161,6 +161,12 @@ def _rail_fits(a: Mapping[str, Any]) -> bool:
     return a["rail"] in steps and a["step"] < steps[a["rail"]]
 
 
+def _poll_fits(a: Mapping[str, Any]) -> bool:
+    if not (_lines_fit(a["enable"]) and _lines_fit(a["disable"])):
+        return False
+    return bool(a["kind"] <= PollKind.TOGGLE_6_LIMIT_5 and a["exponent"] <= _MOST_EXPONENT and a["mantissa"] > 0)
+
+
 _FITS: dict[Op, Callable[[Mapping[str, Any]], bool]] = {
     Op.HIGH: lambda a: a["how"] <= 1,
     Op.LINES: lambda a: _lines_fit(a["lines"]),
@@ -174,7 +180,7 @@ _FITS: dict[Op, Callable[[Mapping[str, Any]], bool]] = {
     Op.BIAS: lambda a: 0 < a["groups"] <= _MOST_GROUPS and a["how"] <= Bias.UP,
     Op.MEASURE: lambda a: _channel_fits(a["channel"]) and a["low"] <= a["high"],
     Op.BRANCH: lambda a: a["when"] <= 2,
-    Op.POLL: lambda a: a["kind"] <= PollKind.TOGGLE_6_LIMIT_5 and a["exponent"] <= _MOST_EXPONENT,
+    Op.POLL: lambda a: _poll_fits(a),
     Op.SCAN: lambda a: a["count"] > 0 and (a["count"] <= 65_536 or a["count"] % 65_536 == 0),
     Op.PULSE_VERIFY: lambda a: (
         _pulse_line_fits(a["line"])
@@ -183,13 +189,7 @@ _FITS: dict[Op, Callable[[Mapping[str, Any]], bool]] = {
         and _lines_fit(a["disable"])
     ),
     Op.BUS_WRITES: lambda a: _pulse_line_fits(a["strobe"]) and all(word <= 0xFF for _, word in a["cycles"]),
-    Op.WRITE_POLL: lambda a: (
-        _pulse_line_fits(a["strobe"])
-        and _lines_fit(a["enable"])
-        and _lines_fit(a["disable"])
-        and a["kind"] <= PollKind.TOGGLE_6_LIMIT_5
-        and a["exponent"] <= _MOST_EXPONENT
-    ),
+    Op.WRITE_POLL: lambda a: _pulse_line_fits(a["strobe"]) and _poll_fits(a),
     Op.PAGE_LOAD: lambda a: _pulse_line_fits(a["strobe"]),
 }
 _ENDS: dict[Op, Callable[[Mapping[str, Any]], bool]] = {

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Generator, Iterator
+from dataclasses import dataclass
 from typing import TYPE_CHECKING
 
 from pulsewright.virtual.board import (
@@ -45,6 +46,17 @@ class Ended(Exception):
     """The `end` op."""
 
 
+@dataclass(frozen=True)
+class Noted:
+    """Where and why the work failed, before the chip was put in order."""
+
+    why: int
+    pc: int
+    address: int
+    sample: int
+    kept: int
+
+
 class Machine:
     """One run of one program. Times are ticks; every refusal is a Trip raised before anything moved."""
 
@@ -62,7 +74,7 @@ class Machine:
         self.code: list[Callable[[], int]] = []
         self.offsets: list[int] = []  # byte offset of the op that each entry of `code` came from
         self.op_codes: list[int] = []
-        self.writing: set[int] = set()  # entries of `code` inside a loop over words that are written
+        self.writing: set[int] = set()  # entries of `code` inside a loop over blocks that are written
         self.pc = 0
         self.slow: Waiting | None = None
         self.blocks: Blocks | None = None
@@ -72,6 +84,8 @@ class Machine:
         self.kept = 0
         self.flag = False
         self.tries = 0
+        self.wrote = False  # the word in hand was driven in this turn of the word loop
+        self.noted: Noted | None = None  # what `failing` noted
         self.turns = [0, 0, 0]
         self.words: Iterator[tuple[int, int]] = iter(())
         self.report = bytearray()

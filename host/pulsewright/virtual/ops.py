@@ -165,6 +165,7 @@ def drive_word(m: Machine, a: Args, after: int) -> Step:
 
     def step() -> int:
         _drive(m, m.word)
+        m.wrote = True
         return after
 
     return step

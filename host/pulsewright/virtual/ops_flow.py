@@ -117,21 +117,21 @@ def each_word(m: Machine, blocks: Blocks, to: int, after: int) -> Step:
 
 def _advance(m: Machine, to: int, body: int) -> int:
     for address, word in m.words:
-        m.address, m.word, m.tries = address, word, 0
+        m.address, m.word, m.tries, m.wrote = address, word, 0, False
         return body
     return to
 
 
 def next_word(m: Machine, blocks: Blocks, to: int, body: int, *, writes: bool) -> Step:
-    """Counts a word written and its tries, then on to the next word of the block."""
+    """Counts a word that was driven, and its tries, then on to the next word of the block."""
     count = blocks.count_word if writes else None
 
     def step() -> int:
-        if count is not None:
+        if count is not None and m.wrote:
             count(m.address, m.tries)
         m.t += 2 * _COST
         for address, word in m.words:
-            m.address, m.word, m.tries = address, word, 0
+            m.address, m.word, m.tries, m.wrote = address, word, 0, False
             return body
         return to
 

@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from pulsewright.virtual.machine import Machine, Trip, Waiting
-from pulsewright.virtual.ops import Args, Step
+from pulsewright.virtual.machine import Machine, Noted, Trip, Waiting, until
+from pulsewright.virtual.ops import Args, LinesSet, Step
 from pulsewright.wire.tables import OP_COST, Fail, Fault, Op, Outcome, PollKind
 
 _COST = OP_COST[Op.SAMPLE]
@@ -94,25 +94,44 @@ def report(m: Machine, a: Args, after: int) -> Step:
 
 
 def poll(m: Machine, a: Args, after: int) -> Step:
-    """Samples until the kind is met, at most mantissa x 2^exponent ticks from now."""
+    """Looks until the kind is met, at most mantissa x 2^exponent ticks from now."""
     kind, limit = PollKind(a["kind"]), a["mantissa"] << a["exponent"]
+    look = _Look(m, a)
 
     def step() -> int:
-        m.slow = _poll_on(m, kind, m.t + limit, after)
+        m.slow = _poll_on(m, look, kind, m.t + limit, after)
         return -1
 
     return step
 
 
-def _poll_on(m: Machine, kind: PollKind, limit: int, after: int) -> Waiting:
-    cost, data = OP_COST[Op.POLL], m.socket.data
-    before = data(m.t)
-    toggling = kind in (PollKind.TOGGLE_6, PollKind.TOGGLE_6_LIMIT_5)
-    while True:
-        m.t += cost
+class _Look:
+    """One look of a poll: outputs on, the access time, a sample, outputs off, the pause before the next."""
+
+    def __init__(self, m: Machine, a: Args) -> None:
+        self._enable, self._disable = LinesSet(m, a["enable"]), LinesSet(m, a["disable"])
+        self._access, self._gap = a["access"], a["gap"]
+
+    def take(self, m: Machine) -> Waiting:
+        """Yields what it waits for; gives the sample."""
+        self._enable.apply(m)
+        m.edge = m.t
+        yield from until(m, m.t + max(self._access, 1))
+        word = m.sample = m.socket.sample(m.t)
+        m.t += OP_COST[Op.POLL]
+        self._disable.apply(m)
+        m.edge = m.t
+        yield from until(m, m.t + max(self._gap, 1))
         if m.t >= m.next_event:
             yield None
-        now = m.sample = data(m.t)
+        return word
+
+
+def _poll_on(m: Machine, look: _Look, kind: PollKind, limit: int, after: int) -> Waiting:
+    toggling = kind in (PollKind.TOGGLE_6, PollKind.TOGGLE_6_LIMIT_5)
+    before = (yield from look.take(m)) if toggling else 0
+    while True:
+        now = yield from look.take(m)
         still = bool((now ^ before) & _BIT_6)
         if toggling:
             met = not still
@@ -129,9 +148,26 @@ def _poll_on(m: Machine, kind: PollKind, limit: int, after: int) -> Waiting:
 
 
 def fail(m: Machine, a: Args, after: int) -> Step:
-    """The sequence ends: failed."""
+    """The sequence ends: failed, here or where `failing` noted it."""
 
     def step() -> int:
-        raise Trip(Fault.FAILED, got=a["why"], outcome=Outcome.FAILED)
+        noted = m.noted
+        if noted is not None:
+            m.address, m.sample, m.kept = noted.address, noted.sample, noted.kept
+        raise Trip(Fault.FAILED, got=noted.why if noted else a["why"], outcome=Outcome.FAILED)
+
+    return step
+
+
+def failing(m: Machine, a: Args, after: int) -> Step:
+    """The work failed here: noted, and told in the block's reply; the program goes on to put the chip in order."""
+
+    def step() -> int:
+        if m.noted is None:
+            m.noted = Noted(a["why"], m.pc, m.address, m.sample, m.kept)
+            if m.pc in m.writing and m.blocks is not None:
+                m.blocks.fail(m, m.address)
+        m.t += _COST
+        return after
 
     return step

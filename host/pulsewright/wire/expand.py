@@ -10,7 +10,7 @@ from collections.abc import Callable, Mapping
 from typing import Any
 
 from pulsewright.wire.ops import Instruction, Label, ins
-from pulsewright.wire.tables import Fail, Op
+from pulsewright.wire.tables import OP_ARGS, Fail, Op
 
 Item = Instruction | Label
 _WRAP = 65_536
@@ -127,10 +127,7 @@ def _write_poll(a: Mapping[str, Any], base: int) -> list[Item]:
         ins(Op.DRIVE_WORD),
         *_strobe(a),
         ins(Op.RELEASE),
-        ins(Op.LINES, lines=a["enable"]),
-        ins(Op.POLL, kind=a["kind"], mantissa=a["mantissa"], exponent=a["exponent"]),
-        ins(Op.LINES, lines=a["disable"]),
-        ins(Op.WAIT, ticks=a["float"]),
+        ins(Op.POLL, **{name: a[name] for name, _ in OP_ARGS[Op.POLL]}),
         ins(Op.BRANCH, when=1, depth=base, to=".done"),
         ins(Op.FAIL, why=Fail.POLL),
         Label(".done"),

@@ -52,13 +52,14 @@ def ins(op: Op, **args: Any) -> Instruction:
 
 @dataclass(frozen=True)
 class Header:
-    """The routine header: word width, what blocks carry, line of each address bit, bound of words, words a block."""
+    """The routine header: word width, what blocks carry, line of each address bit, bounds of words, passes over the data."""
 
     width: int
     flow: Flow
     address: tuple[int, ...]
     words: int
     block_words: int
+    passes: int = 1
 
     def encode(self) -> bytes:
         """The header's bytes."""
@@ -68,6 +69,7 @@ class Header:
                 "version": HEADER_VERSION,
                 "width": self.width,
                 "flow": self.flow,
+                "passes": self.passes,
                 "address": bytes(self.address),
                 "words": self.words,
                 "block_words": self.block_words,
@@ -105,7 +107,8 @@ def decode_program(data: bytes) -> Program:
         raise WireMistake(f"unknown flow {values['flow']}") from None
     if values["width"] not in (8, 16):
         raise WireMistake(f"word width {values['width']}; 8 or 16 are known")
-    header = Header(values["width"], flow, tuple(values["address"]), values["words"], values["block_words"])
+    sizes = values["words"], values["block_words"], values["passes"]
+    header = Header(values["width"], flow, tuple(values["address"]), *sizes)
     code = []
     while at < len(data):
         instruction, end = decode_instruction(data, at)

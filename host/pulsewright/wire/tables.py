@@ -15,6 +15,7 @@ class Op(IntEnum):
 
     END = 1
     FAIL = 2
+    FAILING = 37
     HIGH = 3
     LINES = 4
     ADDRESS = 5
@@ -226,7 +227,7 @@ class PollKind(IntEnum):
     TOGGLE_6_LIMIT_5 = 3
 
 
-FINGERPRINT: Final = 0xA395DEED
+FINGERPRINT: Final = 0xEA7135D0
 LAYOUT: Final = 1
 ABORT_RUN: Final = 4
 HELLO_BAUD: Final = 38400
@@ -235,7 +236,7 @@ HELLO_MAGIC: Final = b'PWr1'
 HELLO_LENGTH: Final = 32
 HELLO_FIELDS: Final[Fields] = (('layout', 'u8'), ('window_blocks', 'u8'), ('receive_bytes', 'u16'), ('fingerprint', 'u32'), ('boot', 'u32'), ('fault', 'u8'), ('fault_op', 'u8'), ('fault_pc', 'u16'), ('fault_tick', 'u32'), ('fault_got', 'u16'), ('fault_low', 'u16'))
 HEADER_VERSION: Final = 1
-HEADER_LAYOUT: Final[Fields] = (('version', 'u8'), ('width', 'u8'), ('flow', 'u8'), ('address', 'u8*'), ('words', 'u32'), ('block_words', 'u16'))
+HEADER_LAYOUT: Final[Fields] = (('version', 'u8'), ('width', 'u8'), ('flow', 'u8'), ('passes', 'u8'), ('address', 'u8*'), ('words', 'u32'), ('block_words', 'u16'))
 PERMIT_LAYOUT: Final[Fields] = (('number', 'u16'), ('boot', 'u32'), ('identity', 'u8'), ('alternatives', (('cells', (('at', 'u32'), ('is', 'u16'))),)), ('identify_switch', 'u8'), ('identify_step', 'u8'), ('identify_ceiling', 'u16'), ('raised', (('switch', 'u8'), ('ceiling', 'u16'))), ('vcc', (('step', 'u8'), ('low', 'u16'), ('high', 'u16'), ('settle', 'u32'))), ('vcc_to', 'u8'), ('drives', (('lines', 'u8*'),)), ('safe', 'u8*'), ('self_timed', 'u32'), ('crc32', 'u32'))
 PROGRAM_BYTES: Final = 1024
 LOOP_DEPTH: Final = 3
@@ -257,6 +258,7 @@ CONVERTER_OFF_MS: Final = 100
 OP_ARGS: Final[dict[Op, Fields]] = {
     Op.END: (),
     Op.FAIL: (('why', 'u8'),),
+    Op.FAILING: (('why', 'u8'),),
     Op.HIGH: (('how', 'u8'),),
     Op.LINES: (('lines', 'u8*'),),
     Op.ADDRESS: (('at', 'u32'),),
@@ -289,18 +291,19 @@ OP_ARGS: Final[dict[Op, Fields]] = {
     Op.EACH_WORD: (('to', 'u16'),),
     Op.NEXT_WORD: (),
     Op.REPORT: (),
-    Op.POLL: (('kind', 'u8'), ('mantissa', 'u8'), ('exponent', 'u8')),
+    Op.POLL: (('kind', 'u8'), ('enable', 'u8*'), ('access', 'u32'), ('disable', 'u8*'), ('gap', 'u32'), ('mantissa', 'u8'), ('exponent', 'u8')),
     Op.OVER_PULSE: (('line', 'u8'), ('unit', 'u32'), ('factor', 'u8'), ('max', 'u32')),
     Op.READ_RUN: (('wait', 'u32'),),
     Op.SCAN: (('first', 'u32'), ('count', 'u32'), ('word', 'u16'), ('wait', 'u32')),
     Op.PULSE_VERIFY: (('tries', 'u16'), ('switches', 'u8'), ('setup', 'u32'), ('line', 'u8'), ('width', 'u32'), ('max', 'u32'), ('hold', 'u32'), ('fall', 'u32'), ('recover', 'u32'), ('enable', 'u8*'), ('access', 'u32'), ('disable', 'u8*'), ('float', 'u32'), ('factor', 'u8'), ('over_max', 'u32')),
     Op.BUS_WRITES: (('strobe', 'u8'), ('setup', 'u32'), ('width', 'u32'), ('hold', 'u32'), ('cycles', 'cycle*')),
-    Op.WRITE_POLL: (('strobe', 'u8'), ('setup', 'u32'), ('width', 'u32'), ('hold', 'u32'), ('enable', 'u8*'), ('disable', 'u8*'), ('float', 'u32'), ('kind', 'u8'), ('mantissa', 'u8'), ('exponent', 'u8')),
+    Op.WRITE_POLL: (('strobe', 'u8'), ('setup', 'u32'), ('width', 'u32'), ('hold', 'u32'), ('kind', 'u8'), ('enable', 'u8*'), ('access', 'u32'), ('disable', 'u8*'), ('gap', 'u32'), ('mantissa', 'u8'), ('exponent', 'u8')),
     Op.PAGE_LOAD: (('strobe', 'u8'), ('setup', 'u32'), ('width', 'u32'), ('hold', 'u32')),
 }
 OP_COST: Final[dict[Op, int]] = {
     Op.END: 4,
     Op.FAIL: 4,
+    Op.FAILING: 4,
     Op.HIGH: 4,
     Op.LINES: 4,
     Op.ADDRESS: 4,
