@@ -33,6 +33,9 @@ class ChipFaults:
     stuck: tuple[tuple[int, int, int], ...] = ()  # (word address, mask, bits)
     slow_percent: int = 0
     slow_pulses: int = 1
+    # (word address, mask, crossover VCC in mV, slow one): a fading 0 reads 1 above that VCC; with "slow one" true an
+    # under-erased 1 reads 0 below it
+    weak: tuple[tuple[int, int, int, bool], ...] = ()
 
     def names(self) -> list[str]:
         """The faults that are set, by their names on the command line."""

@@ -9,8 +9,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
-from pulsewright.virtual.faults import ChipFaults
 from pulsewright.virtual.interface import Levels
+from pulsewright.virtual.models.cells import CellChip
 from pulsewright.virtual.models.e512_limits import (
     A9,
     ACCESS,
@@ -47,29 +47,15 @@ from pulsewright.virtual.models.e512_limits import (
 _NONE, _PROGRAM, _ERASE = 0, 1, 2
 
 
-class E512:
+class E512(CellChip):
     """The model. Cells change as the pulses at its pins have the time, the levels and the data to change them."""
 
     def __init__(self) -> None:
-        self.name = "27e512"
-        self.pins = 28
-        self.outputs: tuple[int, ...] = D
-        self.limits = LIMITS
-        self.cells = bytearray(b"\xff" * 65_536)
-        self.erased_word = 0xFF
-        self.damaged = False
-        self.stressed: list[str] = []
-        self.program_pulses = 0
+        super().__init__("27e512", LIMITS, 65_536, ID, PROGRAM_PULSE[0])
         self.erase_pulses = 0
-        self._id = ID
-        self._stuck: dict[int, tuple[int, int]] = {}  # address -> mask, bits
-        self._slow_percent = 0
-        self._slow_pulses = 1
-        self._begun: dict[int, tuple[int, int]] = {}  # address -> ticks at the program level so far, with which data
         self._erased_ticks = 0  # at the erase levels since the last program pulse
         # Any, not int | None: comparisons with None are caught once, in _address, instead of asked for 16 times
         self._levels: Any = [None] * 29  # raised levels as HIGH; the levels themselves in _oe and _a9
-        self._harmless: set[int | None] = {None}
         self._ce: int | None = None
         self._oe: int | None = None
         self._a9: int | None = None
@@ -85,31 +71,13 @@ class E512:
         self._pulse_from = 0
         self._pulse_at = 0
 
-    def take_faults(self, faults: ChipFaults) -> None:
-        """Makes this a faulty chip: another ID, cells that are stuck, cells that are slow."""
-        if faults.wrong_id is not None:
-            self._id = (faults.wrong_id[0] & 0xFF, faults.wrong_id[1] & 0xFF)
-        self._stuck = {at & 0xFFFF: (mask & 0xFF, bits & 0xFF) for at, mask, bits in faults.stuck}
-        self._slow_percent, self._slow_pulses = faults.slow_percent, faults.slow_pulses
-        self._keep_stuck()
-
     def state(self) -> dict[str, object]:
-        return {
-            "damaged": self.damaged,
-            "stressed": list(self.stressed),
-            "program_pulses": self.program_pulses,
-            "erase_pulses": self.erase_pulses,
-            "erased_ticks": self._erased_ticks,
-            "begun": {str(at): list(begun) for at, begun in self._begun.items()},
-        }
+        return {**super().state(), "erase_pulses": self.erase_pulses, "erased_ticks": self._erased_ticks}
 
     def restore(self, state: Mapping[str, Any]) -> None:
-        self.damaged = bool(state.get("damaged", False))
-        self.stressed = [str(text) for text in state.get("stressed", [])]
-        self.program_pulses = int(state.get("program_pulses", 0))
+        super().restore(state)
         self.erase_pulses = int(state.get("erase_pulses", 0))
         self._erased_ticks = int(state.get("erased_ticks", 0))
-        self._begun = {int(at): (int(begun[0]), int(begun[1])) for at, begun in state.get("begun", {}).items()}
 
     # ---- the pins; these run a million times a burn, so they look first at what usually did not change ----
 
@@ -241,12 +209,10 @@ class E512:
             return self._id[address & 1]  # A0 alone selects: from memory
         word = self.cells[address]
         half_erased = ERASE_PULSE[0] <= self._erased_ticks < ERASE_PULSE[0] * self._slow_pulses
-        if half_erased and self._is_slow(address) and self._vcc is not None and self._vcc >= LOW_VCC:
+        vcc = self._vcc or 0
+        if half_erased and self._is_slow(address) and vcc >= LOW_VCC:
             word = 0xFF  # looks erased, and at low VCC it is not
-        if address in self._stuck:
-            mask, bits = self._stuck[address]
-            word = word & ~mask | bits
-        return word
+        return self._seen(address, word, vcc)
 
     # ---- pulses ----
 
@@ -271,23 +237,10 @@ class E512:
             self._erase(width)
 
     def _program(self, width: int) -> None:
-        at, data = self._pulse_at, self._data()
-        self.program_pulses += 1
         if width > PROGRAM_PULSE[1]:
             self._stress("a program pulse longer than 105 us")
         self._erased_ticks = 0  # an erase that was not finished is lost: invented
-        if width >= PROGRAM_PULSE[0] and not self._is_slow(at):
-            self.cells[at] &= data
-        else:
-            ticks, begun = self._begun.get(at, (0, data))
-            ticks = ticks + width if begun == data else width
-            if ticks >= PROGRAM_PULSE[0] * (self._slow_pulses if self._is_slow(at) else 1):
-                self.cells[at] &= data
-                self._begun.pop(at, None)
-            else:
-                self._begun[at] = (ticks, data)
-        if at in self._stuck:
-            self._keep_stuck()
+        self._pulsed(self._pulse_at, self._data(), width)
 
     def _erase_pattern(self) -> bool:
         v = self._levels
@@ -303,46 +256,7 @@ class E512:
         self._erased_ticks += width
         if self._erased_ticks < ERASE_PULSE[0]:
             return
-        self._begun.clear()
-        if self._slow_percent == 0 or self._erased_ticks >= ERASE_PULSE[0] * self._slow_pulses:
-            self.cells[:] = b"\xff" * len(self.cells)
-        else:
-            cells = self.cells
-            for at in range(len(cells)):
-                if not self._is_slow(at):
-                    cells[at] = 0xFF
-        self._keep_stuck()
-
-    def _is_slow(self, address: int) -> bool:
-        """Whether the fault "slow" struck this cell: the same ones each time, spread over the chip by a hash."""
-        if self._slow_percent == 0:
-            return False
-        return ((address * 2_654_435_761 & 0xFFFFFFFF) >> 12) % 100 < self._slow_percent
-
-    def _keep_stuck(self) -> None:
-        for at, (mask, bits) in self._stuck.items():
-            self.cells[at] = self.cells[at] & ~mask | bits
-
-    # ---- what must not happen ----
-
-    def _look_at_levels(self, levels: list[int | None]) -> None:
-        """Some level was not seen before: is it past the absolute maximum of all pins but OE/VPP and A9?"""
-        for pin in range(1, self.pins + 1):
-            level = levels[pin]
-            if level is not None and level > MOST:
-                self._destroy(pin, level)
-            else:
-                self._harmless.add(level)
-
-    def _destroy(self, pin: int, level: int) -> None:
-        if not self.damaged:
-            self.damaged = True
-            self.stressed.append(f"pin {pin} stood at {level} mV: the cells are lost")
-        self.cells[:] = bytes(len(self.cells))
-
-    def _stress(self, what: str) -> None:
-        if what not in self.stressed:
-            self.stressed.append(what)
+        self._blank(slow_too=self._erased_ticks >= ERASE_PULSE[0] * self._slow_pulses)
 
 
 def make_chip() -> E512:
