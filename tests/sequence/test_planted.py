@@ -9,11 +9,11 @@ from typing import Any
 import pytest
 
 from pulsewright.chip.load import load
-from pulsewright.chip.model import Definition, ExpectStep, Mode
+from pulsewright.chip.model import Definition, ExpectStep
 from pulsewright.rig.file import load_rig
 from pulsewright.rig.model import Rig
 from pulsewright.sequence import compile as compiler
-from pulsewright.sequence import levels, lower, permits, seating
+from pulsewright.sequence import levels, lower, modes, permits, seating
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Sequence
@@ -56,18 +56,18 @@ def step_too_high(patch: pytest.MonkeyPatch) -> None:
     def wrong(definition: Definition, rig: Rig, wanted: Any) -> Any:
         return rig.raised.step(right(definition, rig, wanted).number + 1)
 
-    patch.setattr(lower, "choose_raised", wrong)
+    patch.setattr(modes, "choose_raised", wrong)
 
 
 def vcc_off_under_raised(patch: pytest.MonkeyPatch) -> None:
     """H4: VCC is taken from the socket while a switch is closed."""
-    right = lower.close_switches
+    right = modes.measure_raised
 
-    def wrong(b: Builder, mode: Mode) -> None:
-        right(b, mode)
+    def wrong(b: Builder, wanted: Any) -> None:
+        right(b, wanted)
         b.emit(Op.RANGE, which=Range.OFF)
 
-    patch.setattr(lower, "close_switches", wrong)
+    patch.setattr(modes, "measure_raised", wrong)
 
 
 def wrong_permit(patch: pytest.MonkeyPatch, **changes: Any) -> None:
@@ -89,10 +89,10 @@ def drive_against_outputs(patch: pytest.MonkeyPatch) -> None:
     """H6: D is driven while the chip reads out."""
     right = lower.Lowering._one
 
-    def wrong(self: lower.Lowering, step: Any) -> None:
+    def wrong(self: lower.Lowering, step: Any, **place: Any) -> None:
         if isinstance(step, ExpectStep):
             self.b.emit(Op.DRIVE_WORD)
-        right(self, step)
+        right(self, step, **place)
 
     patch.setattr(lower.Lowering, "_one", wrong)
 
@@ -117,7 +117,7 @@ def setup_too_short(patch: pytest.MonkeyPatch) -> None:
 
 def level_unmeasured(patch: pytest.MonkeyPatch) -> None:
     """H8: raised levels are used unmeasured."""
-    patch.setattr(lower, "measure_raised", lambda b, wanted: None)
+    patch.setattr(modes, "measure_raised", lambda b, wanted: None)
 
 
 def identity_waived(patch: pytest.MonkeyPatch) -> None:

@@ -4,11 +4,11 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 from pulsewright.chip.model import Definition
-from pulsewright.errors import Where
+from pulsewright.errors import CannotMake, Where
 from pulsewright.rig.model import RailStep, Rig
 from pulsewright.sequence.pinmap import PinMap
 from pulsewright.sequence.types import Origin
@@ -33,6 +33,12 @@ class PinState:
     raised_high: int = 0
     high_driven: bool = False
     mode: str = ""
+    levels: dict[str, str] = field(default_factory=dict)  # raised pin -> supply step it stands at
+    addressed: bool = False  # the address lines carry the word in hand
+    written: bool = False  # a bus write may still be open: the part waits for more loads
+
+
+Fork = tuple[PinState, int, int]  # what stood at a place, the settling still due there, and what was waited since
 
 
 class Builder:
@@ -104,6 +110,31 @@ class Builder:
         else:
             self.emit(Op.WAIT, ticks=count)
 
+    # ---- paths ------------------------------------------------------------------------------------
+
+    def fork(self) -> Fork:
+        """What stands here, and what was waited: to come back to on another path."""
+        state = self.state
+        kept = replace(state, lines=dict(state.lines), levels=dict(state.levels))
+        return kept, self._settle_ps, self._waited_ps
+
+    def back_to(self, fork: Fork) -> None:
+        """The program goes on as if only the path up to a fork had been taken."""
+        state, self._settle_ps, self._waited_ps = fork
+        self.state = replace(state, lines=dict(state.lines), levels=dict(state.levels))
+
+    def join(self, fork: Fork, text: str) -> None:
+        """Two paths meet: this one and that of a fork; CannotMake where the pins stand differently."""
+        state, settle_ps, waited_ps = fork
+        if state != self.state:
+            raise CannotMake(
+                f"{text}: the steps end in another state than they began in",
+                wanted=f"mode {state.mode}",
+                got=f"mode {self.state.mode}",
+                where=self._where,
+            )
+        self._settle_ps, self._waited_ps = max(settle_ps, self._settle_ps), min(waited_ps, self._waited_ps)
+
     @property
     def line_settle_ps(self) -> int:
         """How long a line needs to its level, whichever way, as H is made now and at this VCC."""
@@ -118,6 +149,11 @@ class Builder:
         names = (named,) if named else ("tACC", "tCE", "tOE")
         times = [self.definition.timing[name].max_ps for name in names if name in self.definition.timing]
         return max((time for time in times if time is not None), default=0)
+
+    def timing_min_ps(self, name: str) -> int:
+        """The minimum of a timing parameter, 0 where there is none."""
+        window = self.definition.timing.get(name)
+        return window.min_ps or 0 if window else 0
 
     def timing_max_ps(self, name: str) -> int:
         """The maximum of a timing parameter, 0 where there is none."""
@@ -139,6 +175,14 @@ class Builder:
         """Address lines to a constant."""
         self.emit(Op.ADDRESS, at=at)
         self.edge(self.line_settle_ps)
+        self.state.addressed = False
+
+    def address_word(self) -> None:
+        """Address lines to the word in hand, if they do not carry it already."""
+        if not self.state.addressed:
+            self.emit(Op.ADDRESS_WORD)
+            self.edge(self.line_settle_ps)
+            self.state.addressed = True
 
     def release(self) -> None:
         """Data released, if it was driven."""

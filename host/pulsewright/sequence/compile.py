@@ -6,19 +6,21 @@ with the image: data is named by range and hash only. All raise CannotMake where
 
 from __future__ import annotations
 
-from pulsewright.chip.model import Definition, EachStep, EveryWord, Method, RepeatStep, Step
+from pulsewright.chip.model import Definition, EachStep, Method, ModeStep
 from pulsewright.errors import CannotMake
 from pulsewright.rig.model import RailStep, Rig
+from pulsewright.sequence import bus
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.fuse import fuse
 from pulsewright.sequence.identity import pass_gate
 from pulsewright.sequence.levels import choose_vcc
-from pulsewright.sequence.lower import Lowering, enter, move_vcc, prove_level, raised_modes
+from pulsewright.sequence.lower import Lowering, modes_of, writes_bus
+from pulsewright.sequence.modes import enter, move_vcc, prove_level
 from pulsewright.sequence.permits import make_permit
 from pulsewright.sequence.seating import power_up
 from pulsewright.sequence.types import Sequence
 from pulsewright.units import Rounding, show_address, show_mv, ticks
-from pulsewright.wire.ops import Header
+from pulsewright.wire.ops import Header, Label
 from pulsewright.wire.tables import PROGRAM_BYTES, Fail, Flow, Op
 
 BLOCK_BYTES = 256  # a block of this many data bytes: 27 ms of 100 us pulses, or 2.6 ms of line at 1 Mbaud
@@ -29,16 +31,6 @@ def _start(definition: Definition, rig: Rig) -> Builder:
     power_up(b)
     pass_gate(b)
     return b
-
-
-def _until_modes(steps: tuple[Step, ...]) -> list[str]:
-    names: list[str] = []
-    for step in steps:
-        if isinstance(step, RepeatStep) and isinstance(step.until, EveryWord):
-            names.append(step.until.mode)
-        if isinstance(step, RepeatStep | EachStep):
-            names += _until_modes(step.steps)
-    return names
 
 
 def _vcc_used(definition: Definition, rig: Rig, modes: list[str]) -> dict[str, RailStep]:
@@ -62,6 +54,9 @@ def _finish(
     last: int,
     flow: Flow,
     extra_vcc: dict[str, RailStep] | None = None,
+    passes: int = 1,
+    block_words: int = 0,
+    busy: int = 0,
     data_sha256: str = "",
 ) -> Sequence:
     definition = b.definition
@@ -69,9 +64,10 @@ def _finish(
     with b.about("end: everything down in order", part="power"):
         b.emit(Op.END)
     b.items = fuse(b.items)
-    words = last - first + 1 if flow is not Flow.NONE else 0
-    block_words = BLOCK_BYTES * 8 // definition.width
-    code, origins = b.assemble(Header(definition.width, flow, b.pins.address_lines, words, block_words))
+    passes = passes if flow is not Flow.NONE else 0
+    words = (last - first + 1) * passes
+    block_words = block_words or BLOCK_BYTES * 8 // definition.width
+    code, origins = b.assemble(Header(definition.width, flow, b.pins.address_lines, words, block_words, passes))
     if len(code) > PROGRAM_BYTES:
         biggest = origins[-1]
         raise CannotMake(
@@ -82,7 +78,7 @@ def _finish(
         )
     raised = [name for name in modes if b.pins.raised_levels(definition.modes[name])]
     used = _vcc_used(definition, b.rig, modes)
-    permit = make_permit(b, raised, used | (extra_vcc or {}), code)
+    permit = make_permit(b, raised, used | (extra_vcc or {}), code, busy)
     return Sequence(
         kind=kind,
         title=title,
@@ -158,16 +154,43 @@ def compile_blank(definition: Definition, rig: Rig, first: int, last: int) -> Se
 
 def _work(b: Builder, method: Method, first: int, last: int, failure: Fail) -> list[str]:
     """A method's steps, its raised rail made and measured first; the modes it goes to."""
-    modes = raised_modes(method.steps)
+    modes = modes_of((*method.steps, *method.finally_))
+    top = [b.pins.raised_levels(b.definition.modes[step.mode]) for step in method.steps if isinstance(step, ModeStep)]
     for name in modes:
-        if b.pins.raised_levels(b.definition.modes[name]):
+        levels = b.pins.raised_levels(b.definition.modes[name])
+        if levels and levels not in top:  # else it is measured where the steps raise it, before any loop
             with b.about("", part="power"):
                 prove_level(b, name)
     enter(b, "standby")
     b.wait(0)
-    Lowering(b, first, last, failure).run(method.steps)
-    Lowering(b, first, last, failure).run(method.finally_)
-    return modes + _until_modes(method.steps)
+    way_out = b.label() if method.finally_ else None
+    Lowering(b, first, last, failure, way_out).run(method.steps)
+    if way_out is not None:
+        _finally(b, method, way_out, failure)
+    return modes
+
+
+def _finally(b: Builder, method: Method, way_out: Label, failure: Fail) -> None:
+    """The steps that end a method, once behind the work that was done and once behind work that failed."""
+    done = b.label()
+    for ending in (done, way_out):
+        with b.about("in the end", part="work", where=method.where):
+            if ending is way_out:
+                b.place(way_out)
+            bus.end_load(b)
+            enter(b, "standby")
+            b.wait(0)
+            begun = b.fork()
+            Lowering(b, 0, 0, failure).run(method.finally_)
+            bus.end_load(b)
+            enter(b, "standby")
+            b.wait(0)
+            if ending is way_out:
+                b.emit(Op.FAIL, why=failure)
+                b.place(done)
+            else:
+                b.emit(Op.BRANCH, when=2, depth=0, to=done.name)
+                b.back_to(begun)
 
 
 def compile_erase(definition: Definition, rig: Rig) -> Sequence:
@@ -177,16 +200,56 @@ def compile_erase(definition: Definition, rig: Rig) -> Sequence:
     b = _start(definition, rig)
     last = definition.words - 1
     modes = _work(b, definition.erase, 0, last, Fail.ERASE)
-    return _finish(b, kind="erase", title="erase the chip", modes=modes, first=0, last=last, flow=Flow.NONE)
+    busy = _busy(b, definition.erase)
+    return _finish(b, kind="erase", title="erase the chip", modes=modes, first=0, last=last, flow=Flow.NONE, busy=busy)
 
 
-def compile_burn(definition: Definition, rig: Rig, first: int, last: int, data_sha256: str) -> Sequence:
-    """Burns the words of a range that the host marks, each read back; CannotMake for a part that cannot be burnt."""
-    if definition.program is None:
-        raise CannotMake(f"{definition.name} cannot be programmed", did="was not asked: nothing was sent")
+def compile_burn(
+    definition: Definition, rig: Rig, first: int, last: int, data_sha256: str, *, protected: bool = False
+) -> Sequence:
+    """Burns the words of a range that the host marks, each read back; CannotMake for a part that cannot be burnt.
+
+    `protected`: the way of writing a part whose protection is on (or is to be on).
+    """
+    method = definition.protected if protected else definition.program
+    if method is None:
+        what = "be programmed with its protection on" if protected else "be programmed"
+        raise CannotMake(f"{definition.name} cannot {what}", did="was not asked: nothing was sent")
     b = _start(definition, rig)
-    modes = _work(b, definition.program, first, last, Fail.PROGRAM)
-    title = f"burn {_span(definition, first, last)}"
+    modes = _work(b, method, first, last, Fail.PROGRAM)
+    title = f"burn {_span(definition, first, last)}" + (" with protection" if protected else "")
     return _finish(
-        b, kind="burn", title=title, modes=modes, first=first, last=last, flow=Flow.WRITE, data_sha256=data_sha256
+        b,
+        kind="burn",
+        title=title,
+        modes=modes,
+        first=first,
+        last=last,
+        flow=Flow.WRITE,
+        passes=sum(isinstance(step, EachStep) for step in method.steps),
+        block_words=definition.page if method.unit == "page" else 0,
+        busy=_busy(b, method),
+        data_sha256=data_sha256,
     )
+
+
+def compile_protect(definition: Definition, rig: Rig, *, on: bool) -> Sequence:
+    """Software protection switched on or off; CannotMake for a part without."""
+    if definition.protect is None:
+        raise CannotMake(f"{definition.name} has no software protection", did="was not asked: nothing was sent")
+    steps = definition.protect.on if on else definition.protect.off
+    method = Method("both", "chip", steps, where=definition.protect.where)
+    b = _start(definition, rig)
+    last = definition.words - 1
+    modes = _work(b, method, 0, last, Fail.PROGRAM)
+    title = f"protection {'on' if on else 'off'}"
+    busy = _busy(b, method)
+    return _finish(b, kind="protect", title=title, modes=modes, first=0, last=last, flow=Flow.NONE, busy=busy)
+
+
+def _busy(b: Builder, method: Method) -> int:
+    """Ticks for which the part may work by itself after the last write of a method; 0 where it writes no command."""
+    write = b.definition.write
+    if write is None or not writes_bus((*method.steps, *method.finally_)):
+        return 0
+    return ticks(b.timing_max_ps(write.busy) + b.timing_max_ps(write.gap), Rounding.AT_LEAST)

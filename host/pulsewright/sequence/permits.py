@@ -3,18 +3,27 @@
 from __future__ import annotations
 
 import zlib
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 
-from pulsewright.chip.model import Definition
+from pulsewright.chip.model import (
+    Definition,
+    EachStep,
+    ExpectStep,
+    Mode,
+    ModeStep,
+    PulseStep,
+    RepeatStep,
+    Step,
+)
 from pulsewright.rig.model import RailStep, Rig
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.identity import wanted_ids
 from pulsewright.sequence.levels import choose_raised, top_mv
-from pulsewright.sequence.lower import raised_steps
+from pulsewright.sequence.modes import raised_steps
 from pulsewright.sequence.pinmap import PinMap
 from pulsewright.units import Rounding, ticks
 from pulsewright.wire.permit import NO_SWITCH, Permit, VccStep
-from pulsewright.wire.tables import Identity
+from pulsewright.wire.tables import Identity, Level
 
 
 def _ceilings(b: Builder, modes: Iterable[str]) -> dict[int, int]:
@@ -46,12 +55,49 @@ def _drives(definition: Definition, pins: PinMap) -> tuple[bytes, ...]:
     return tuple(sorted(patterns))
 
 
-def make_permit(b: Builder, modes: Iterable[str], vcc_used: dict[str, RailStep], code: bytes) -> Permit:
-    """The permit of a finished program that goes past the gate to `modes` and uses these steps of VCC."""
+def _pulsed(steps: Iterable[Step]) -> Iterator[tuple[str, PulseStep]]:
+    """Each pulse step with the mode in which it comes."""
+    mode = ""
+    for step in steps:
+        if isinstance(step, ModeStep):
+            mode = step.mode
+        elif isinstance(step, PulseStep):
+            yield mode, step
+        elif isinstance(step, RepeatStep | EachStep):
+            yield from _pulsed(step.steps)
+        elif isinstance(step, ExpectStep):
+            yield from _pulsed(step.else_)
+
+
+def _safe_mode(definition: Definition, pins: PinMap, modes: list[str]) -> Mode:
+    """Standby; where that would be a pulse while a raised level still falls, the mode named inhibit."""
+    standby = definition.modes["standby"]
+    idle = pins.control_levels(standby)
+    for method in (definition.program, definition.erase):
+        for name, pulse in _pulsed(method.steps if method is not None else ()):
+            if name not in modes or name not in definition.modes:
+                continue
+            row = pins.control_levels(definition.modes[name])
+            row[pulse.pin] = Level.LOW if pulse.to == "L" else Level.HIGH
+            if all(idle.get(role, level) == level for role, level in row.items()):
+                return definition.modes.get("inhibit", standby)
+    return standby
+
+
+def make_permit(
+    b: Builder, modes: Iterable[str], vcc_used: dict[str, RailStep], code: bytes, self_timed: int = 0
+) -> Permit:
+    """The permit of a finished program that goes past the gate to raised `modes` and uses these steps of VCC.
+
+    `self_timed`: ticks for which the part may be at work by itself when the program ends.
+    """
+    modes = list(modes)
     definition, rig = b.definition, b.rig
     switch, step, ceiling = NO_SWITCH, 0, 0
-    identity = Identity.NONE
-    if definition.identify == "mode":
+    identity = Identity.VOUCHED_NONE if modes else Identity.NONE
+    if definition.identify == "command":
+        identity = Identity.WANTED
+    elif definition.identify == "mode":
         identity = Identity.WANTED
         wanted = raised_steps(b, definition.modes[definition.identify_mode])
         pin, supply = next(iter(wanted.items()))
@@ -68,7 +114,7 @@ def make_permit(b: Builder, modes: Iterable[str], vcc_used: dict[str, RailStep],
         vcc=_vcc_steps(definition, rig, vcc_used),
         vcc_to=b.pins.vcc_mask,
         drives=_drives(definition, b.pins),
-        safe=b.pins.pattern(definition.modes["standby"]),
-        self_timed=0,
+        safe=b.pins.pattern(_safe_mode(definition, b.pins, modes)),
+        self_timed=self_timed,
         crc32=zlib.crc32(code),
     )
