@@ -8,7 +8,8 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from pulsewright.chip.load import load
-from pulsewright.jobs.plan import BLOCK_WORDS, change, tries_of, unchanging_lines, verify_steps, write_blocks
+from pulsewright.jobs.plan import BLOCK_WORDS, change, unchanging_lines, verify_steps, write_blocks
+from pulsewright.jobs.pulses import tries_of
 from pulsewright.rig.file import load_rig
 
 words = st.binary(min_size=1, max_size=700)

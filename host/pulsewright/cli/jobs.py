@@ -71,6 +71,23 @@ def _changing(parser: Parser) -> None:
     )
 
 
+def _protection(parser: Parser) -> None:
+    parser.add_argument(
+        "--protect",
+        choices=("keep", "on", "off"),
+        default="keep",
+        help="what becomes of software protection, on parts that have it (default keep: as it is)",
+    )
+
+
+def _margins(parser: Parser) -> None:
+    parser.add_argument(
+        "--accept-shortfall",
+        action="store_true",
+        help="go on although the rig cannot make a margin that the definition names; the record keeps it",
+    )
+
+
 def add_commands(commands: Commands[Parser]) -> None:
     """The commands of this group."""
     raised = [HIGH_VOLTAGE, STATIC]
@@ -99,6 +116,7 @@ def add_commands(commands: Commands[Parser]) -> None:
         (UV,),
     )
     _changing(erasing)
+    _protection(erasing)
     burning = one(
         "burn",
         _burn,
@@ -116,6 +134,8 @@ def add_commands(commands: Commands[Parser]) -> None:
         "would be lost",
     )
     _changing(burning)
+    _protection(burning)
+    _margins(burning)
     verifying = one(
         "verify",
         _verify,
@@ -125,6 +145,16 @@ def add_commands(commands: Commands[Parser]) -> None:
         (LICENSED,),
     )
     _image_options(verifying)
+    _margins(verifying)
+    protecting = one(
+        "protect",
+        _protect,
+        "software protection of parts that have it",
+        "protect 28c256 on --rig virtual",
+        "What the chip holds is read in two passes and saved first, and compared afterwards.",
+    )
+    protecting.add_argument("wanted", metavar="on|off|show", choices=("on", "off", "show"), help="what it is to be")
+    _changing(protecting)
 
 
 def _fitted(args: argparse.Namespace, definition: Definition) -> Fitted:
@@ -167,6 +197,8 @@ def _run(
         erase=getattr(args, "erase", False),
         save=not getattr(args, "no_save", False),
         vouch=getattr(args, "vouch", ""),
+        protect=getattr(args, "protect", "keep"),
+        accept_shortfall=getattr(args, "accept_shortfall", False),
         accepted=args.accept_voltages,
     )
     progress = LiveProgress(sys.stderr) if sys.stderr.isatty() else PlainProgress(sys.stderr)
@@ -243,6 +275,12 @@ def _erase(args: argparse.Namespace, desk: Desk) -> int:
     definition = _definition(args)
     check_erasable(definition)
     return _answer(desk, _run(args, desk, definition, erase))
+
+
+def _protect(args: argparse.Namespace, desk: Desk) -> int:
+    from pulsewright.jobs.protect import protect
+
+    return _answer(desk, _run(args, desk, _definition(args), lambda context: protect(context, args.wanted)))
 
 
 def _burn(args: argparse.Namespace, desk: Desk) -> int:

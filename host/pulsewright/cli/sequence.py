@@ -10,7 +10,7 @@ from pulsewright.cli.desk import HIGH_VOLTAGE, Desk, Parser, add, address, addre
 if TYPE_CHECKING:
     from pulsewright.chip.model import Definition
 
-JOBS = ("identify", "read", "blank-check", "erase", "burn", "verify")
+JOBS = ("identify", "read", "blank-check", "erase", "burn", "protect", "verify")
 
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:

@@ -2,61 +2,18 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-
 from pulsewright.chip.model import Method
 from pulsewright.errors import ChipFault, Difference, PulsewrightError, UsageMistake, Where
 from pulsewright.image.memory import Fitted
-from pulsewright.jobs.context import JobContext, JobResult, RunFailed, job
+from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.erase import check_erasable, erase_whole, save_first
-from pulsewright.jobs.plan import Change, change, sha256, tries_of, write_blocks
+from pulsewright.jobs.maker import check_maker, resolve_maker
+from pulsewright.jobs.plan import Change, change, sha256
 from pulsewright.jobs.record import crc_text
 from pulsewright.jobs.verify import passes_of, verify_passes
-from pulsewright.link.results import BlockDone
-from pulsewright.sequence.compile import compile_burn, compile_erase
+from pulsewright.jobs.writing import KEEP, check_protect, write_sequences, write_words
+from pulsewright.sequence.compile import compile_erase
 from pulsewright.units import show_address, show_count
-
-AGAIN = "the same burn again: words that are right already are skipped"
-
-
-@dataclass(frozen=True)
-class Pulses:
-    """What a burn took: words by number of tries (index 0: one try), the word that took most."""
-
-    histogram: tuple[int, ...]
-    worst: int
-    worst_tries: int
-
-    @property
-    def words(self) -> int:
-        """Words that took their value."""
-        return sum(self.histogram)
-
-    @property
-    def total(self) -> int:
-        """Pulses in all."""
-        return sum(count * tries for tries, count in enumerate(self.histogram, 1))
-
-    def facts(self) -> dict[str, object]:
-        """As JSON values: only the numbers of tries that happened."""
-        return {
-            "words": self.words,
-            "pulses": self.total,
-            "by_tries": {str(tries): count for tries, count in enumerate(self.histogram, 1) if count},
-            "worst_word": self.worst,
-            "worst_tries": self.worst_tries,
-        }
-
-
-def pulses_of(blocks: tuple[BlockDone, ...]) -> Pulses:
-    """The sum over blocks."""
-    size = max((len(block.histogram) for block in blocks), default=0)
-    total = [0] * size
-    for block in blocks:
-        for index, count in enumerate(block.histogram):
-            total[index] += count
-    worst = max(blocks, key=lambda block: block.worst_tries, default=None)
-    return Pulses(tuple(total), worst.worst if worst else 0, worst.worst_tries if worst else 0)
 
 
 def method_of(ctx: JobContext) -> Method:
@@ -104,29 +61,9 @@ def _keep_outside(ctx: JobContext, have: bytes) -> None:
         )
 
 
-def _burn_words(ctx: JobContext, fitted: Fitted, to_write: bytes) -> tuple[str, dict[str, object]]:
-    """The burn sequence over the words marked; an error says how many words were done before it."""
-    first, last = ctx.first, ctx.last
-    words = len(to_write) - to_write.count(0)
-    ctx.progress.begin("burn", words)
-    blocks = tuple(write_blocks(fitted.data, to_write, first, last))
-    sequence = compile_burn(ctx.definition, ctx.rig, first, last, sha256(fitted.data[first : last + 1]))
-    most = tries_of(method_of(ctx))
-    try:
-        result = ctx.run(sequence, blocks, want=fitted.data)
-    except RunFailed as failed:
-        done = pulses_of(failed.result.blocks)
-        failed.error.facts = (f"at least {done.words} of {words} words burnt before that", *failed.error.facts)
-        failed.error.hint = failed.error.hint or AGAIN
-        if ctx.record is not None:
-            ctx.record.content["pulses"] = done.facts()
-        raise
-    done = pulses_of(result.blocks)
-    line = f"{show_count(done.words, 'word')} burnt with {show_count(done.total, 'pulse')}"
-    if done.words:
-        at = show_address(done.worst, ctx.definition.words)
-        line += f"; most for one word: {done.worst_tries} of {most} at {at}"
-    return line, {"pulses": done.facts(), "data_sha256": sequence.data_sha256}
+def _target(fitted: Fitted, have: bytes) -> bytes:
+    """What the chip is to hold: the image where it says something, else what it holds now."""
+    return bytes(new if used else old for new, used, old in zip(fitted.data, fitted.used, have, strict=True))
 
 
 def _chip_fault(what: str, *, facts: list[str], did: str) -> PulsewrightError:
@@ -135,7 +72,23 @@ def _chip_fault(what: str, *, facts: list[str], did: str) -> PulsewrightError:
     )
 
 
+def _erased(ctx: JobContext, fitted: Fitted, have: bytes) -> tuple[bytes, Change, list[str], dict[str, object]]:
+    """The chip erased for the image: what it holds then, what is still to do, lines and facts."""
+    definition = ctx.definition
+    _keep_outside(ctx, have)
+    line, more = erase_whole(ctx)
+    ctx.progress.fact(line)
+    lost = sum(1 for word, used in zip(have, fitted.used, strict=True) if not used and word != definition.blank)
+    lines = [line]
+    if lost:
+        lines.append(f"the erase also cleared {show_count(lost, 'word')} that the image does not give")
+    have = bytes([definition.blank]) * definition.words
+    needed = change(have, fitted.data, fitted.used)
+    return have, needed, lines, more | {"erased": True, "cleared_words": lost, "skipped_words": needed.equal}
+
+
 def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
+    maker = resolve_maker(ctx)
     definition, method = ctx.definition, method_of(ctx)
     whole = ctx.options.erase and definition.erase is not None
     first, last = (0, definition.words - 1) if whole else (ctx.first, ctx.last)
@@ -148,34 +101,28 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     if needed.impossible and method.bits == "1 to 0":
         if not ctx.options.erase:
             raise _needs_erase(ctx, needed, fitted, have)
-        _keep_outside(ctx, have)
-        line, more = erase_whole(ctx)
-        ctx.progress.fact(line)
-        lost = sum(1 for word, used in zip(have, fitted.used, strict=True) if not used and word != definition.blank)
-        lines.append(line)
-        if lost:
-            lines.append(f"the erase also cleared {show_count(lost, 'word')} that the image does not give")
-        have = bytes([definition.blank]) * definition.words
-        needed = change(have, fitted.data, fitted.used)
-        facts |= more | {"erased": True, "cleared_words": lost, "skipped_words": needed.equal}
+        have, needed, lines, more = _erased(ctx, fitted, have)
+        facts |= more
     elif ctx.options.erase:
         lines.append("no erase: no word needs a 0 to become a 1")
-    if needed.differing:
-        line, more = _burn_words(ctx, fitted, needed.to_write)
+    if needed.differing or ctx.options.protect != KEEP:
+        line, more = write_words(ctx, _target(fitted, have), needed.to_write, have)
         facts |= more
         burnt = f"{line}; {show_count(needed.equal, 'word')} right already"
     else:
         burnt = f"nothing to burn: {show_count(needed.used, 'word')} right already"
     verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault, proven=True)
     return JobResult(
-        (burnt, *verified, *lines, *tail), {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
+        (burnt, *verified, *lines, *maker, *tail),
+        {**facts, **more, "words": needed.used, "burnt_words": needed.differing},
     )
 
 
 def _prove_all(ctx: JobContext) -> None:
     """Everything this job may come to is compiled and proven before the chip is touched at all."""
     passes_of(ctx)
-    ctx.prove(compile_burn(ctx.definition, ctx.rig, ctx.first, ctx.last, ""))
+    for sequence in write_sequences(ctx):
+        ctx.prove(sequence)
     if ctx.options.erase and ctx.definition.erase is not None:
         ctx.prove(compile_erase(ctx.definition, ctx.rig))
 
@@ -183,6 +130,8 @@ def _prove_all(ctx: JobContext) -> None:
 def burn(ctx: JobContext, fitted: Fitted) -> JobResult:
     """Burns the used words of an image; Difference: an erase is needed and was not asked for; ChipFault: it fails."""
     method_of(ctx)
+    check_maker(ctx)
+    check_protect(ctx)
     if ctx.options.erase:
         check_erasable(ctx.definition)
 

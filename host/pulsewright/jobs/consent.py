@@ -72,7 +72,9 @@ def check_consent(
     `accepted` is the digest the operator gave; `ask` puts the question at a terminal, None where there is none. A
     digest that is not this definition's is a UsageMistake: it was meant for another text.
     """
-    if accepted and accepted.lower() != definition.digest:
+    rows_follow = definition.row is None and any(row.ids for row in definition.makers)
+    mistaken = accepted and accepted.lower() != definition.digest
+    if mistaken and not (rows_follow and definition.digest in remembered()):  # else it is meant for a maker row
         raise UsageMistake(
             "--accept-voltages names another definition than this one",
             where=Where(definition.path),
@@ -87,7 +89,7 @@ def check_consent(
         return "not needed"
     if in_process:
         return "not asked: virtual rig in this process"
-    if accepted:
+    if accepted and not mistaken:
         remember(definition)
         return "given by --accept-voltages"
     if definition.digest in remembered():

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, field
 from typing import Protocol
 
 from pulsewright.chip.model import Definition
@@ -18,7 +18,6 @@ from pulsewright.rig.model import Rig
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Proof, Sequence
 from pulsewright.units import show_address, show_count
-from pulsewright.wire.tables import Identity
 
 _NO_RECORD = "no record could be kept: see whether the state folder may be written (PULSEWRIGHT_HOME names another)"
 
@@ -85,6 +84,8 @@ class Options:
     erase: bool = False
     save: bool = True
     vouch: str = ""
+    protect: str = "keep"  # what becomes of software protection: "keep", "on", "off"
+    accept_shortfall: bool = False
     accepted: str = ""  # the digest of --accept-voltages
 
 
@@ -166,12 +167,8 @@ class JobContext:
         }
 
     def vouched(self, sequence: Sequence) -> Sequence:
-        """The sequence under the operator's word where it raises a level without an ID (H9); VouchNeeded without it."""
-        permit = sequence.permit
-        raises = bool(permit.raised)
-        check_vouch(self.definition, raises, self.options.vouch)
-        if raises and permit.identity is Identity.NONE:
-            return replace(sequence, permit=replace(permit, identity=Identity.VOUCHED_NONE))
+        """The sequence, if it raises no level without an ID or the operator gave his word (H9); else VouchNeeded."""
+        check_vouch(self.definition, bool(sequence.permit.raised), self.options.vouch)
         return sequence
 
     def prove(self, sequence: Sequence) -> Proof:

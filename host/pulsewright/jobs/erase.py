@@ -6,20 +6,27 @@ from pulsewright.chip.model import Definition
 from pulsewright.errors import FileMistake, UsageMistake, Where
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
-from pulsewright.jobs.plan import tries_of
+from pulsewright.jobs.maker import check_maker, resolve_maker
+from pulsewright.jobs.pulses import tries_of
 from pulsewright.jobs.read import read_agreed
 from pulsewright.jobs.record import crc_text, save_dump
+from pulsewright.jobs.writing import KEEP, check_protect, write_sequences, write_words
 from pulsewright.link.results import RunResult
-from pulsewright.sequence.compile import compile_erase
+from pulsewright.sequence.compile import compile_blank, compile_erase
 from pulsewright.units import show_mv
 
 # STMicroelectronics M2716 and M27C family sheets, section "Erasure operation": 15 W-s/cm2 at 253.7 nm.
 UV_DOSE = "at least 15 W·s/cm² at 253.7 nm: 15 to 20 minutes under a lamp of 12 mW/cm² at 2.5 cm, window bare and clean"
 
 
+def overwrites(definition: Definition) -> bool:
+    """Whether the part has no erase of its own but takes the erased state as any other data."""
+    return definition.erase is None and definition.program is not None and definition.program.bits == "both"
+
+
 def check_erasable(definition: Definition) -> None:
     """UsageMistake for a part that no electrical erase clears; for a UV part it explains lamp and dose."""
-    if definition.erase is not None:
+    if definition.erase is not None or overwrites(definition):
         return
     if definition.erase_kind == "uv":
         raise UsageMistake(
@@ -78,17 +85,45 @@ def erase_whole(ctx: JobContext) -> tuple[str, dict[str, object]]:
     }
 
 
-def _work(ctx: JobContext) -> JobResult:
+def _overwrite(ctx: JobContext) -> JobResult:
+    """Every word of the range that is not blank written with the erased state, then the range looked at."""
     definition = ctx.definition
+    for sequence in (*write_sequences(ctx), compile_blank(definition, ctx.rig, ctx.first, ctx.last)):
+        ctx.prove(sequence)
+    looked, facts, tail = save_first(ctx, ctx.first, ctx.last)
+    blank, words = definition.blank, definition.words
+    have = bytes([blank]) * ctx.first + looked.data + bytes([blank]) * (words - ctx.last - 1)
+    to_write = bytes(word != blank for word in have)
+    line = "nothing to erase"
+    if any(to_write) or ctx.options.protect != KEEP:
+        line, more = write_words(ctx, bytes([blank]) * words, to_write, have)
+        facts |= more
+    ctx.progress.begin("blank check", 0)
+    result = ctx.run(compile_blank(definition, ctx.rig, ctx.first, ctx.last))
+    vcc = show_mv(definition.supplies[definition.modes["read"].vcc].typ_mv)
+    line = f"erased: {line}; {ctx.words} words, {ctx.span()}, read {ctx.hex(blank)} at VCC {vcc}"
+    return JobResult((line, *tail), {**facts, **id_facts(definition, result), "words": ctx.words})
+
+
+def _work(ctx: JobContext) -> JobResult:
+    maker = resolve_maker(ctx)
+    definition = ctx.definition
+    if overwrites(definition):
+        return _overwrite(ctx)
     ctx.prove(compile_erase(definition, ctx.rig))  # before the chip is touched at all
     _, facts, lines = save_first(ctx, 0, definition.words - 1)
     line, more = erase_whole(ctx)
-    return JobResult((line, *lines), {**facts, **more, "words": definition.words})
+    return JobResult((line, *maker, *lines), {**facts, **more, "words": definition.words})
 
 
 def erase(ctx: JobContext) -> JobResult:
-    """Erases the whole chip, proven word by word; UsageMistake for a part that light erases."""
+    """Erases the whole chip, proven word by word; UsageMistake for a part that light erases.
+
+    A part that takes any data over any other is written with the erased state, over the range.
+    """
     check_erasable(ctx.definition)
+    check_maker(ctx)
+    check_protect(ctx)
     whole = (ctx.first, ctx.last) == (0, ctx.definition.words - 1)
     method = ctx.definition.erase
     if not whole and method is not None and method.unit == "chip":

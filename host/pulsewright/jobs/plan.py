@@ -6,24 +6,41 @@ import hashlib
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from pulsewright.chip.model import Definition, EachStep, Method, RepeatStep
+from pulsewright.chip.model import Definition
+from pulsewright.errors import CannotMake
 from pulsewright.link.results import Block
 from pulsewright.rig.model import RailStep, Rig
+from pulsewright.sequence.levels import choose_vcc
 from pulsewright.units import show_mv
 
 BLOCK_WORDS = 256
 
 
-def write_blocks(want: bytes, write: bytes, first: int, last: int) -> Iterator[Block]:
-    """The blocks of `first`..`last` that have something to write; `write` has one byte a word, not 0 to write it."""
-    for at in range(first, last + 1, BLOCK_WORDS):
-        end = min(at + BLOCK_WORDS, last + 1)
+def write_blocks(want: bytes, write: bytes, first: int, last: int, *, size: int = BLOCK_WORDS) -> Iterator[Block]:
+    """The blocks of `first`..`last` that have something to write; `write` has one byte a word, not 0 to write it.
+
+    Blocks hold at most `size` words and never cross a multiple of it: with a page's size, a block is a page.
+    """
+    at = first
+    while at <= last:
+        end = min(at - at % size + size, last + 1)
         if any(write[at:end]):
             mask = bytearray((end - at + 7) // 8)
             for index, flag in enumerate(write[at:end]):
                 if flag:
                     mask[index // 8] |= 1 << index % 8
             yield Block(at, end - at, bytes(mask), want[at:end])
+        at = end
+
+
+def whole_pages(to_write: bytes, first: int, last: int, page: int) -> bytes:
+    """The words to write, made whole pages of it: every word of a page with one of them, within `first`..`last`."""
+    marked = bytearray(len(to_write))
+    for at in range(first - first % page, last + 1, page):
+        begin, end = max(at, first), min(at + page, last + 1)
+        if any(to_write[begin:end]):
+            marked[begin:end] = b"\x01" * (end - begin)
+    return bytes(marked)
 
 
 @dataclass(frozen=True)
@@ -54,18 +71,6 @@ def sha256(data: bytes) -> str:
     return hashlib.sha256(data).hexdigest()
 
 
-def tries_of(method: Method) -> int:
-    """The most tries a word (or the chip) gets: the `max` of the method's outermost repeat; 1 where it has none."""
-    pending = list(method.steps)
-    while pending:
-        step = pending.pop(0)
-        if isinstance(step, RepeatStep):
-            return step.max
-        if isinstance(step, EachStep):
-            pending = [*step.steps, *pending]
-    return 1
-
-
 @dataclass(frozen=True)
 class VerifyStep:
     """One look at the whole range: in `mode`, at a VCC step of the rig (None: the mode's own); `text` names it."""
@@ -75,18 +80,34 @@ class VerifyStep:
     text: str
 
 
+def shortfalls(definition: Definition, rig: Rig) -> tuple[str, ...]:
+    """The margin passes a definition names that the rig cannot make, each with the reason."""
+    short = []
+    for entry in definition.verify:
+        step = definition.supplies[definition.modes[entry.mode].vcc]
+        try:
+            choose_vcc(definition, rig, step)
+        except CannotMake as reason:
+            short.append(f"pass {entry.mode} at {step.name} {show_mv(step.typ_mv)}: {reason.what}")
+    return tuple(short)
+
+
 def verify_steps(definition: Definition, rig: Rig) -> tuple[VerifyStep, ...]:
     """The margins at which the whole is read: the definition's own passes, else what the rig can make inside VCC.read.
 
-    Where the source gives none: the lowest and the highest VCC step of the rig that with its static
-    error lies inside the window of VCC.read; one pass where both are the same step.
+    Where the source gives none (or the rig can make none of them): the lowest and the highest VCC step of the rig that
+    with its static error lies inside the window of VCC.read; one pass where both are the same step.
     """
-    if definition.verify:
-        passes = []
-        for entry in definition.verify:
-            vcc = definition.modes[entry.mode].vcc
-            level = show_mv(definition.supplies[vcc].typ_mv)
-            passes.append(VerifyStep(entry.mode, None, f"{entry.mode} at {vcc} {level} (the definition's pass)"))
+    passes = []
+    for entry in definition.verify:
+        vcc = definition.modes[entry.mode].vcc
+        try:
+            choose_vcc(definition, rig, definition.supplies[vcc])
+        except CannotMake:
+            continue  # a shortfall: `shortfalls` tells it
+        level = show_mv(definition.supplies[vcc].typ_mv)
+        passes.append(VerifyStep(entry.mode, None, f"{entry.mode} at {vcc} {level} (the definition's pass)"))
+    if passes:
         return tuple(passes)
     inside = _inside_read(definition, rig)
     chosen = [inside[0], inside[-1]] if inside else []

@@ -17,7 +17,7 @@ from pulsewright.errors import (
     Tripped,
     VouchNeeded,
 )
-from pulsewright.jobs.plan import tries_of
+from pulsewright.jobs.pulses import has_pulses, tries_of
 from pulsewright.jobs.story import MADE_SAFE, Story, measured
 from pulsewright.link.results import RunResult
 from pulsewright.rig.model import Rig
@@ -273,17 +273,22 @@ def _erase(story: Story) -> PulsewrightError:
 
 
 def _program(story: Story) -> PulsewrightError:
-    most = tries_of(story.definition.program) if story.definition.program is not None else 0
+    method = story.definition.program
+    most = tries_of(method) if method is not None else 0
+    used_up = f": {most} of {most} pulses used up" if method is not None and has_pulses(method) else ""
     at = story.fault.address
     wanted = story.word(story.want[at]) if story.want is not None and at < len(story.want) else "the image's word"
     return ChipFault(
-        f"word {story.address()} does not program: {most} of {most} pulses used up",
+        f"word {story.address()} does not take its value{used_up}" if not used_up
+        else f"word {story.address()} does not program{used_up}",
         where=story.where(),
         step=story.step(),
         wanted=wanted,
         got=story.word(story.fault.sample),
         did=MADE_SAFE,
-        hint="the same burn again: a word that stays so is dead; where others fail then, VPP may sag under load",
+        hint="the same burn again: a word that stays so is dead; where others fail then, VPP may sag under load"
+        if used_up
+        else "the same burn again: a word that stays so is dead; a part that takes no word at all may be protected",
     )
 
 

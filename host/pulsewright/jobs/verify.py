@@ -4,20 +4,36 @@ from __future__ import annotations
 
 from collections.abc import Callable
 
-from pulsewright.errors import CannotMake, Difference, PulsewrightError
+from pulsewright.errors import CannotMake, Difference, PulsewrightError, ShortfallRefused
 from pulsewright.image.compare import compare
 from pulsewright.image.memory import Fitted
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
+from pulsewright.jobs.maker import resolve_maker
 from pulsewright.jobs.margins import verdicts
-from pulsewright.jobs.plan import VerifyStep, verify_steps
+from pulsewright.jobs.plan import VerifyStep, shortfalls, verify_steps
 from pulsewright.jobs.read import read_once
 from pulsewright.jobs.record import crc_text
 from pulsewright.units import show_count
 
 
 def passes_of(ctx: JobContext) -> tuple[VerifyStep, ...]:
-    """The passes; CannotMake where the rig has no step inside the window of VCC.read."""
+    """The passes; ShortfallRefused where the rig cannot make one that the definition names and nobody accepted that.
+
+    CannotMake where the rig has no step inside the window of VCC.read.
+    """
+    definition = ctx.definition
+    short = shortfalls(definition, ctx.rig)
+    if short and not ctx.options.accept_shortfall:
+        raise ShortfallRefused(
+            f"the rig cannot make {len(short)} of the {len(definition.verify)} margin passes of {definition.name}",
+            where=definition.verify[0].where,
+            did="nothing was written",
+            facts=list(short),
+            hint="--accept-shortfall does without: the words are verified all the same, but not at these margins",
+        )
+    if short and ctx.record is not None:
+        ctx.record.content["shortfall"] = list(short)
     steps = verify_steps(ctx.definition, ctx.rig)
     if not steps:
         raise CannotMake(
@@ -57,6 +73,7 @@ def verify_passes(
 
 def check_against(ctx: JobContext, fitted: Fitted) -> JobResult:
     """The verify job's work, without its record."""
+    resolve_maker(ctx)
     crc = crc_text(fitted.data[ctx.first : ctx.last + 1])
     if ctx.record is not None:
         ctx.record.content["image_crc32"] = crc

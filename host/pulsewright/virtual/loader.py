@@ -180,7 +180,7 @@ _FITS: dict[Op, Callable[[Mapping[str, Any]], bool]] = {
     Op.BIAS: lambda a: 0 < a["groups"] <= _MOST_GROUPS and a["how"] <= Bias.UP,
     Op.MEASURE: lambda a: _channel_fits(a["channel"]) and a["low"] <= a["high"],
     Op.BRANCH: lambda a: a["when"] <= 2,
-    Op.POLL: lambda a: _poll_fits(a),
+    Op.POLL: _poll_fits,
     Op.SCAN: lambda a: a["count"] > 0 and (a["count"] <= 65_536 or a["count"] % 65_536 == 0),
     Op.PULSE_VERIFY: lambda a: (
         _pulse_line_fits(a["line"])

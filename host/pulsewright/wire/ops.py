@@ -52,7 +52,7 @@ def ins(op: Op, **args: Any) -> Instruction:
 
 @dataclass(frozen=True)
 class Header:
-    """The routine header: word width, what blocks carry, line of each address bit, bounds of words, passes over the data."""
+    """The routine header: word width, what blocks carry, address lines, bounds of words, passes over the data."""
 
     width: int
     flow: Flow
