@@ -10,6 +10,7 @@ from pulsewright.virtual.judge import KEPT, RULES, Judge
 from pulsewright.virtual.models.e512_limits import LIMITS
 from tests.virtual.broken_pulses import PULSES
 from tests.virtual.broken_waves import WAVES
+from tests.virtual.uv_broken import PGM_WAVES, UV_WAVES
 from tests.virtual.waveform import A9, CE, HIGH, MS, OE, US, VCC, A, Bus, pulse, ready_to_program, wind_down
 
 
@@ -81,8 +82,12 @@ def test_each_rule_fires(wave: Callable[[Bus], None], broken: set[str]) -> None:
 
 
 def test_each_rule_of_the_list_was_seen_to_fire() -> None:
-    """Every rule that the judge knows is one that the test above sees fire, and none fires that has no name."""
-    assert set().union(*(broken for _wave, broken in [*WAVES, *PULSES])) == set(RULES)
+    """Every rule that the judge knows is one that a test sees fire, and none fires that has no name.
+
+    The others' waveforms stand beside the chips that they need: a VPP pin of its own, a program pin.
+    """
+    seen = [broken for waves in (WAVES, PULSES, UV_WAVES, PGM_WAVES) for _wave, broken in waves]
+    assert set().union(*seen) == set(RULES)
 
 
 def test_a_violation_says_where_and_when() -> None:

@@ -24,12 +24,17 @@ HIGH = 5000
 class Bus:
     """The pins, the time, and who watches; each method is one thing a rig does, at `t` ticks."""
 
+    a: tuple[int, ...] = A
+    d: tuple[int, ...] = D
+    ce, oe, a9, gnd, vcc = CE, OE, A9, GND, VCC
+    pins = 28
+
     def __init__(self, *watchers: Watcher, chip: ChipModel | None = None) -> None:
         self.watchers = watchers
         self.chip = chip
         self.t = 1000
-        self.levels: list[int | None] = [None] * 29
-        for pin in (*A, CE, OE, GND, VCC):
+        self.levels: list[int | None] = [None] * (self.pins + 1)
+        for pin in (*self.a, self.ce, self.oe, self.gnd, self.vcc):
             self.levels[pin] = 0
         self.high_mv = HIGH
         for watcher in watchers:
@@ -63,19 +68,19 @@ class Bus:
 
     def address(self, at: int) -> None:
         """The address lines, one group."""
-        self.set({pin: self.high_mv if at >> bit & 1 else 0 for bit, pin in enumerate(A)})
+        self.set({pin: self.high_mv if at >> bit & 1 else 0 for bit, pin in enumerate(self.a)})
 
     def drive(self, word: int) -> None:
         """The rig drives D."""
         for watcher in self.watchers:
             watcher.rig_drives(self.t, True)
-        self.set({pin: self.high_mv if word >> bit & 1 else 0 for bit, pin in enumerate(D)})
+        self.set({pin: self.high_mv if word >> bit & 1 else 0 for bit, pin in enumerate(self.d)})
 
     def release(self) -> None:
         """The rig lets go of D."""
         for watcher in self.watchers:
             watcher.rig_drives(self.t, False)
-        self.set(dict.fromkeys(D))
+        self.set(dict.fromkeys(self.d))
 
     def sample(self) -> int:
         """What stands on D, a pin that the chip does not drive as 1."""
@@ -88,14 +93,14 @@ class Bus:
 
     def power(self, mv: int = HIGH) -> None:
         """VCC up or down to a level, the control lines along with it."""
-        highs = {pin: mv for pin in (*A, CE, OE) if (self.levels[pin] or 0) > 0}
-        self.ramp({VCC: mv, **highs}, MS)
+        highs = {pin: mv for pin in (*self.a, self.ce, self.oe) if (self.levels[pin] or 0) > 0}
+        self.ramp({self.vcc: mv, **highs}, MS)
         self.high_mv = mv
         self.wait(MS)
 
     def standby(self) -> None:
         """CE and OE high, the outputs off."""
-        self.set({CE: self.high_mv, OE: self.high_mv})
+        self.set({self.ce: self.high_mv, self.oe: self.high_mv})
         self.wait(US)
 
     def up(self) -> None:
@@ -107,12 +112,12 @@ class Bus:
         """All lines low, VCC off."""
         self.address(0)
         self.power(0)
-        self.set({CE: 0, OE: 0})
+        self.set({self.ce: 0, self.oe: 0})
 
     def read(self, at: int, access: int = 3) -> int:
         """The read row: one word, its outputs off afterwards."""
         self.address(at)
-        self.set({CE: 0, OE: 0})
+        self.set({self.ce: 0, self.oe: 0})
         self.wait(access)
         word = self.sample()
         self.standby()
@@ -148,7 +153,7 @@ class Bus:
         """The erase row: one pulse."""
         self.address(0)
         self.drive(0xFF)
-        self.set({A9: self.high_mv})
+        self.set({self.a9: self.high_mv})
         self.raise_to({OE: vpe, A9: a9})
         self.wait(2 * US)
         with self.low(CE, width):
@@ -158,21 +163,21 @@ class Bus:
         self.release()
         self.wait(2 * US)
 
-    def identify(self, level: int = 12_000) -> tuple[int, int]:
+    def identify(self, level: int = 12_000, access: int = 3) -> tuple[int, int]:
         """The identify row: the bytes at A0 low and high."""
         self.address(0)
-        self.set({A9: self.high_mv})
-        self.raise_to({A9: level})
+        self.set({self.a9: self.high_mv})
+        self.raise_to({self.a9: level})
         self.wait(2 * US)
-        self.set({CE: 0, OE: 0})
-        self.wait(3)
+        self.set({self.ce: 0, self.oe: 0})
+        self.wait(access)
         first = self.sample()
-        self.set({A[0]: self.high_mv})
-        self.wait(3)
+        self.set({self.a[0]: self.high_mv})
+        self.wait(access)
         second = self.sample()
-        self.set({A[0]: 0})
+        self.set({self.a[0]: 0})
         self.standby()
-        self.raise_to({A9: self.high_mv})
+        self.raise_to({self.a9: self.high_mv})
         self.wait(2 * US)
         return first, second
 

@@ -24,12 +24,28 @@ class PulseLimit:
     raised: Mapping[int, tuple[int, int]]  # pin -> (min_mv, max_mv) that mark this kind of pulse
     min_ticks: int
     max_ticks: int
-    setup_ticks: Mapping[str, int]  # "address", "data", "raised", "vcc" -> least time before the pulse
-    hold_ticks: Mapping[str, int]  # "address", "data", "raised" -> least time after it
+    setup_ticks: Mapping[str, int]  # "address", "data", "raised", "vcc", "control" -> least time before the pulse
+    hold_ticks: Mapping[str, int]  # "address", "data", "raised", "control" -> least time after it
     vcc_mv: tuple[int, int]
     data: int | None = None  # what must stand on D, None: anything driven
     low_pins: tuple[int, ...] = ()  # pins that must be low meanwhile
-    most: int = 0  # such pulses one after the other at one address, while VCC stands; 0: the sheet does not say
+    most: int = 0  # such pulses at one address while VCC stands, others between them or not; 0: the sheet does not say
+    high_pins: tuple[int, ...] = ()  # pins that must be high meanwhile (OE); "control" with the next two
+    only_low: tuple[int, ...] = ()  # it is a pulse only with these low (CE, where PGM is pulsed): else inhibit
+    only_high: tuple[int, ...] = ()  # it is a pulse only with these high (OE, where verify leaves CE open): else verify
+    source: str = ""
+
+
+@dataclass(frozen=True)
+class RaisedLimit:
+    """Raised levels that may stand while D is read and no pulse is given: verify, inhibit, a margin mode."""
+
+    name: str
+    raised: Mapping[int, tuple[int, int]]  # pin -> (min_mv, max_mv), all of them and no others
+    vcc_mv: tuple[int, int]
+    output_pins: tuple[int, ...] = ()  # all low: outputs on while these levels stand; none: the enable pins
+    access_ticks: int = 0  # outputs on to data valid, longest; 0: as without raised levels
+    release_ticks: int = 0  # the rig's D released to outputs on, least
     source: str = ""
 
 
@@ -56,6 +72,10 @@ class Limits:
     identify_mv: tuple[int, int] | None = None  # window of the identify level
     identify_pin: int | None = None
     verify_access_ticks: int = 0  # CE low to data valid after a raised level or below the read VCC; 0: as access
+    standing: tuple[RaisedLimit, ...] = ()  # raised levels under which D may be read; the identify level apart
+    # pin -> (so far below VCC, so far above it) at most while D is read and nothing is raised there (VPP = VCC)
+    rest_mv: Mapping[int, tuple[int, int]] = field(default_factory=dict)
+    vcc_most_mv: int = 0  # the highest operating VCC of any mode; 0: only its absolute maximum counts
     source: str = ""
 
 

@@ -10,8 +10,9 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from pulsewright.units import TICKS_PER_US, show_mv, show_ticks
-from pulsewright.virtual.interface import Levels, Limits, PinHistory, Violation
+from pulsewright.virtual.interface import Levels, Limits, PinHistory, RaisedLimit, Violation
 from pulsewright.virtual.judge_pulse import LONG_AGO, VIL_MV, PulseWatch
+from pulsewright.virtual.judge_raised import RaisedTable, spans, within
 
 ABOVE_VCC_MV = 300  # H11: no other pin stands more than this above VCC
 POWERED_MV = 500  # below, a chip drives nothing
@@ -21,7 +22,8 @@ RULES = (
     *("unknown pulse", "pulse width", "pulse vcc", "pulse data", "pulse address", "data not driven", "floating input"),
     *("address setup", "data setup", "raised setup", "vcc setup", "address hold", "data hold", "raised hold"),
     *("address in pulse", "data in pulse", "access time", "float time", "identify level", "bus fight"),
-    *("raised vcc", "too many pulses"),
+    *("raised vcc", "too many pulses", "pulse control", "control setup", "control hold", "control in pulse"),
+    *("vcc window", "supply at rest", "raised read", "data release"),
 )
 KEPT = 200  # violations kept in full; all are counted
 _ADDRESS, _DATA, _CONTROL = 1, 2, 4
@@ -51,20 +53,24 @@ class Judge:
             self._kind_of[pin] = _ADDRESS
         for pin in limits.data_pins:
             self._kind_of[pin] = _DATA
-        for pin in (*limits.enable_pins, *limits.raised_pins, limits.vcc_pin, *(pulse.pin for pulse in limits.pulses)):
+        self._watch = PulseWatch(limits, self._report)
+        pulsed = (pulse.pin for pulse in limits.pulses)
+        self._controls = self._watch.controls
+        for pin in (*limits.enable_pins, *limits.raised_pins, limits.vcc_pin, *pulsed, *self._controls):
             self._kind_of[pin] = _CONTROL
         if misplaced:
             self._kind_of = [0] * size
-        windows = (limits.vcc_read_mv, *limits.vcc_steps_mv, *(pulse.vcc_mv for pulse in limits.pulses))
-        self._windows = tuple(dict.fromkeys(windows))
-        self._raised_windows = {pin: _windows_of(limits, pin) for pin in limits.raised_pins}
-        self._raised_vcc = tuple(dict.fromkeys((limits.vcc_read_mv, *(pulse.vcc_mv for pulse in limits.pulses))))
-        self._watch = PulseWatch(limits, self._report)
+        raising = (*(pulse.vcc_mv for pulse in limits.pulses), *(row.vcc_mv for row in limits.standing))
+        self._windows = tuple(dict.fromkeys((limits.vcc_read_mv, *limits.vcc_steps_mv, *raising)))
+        self._table = RaisedTable(limits)
+        self._standing: RaisedLimit | None = None  # the row under which D may be read, with what is raised now
+        self._outputs = limits.enable_pins  # all low: outputs on, with what is raised now
+        self._rest = tuple(limits.rest_mv.items())
+        self._released_t = LONG_AGO  # when the rig last let go of D
         self._access = limits.access_ticks
         self._vcc_pin = 0 if misplaced else limits.vcc_pin
         self._vcc_mv = 0
-        self._vcc_window: tuple[int, int] | None = None
-        self._vcc_t = LONG_AGO  # since when VCC stands in its window
+        self._vcc_since: dict[tuple[int, int], int] = {}  # windows in which VCC stands, and since when
         self._vcc_marker: int | None = None
         self._level: dict[int, int | None] = dict.fromkeys(limits.raised_pins, 0)  # at rest every line is low
         self._marker: dict[int, int] = {}
@@ -122,6 +128,8 @@ class Judge:
                 watch.data_moved(t, next(pin for pin in changed if kind_of[pin] == _DATA))
         if kinds & _CONTROL:
             self._control(t, levels, changed)
+        if t > watch.due:
+            watch.overdue(t)
         if driven and not (self._enabled or self._misplaced) and t >= self._off_t + self.limits.float_ticks:
             self._fight(t, f"both drove {len(driven)} pins with the outputs off")
 
@@ -132,14 +140,36 @@ class Judge:
             if t < self._valid_t:
                 early = f"{show_ticks(self._valid_t - t)} early"
                 self._report("access time", self.limits.data_pins[0], t, "valid data", early)
-            pin, window = self.limits.identify_pin, self.limits.identify_mv
-            if self._raised and pin is not None and window is not None:
-                level = self._raised.get(pin)
-                if level is not None and not window[0] <= level <= window[1]:
-                    self._report("identify level", pin, t, _span(window), show_mv(level))
+            if self._raised:
+                self._raised_read(t)
+            if self._rest and self._standing is None and self._vcc_since:
+                self._supplies_at_rest(t)
         elif t < self._off_t + self.limits.float_ticks:
             wanted = f"at least {show_ticks(self.limits.float_ticks)} after the outputs went off"
             self._report("float time", self.limits.data_pins[0], t, wanted, show_ticks(t - self._off_t))
+
+        if t > self._watch.due:
+            self._watch.overdue(t)
+
+    def _raised_read(self, t: int) -> None:
+        """D is read with something raised: as the identify mode has it, or as some row has it?"""
+        pin, window = self.limits.identify_pin, self.limits.identify_mv
+        level = None if pin is None else self._raised.get(pin)
+        if pin is not None and level is not None and window is not None and not within(level, window):
+            self._report("identify level", pin, t, spans((window,)), show_mv(level))
+        elif self._standing is None and self._raised.keys() != {pin}:
+            wanted = " or ".join(limit.name for limit in self.limits.standing) or "nothing raised"
+            shown = ", ".join(f"pin {pin} at {show_mv(mv)}" for pin, mv in sorted(self._raised.items()))
+            got = f"{shown}, VCC at {show_mv(self._vcc_mv)}"
+            self._report("raised read", next(iter(self._raised)), t, wanted, got)
+
+    def _supplies_at_rest(self, t: int) -> None:
+        """D is read: do the pins that want about VCC then have it?"""
+        for pin, (below, above) in self._rest:
+            level = self._level[pin]
+            if pin not in self._raised and not (level is not None and -below <= level - self._vcc_mv <= above):
+                wanted = spans(((self._vcc_mv - below, self._vcc_mv + above),))
+                self._report("supply at rest", pin, t, wanted, "nothing" if level is None else show_mv(level))
 
     def rig_drives(self, t: int, driving: bool) -> None:
         watch = self._watch
@@ -147,6 +177,8 @@ class Judge:
             return
         watch.driving = driving
         watch.data_t = t
+        if not driving:
+            self._released_t = t
         if t < watch.data_hold:
             watch.data_moved(t, self.limits.data_pins[0])
         if driving:
@@ -185,10 +217,16 @@ class Judge:
         for pin in changed:
             if pin in self._level:
                 self._raised_edge(t, pin, levels[pin])
+            elif pin in self._controls:
+                self._watch.control_t = t
+                if t < self._watch.control_hold:
+                    self._watch.control_moved(t, pin)
+        if self.limits.standing:
+            self._standing, self._outputs = self._table.standing(self._raised, self._vcc_mv)
         self._enables(t, levels)
         watch, raised = self._watch, self._raised
         if raised or watch.kind is not None or watch.unknown:
-            watch.update(t, levels, raised if self._vcc_mv >= POWERED_MV else {}, self._raised_t, self._vcc_t)
+            watch.update(t, levels, raised if self._vcc_mv >= POWERED_MV else {}, self._raised_t, self._vcc_since)
 
     def _vcc_edge(self, t: int, levels: Levels, changed: Sequence[int]) -> None:
         vcc = levels[self.limits.vcc_pin] or 0
@@ -198,13 +236,15 @@ class Judge:
         began = t if self._vcc_marker is None else self._vcc_marker
         self._vcc_marker = None
         self._vcc_mv = vcc
-        window = next((window for window in self._windows if window[0] <= vcc <= window[1]), None)
-        if window != self._vcc_window:
-            if self._vcc_window is not None and (self._raised or self._gone_t > began):
-                pin = next(iter(self._raised), self.limits.vcc_pin)
-                got = f"VCC went to {show_mv(vcc)}"
-                self._report("supply order", pin, t, "raised levels off before VCC moves", got)
-            self._vcc_window, self._vcc_t = window, t
+        since = self._vcc_since
+        self._vcc_since = {window: since.get(window, t) for window in self._windows if within(vcc, window)}
+        if since and not since.keys() & self._vcc_since.keys() and (self._raised or self._gone_t > began):
+            pin = next(iter(self._raised), self.limits.vcc_pin)
+            got = f"VCC went to {show_mv(vcc)}"
+            self._report("supply order", pin, t, "raised levels off before VCC moves", got)
+        if 0 < self.limits.vcc_most_mv < vcc:
+            wanted = f"at most {show_mv(self.limits.vcc_most_mv)}"
+            self._report("vcc window", self.limits.vcc_pin, t, wanted, show_mv(vcc))
         if vcc < POWERED_MV:
             self._verifying = False
             self._watch.powered_down()
@@ -256,34 +296,32 @@ class Judge:
             if t - began < self.limits.rise_ticks:
                 wanted = f"at least {show_ticks(self.limits.rise_ticks)}"
                 self._report("rise time", pin, t, wanted, show_ticks(t - began))
-        if before is None or self._window_of(pin, before) != self._window_of(pin, level):
+        if before is None or self._table.window_of(pin, before) != self._table.window_of(pin, level):
             self._raised_t[pin] = t
         if pin in self.limits.enable_pins:
             self._verifying = True
         self._stands(t, pin, level, began)
 
-    def _window_of(self, pin: int, level: int) -> tuple[int, int] | None:
-        return next((window for window in self._raised_windows[pin] if window[0] <= level <= window[1]), None)
-
     def _stands(self, t: int, pin: int, level: int, began: int) -> None:
         """A raised level stands: has VCC been in a step of its own since before, and is it a level with a name?"""
-        if self._vcc_window is None or self._vcc_t > began:
+        allowed = self._table.vcc_for(pin, level)
+        fitting = [since for window, since in self._vcc_since.items() if window in allowed]
+        since = fitting or list(self._vcc_since.values())
+        if not since or min(since) > began:
             self._report("supply order", pin, t, "VCC in its window first", f"VCC at {show_mv(self._vcc_mv)}")
-        if self._window_of(pin, level) is None:
-            wanted = " or ".join(_span(window) for window in self._raised_windows[pin])
-            self._report("raised window", pin, t, wanted or "never raised", show_mv(level))
-        elif self._vcc_window and not any(low <= self._vcc_mv <= high for low, high in self._raised_vcc):
-            wanted = " or ".join(_span(window) for window in self._raised_vcc)
-            self._report("raised vcc", pin, t, f"VCC at {wanted}", show_mv(self._vcc_mv))
+        if not allowed:
+            self._report("raised window", pin, t, self._table.wanted(pin), show_mv(level))
+        elif since and not fitting:
+            self._report("raised vcc", pin, t, f"VCC at {spans(allowed)}", show_mv(self._vcc_mv))
 
     def _enables(self, t: int, levels: Levels) -> None:
         limits = self.limits
         enabled = self._vcc_mv >= POWERED_MV
-        for pin in limits.enable_pins:
+        for pin in self._outputs:
             level = levels[pin]
             if level is None or level > VIL_MV:
                 enabled = False
-        first = levels[limits.enable_pins[0]]
+        first = levels[self._outputs[0]]
         active = first is not None and first <= VIL_MV
         if active and not self._active:
             self._active_t = t
@@ -294,7 +332,11 @@ class Judge:
         if not enabled:
             self._off_t = t
             return
-        self._valid_t = max(self._valid_t, t + self._access)
+        standing = self._standing
+        self._valid_t = max(self._valid_t, t + ((standing.access_ticks if standing else 0) or self._access))
+        if standing and t - self._released_t < standing.release_ticks:
+            wanted = f"outputs on at least {show_ticks(standing.release_ticks)} after D was let go"
+            self._report("data release", self._outputs[0], t, wanted, show_ticks(t - self._released_t))
         if self._verifying or self._vcc_mv < limits.vcc_read_mv[0]:
             self._valid_t = max(self._valid_t, self._active_t + limits.verify_access_ticks)
         if self._watch.driving:
@@ -316,15 +358,3 @@ class Judge:
 
     def _fight(self, t: int, what: str) -> None:
         self._report("bus fight", self.limits.data_pins[0], t, "one of rig and chip drives D", what)
-
-
-def _windows_of(limits: Limits, pin: int) -> tuple[tuple[int, int], ...]:
-    """Every window in which a pin may stand raised."""
-    windows = [pulse.raised[pin] for pulse in limits.pulses if pin in pulse.raised]
-    if pin == limits.identify_pin and limits.identify_mv is not None:
-        windows.append(limits.identify_mv)
-    return tuple(dict.fromkeys(windows))
-
-
-def _span(window: tuple[int, int]) -> str:
-    return f"{show_mv(window[0])} to {show_mv(window[1])}"

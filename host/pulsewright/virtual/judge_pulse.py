@@ -5,11 +5,12 @@ Times are ticks of 62.5 ns, levels millivolts.
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Mapping
 from operator import itemgetter
 
 from pulsewright.units import show_mv, show_ticks
 from pulsewright.virtual.interface import Levels, Limits, PulseLimit
+from pulsewright.virtual.pin_number import PinNumber
 
 VIL_MV, VIH_MV = 800, 2000  # TTL input levels: common practice
 LONG_AGO = -(1 << 62)
@@ -43,16 +44,23 @@ class Seen:
 class PulseWatch:
     """Follows the pulse pin and the raised levels; the judge tells it when address, data and supplies last moved.
 
-    While a pulse runs, and for its hold time after, `address_hold` and `data_hold` lie in the future: whoever moves
-    address or data then calls `address_moved` or `data_moved`.
+    While a pulse runs, and for its hold time after, `address_hold`, `data_hold` and `control_hold` lie in the future:
+    whoever moves one of them then calls `address_moved`, `data_moved` or `control_moved`. `controls` are the pins that
+    a pulse wants at a level. Past `due` a running pulse is too long: whoever sees the time calls `overdue`.
     """
 
     def __init__(self, limits: Limits, report: Report) -> None:
         self._limits = limits
         self._report = report
-        self._active = {pulse.pin: pulse.active_low for pulse in limits.pulses}
-        self._address_of = itemgetter(*limits.address_pins)
-        self._inputs_of = itemgetter(*limits.address_pins, *limits.enable_pins, *limits.data_pins)
+        self._kinds = [(pulse, pulse.pin, pulse.active_low, _gates(pulse)) for pulse in limits.pulses]
+        self.controls = frozenset(
+            pin for pulse in limits.pulses for pin in (*pulse.high_pins, *pulse.only_low, *pulse.only_high)
+        )
+        self._address = PinNumber(limits.address_pins, VIH_MV, floating=True)
+        pulsed = {pulse.pin for pulse in limits.pulses}
+        inputs = dict.fromkeys((*limits.address_pins, *limits.enable_pins, *sorted(pulsed), *limits.data_pins))
+        self._inputs = tuple(inputs)
+        self._inputs_of = itemgetter(*inputs)
         self._clean: set[int] = set()  # levels that are low or high
         self.seen = Seen()
         self._names = {
@@ -64,40 +72,58 @@ class PulseWatch:
         self.began = LONG_AGO
         self.ended = LONG_AGO
         self._last: PulseLimit | None = None
-        self._at: tuple[object, ...] | None = None  # kind and address of the last pulse since power-up
-        self._pulses = 0  # so many, one after the other
+        self._counts: dict[str, dict[int, int]] = {}  # kind -> address -> pulses since power-up
+        self._whole_chip = False  # the last pulse was one for the whole chip
+        self.due = FOREVER
+        self._late = False  # this pulse has been reported as too long
+        self.control_t = LONG_AGO
         self.address_t = LONG_AGO
         self.data_t = LONG_AGO
         self.driving = True  # at rest the rig holds every line low, D too
         self.address_hold = LONG_AGO
         self.data_hold = LONG_AGO
+        self.control_hold = LONG_AGO
 
-    def update(self, t: int, levels: Levels, raised: dict[int, int], raised_t: dict[int, int], vcc_t: int) -> None:
-        """The pulse pin or a raised level moved. `raised`: pin -> level of what stands above VCC + 0.3 V now."""
-        active = bool(raised) and self._is_active(levels)
-        kind = self._kind_of(raised) if active else None
-        unknown = active and kind is None and not self._is_identify(raised)
+    def update(
+        self,
+        t: int,
+        levels: Levels,
+        raised: dict[int, int],
+        raised_t: dict[int, int],
+        vcc_since: Mapping[tuple[int, int], int],
+    ) -> None:
+        """The pulse pin or a raised level moved. `raised`: pin -> level of what stands above VCC + 0.3 V now.
+
+        `vcc_since`: since when VCC stands in each of the windows that it stands in.
+        """
+        given = self._given(levels) if raised else []
+        kind = self._kind_of(given, raised) if given else None
+        unknown = bool(given) and kind is None and not self._is_identify(raised)
         if kind is not self.kind:
             if self.kind is not None:
                 self._end(t, self.kind)
             self.kind = kind
             if kind is not None:
-                self._begin(t, kind, levels, raised_t, vcc_t)
+                self._begin(t, kind, levels, raised_t, vcc_since)
         if unknown and not self.unknown:
             shown = ", ".join(f"pin {pin} at {show_mv(mv)}" for pin, mv in sorted(raised.items()))
-            pin = next(iter(self._active), 0)
-            self._report("unknown pulse", pin, t, " or ".join(pulse.name for pulse in self._limits.pulses), shown)
+            wanted = " or ".join(pulse.name for pulse in self._limits.pulses)
+            self._report("unknown pulse", given[0].pin, t, wanted, shown)
         self.unknown = unknown
 
-    def _is_active(self, levels: Levels) -> bool:
-        for pin, active_low in self._active.items():
+    def _given(self, levels: Levels) -> list[PulseLimit]:
+        """The kinds of pulse that the control lines give now, whatever stands raised."""
+        given = []
+        for pulse, pin, active_low, gates in self._kinds:
             level = levels[pin]
-            if level is not None and (level <= VIL_MV if active_low else level >= VIH_MV):
-                return True
-        return False
+            if level is None or (level > VIL_MV if active_low else level < VIH_MV):
+                continue
+            if not gates or all(_is_at(levels[gate], low=low) for gate, low in gates):
+                given.append(pulse)
+        return given
 
-    def _kind_of(self, raised: dict[int, int]) -> PulseLimit | None:
-        for pulse in self._limits.pulses:
+    def _kind_of(self, given: list[PulseLimit], raised: dict[int, int]) -> PulseLimit | None:
+        for pulse in given:
             if raised.keys() == pulse.raised.keys():
                 if all(low <= raised[pin] <= high for pin, (low, high) in pulse.raised.items()):
                     return pulse
@@ -111,16 +137,28 @@ class PulseWatch:
 
     # ---- begin: set-up times, and what has to stand ----
 
-    def _begin(self, t: int, kind: PulseLimit, levels: Levels, raised_t: dict[int, int], vcc_t: int) -> None:
+    def _begin(
+        self,
+        t: int,
+        kind: PulseLimit,
+        levels: Levels,
+        raised_t: dict[int, int],
+        vcc_since: Mapping[tuple[int, int], int],
+    ) -> None:
         self.began = t
-        self.address_hold = self.data_hold = FOREVER
+        self.address_hold = self.data_hold = self.control_hold = FOREVER
+        self.due = t + kind.max_ticks
+        self._late = False
         since = {
             "address": self.address_t,
             "data": self.data_t,
+            "control": self.control_t,
             "raised": max(raised_t[pin] for pin in kind.raised),
-            "vcc": vcc_t,
+            "vcc": vcc_since.get(kind.vcc_mv, t),
         }
         for what, name, least in self._names[kind.name]:
+            if what == "vcc" and kind.vcc_mv not in vcc_since:
+                continue  # that VCC is elsewhere is reported below
             ticks = t - since[what]
             self.seen.add(name, ticks)
             if ticks < least:
@@ -131,34 +169,41 @@ class PulseWatch:
             self._report("pulse vcc", self._limits.vcc_pin, t, f"{show_mv(low)} to {show_mv(high)}", _shown(vcc))
         if kind.most:
             self._count(t, kind, levels)
-        self._inputs(t, kind, levels)
+        self._look_at_pins(t, kind, levels)
 
     def powered_down(self) -> None:
         """VCC is gone: pulses are counted anew."""
-        self._at = None
+        self._counts.clear()
 
     def _count(self, t: int, kind: PulseLimit, levels: Levels) -> None:
-        at = (kind.name,) if kind.low_pins else self._address_of(levels)
-        self._pulses = self._pulses + 1 if at == self._at else 1
-        self._at = at
-        if self._pulses > kind.most:
-            self._report("too many pulses", kind.pin, t, f"at most {kind.most} at one address", str(self._pulses))
+        """Counts by address, whatever came between; pulses for words and for the whole chip end each other's count."""
+        whole_chip = bool(kind.low_pins)
+        if whole_chip is not self._whole_chip:
+            self._counts.clear()
+            self._whole_chip = whole_chip
+        at = 0 if whole_chip else self._address.of(levels)
+        counts = self._counts.setdefault(kind.name, {})
+        number = counts[at] = counts.get(at, 0) + 1
+        if number > kind.most:
+            self._report("too many pulses", kind.pin, t, f"at most {kind.most} at one address", str(number))
 
-    def _inputs(self, t: int, kind: PulseLimit, levels: Levels) -> None:
+    def _look_at_pins(self, t: int, kind: PulseLimit, levels: Levels) -> None:
         if not self._clean.issuperset(self._inputs_of(levels)):
             self._look_at_inputs(t, levels)
         for pin in kind.low_pins:
             level = levels[pin]
             if level is not None and level > VIL_MV:
                 self._report("pulse address", pin, t, "low", show_mv(level))
+        for pin in kind.high_pins:
+            if not _is_at(levels[pin], low=False):
+                self._report("pulse control", pin, t, "high", _shown(levels[pin]))
         if not self.driving:
             self._report("data not driven", self._limits.data_pins[0], t, "D driven by the rig", "D released")
         self._check_data(t, kind, levels)
 
     def _look_at_inputs(self, t: int, levels: Levels) -> None:
         """Some input has a level that was not seen before: is it neither low nor high?"""
-        limits = self._limits
-        for pin in (*limits.address_pins, *limits.enable_pins, *limits.data_pins):
+        for pin in self._inputs:
             level = levels[pin]
             if level is None or VIL_MV < level < VIH_MV:
                 wanted = f"up to {show_mv(VIL_MV)}, or {show_mv(VIH_MV)} and more"
@@ -179,14 +224,28 @@ class PulseWatch:
 
     def _end(self, t: int, kind: PulseLimit) -> None:
         width = t - self.began
+        self.due = FOREVER
         self.seen.add(f"{kind.name} pulse", width)
-        if not kind.min_ticks <= width <= kind.max_ticks:
+        if not (self._late or kind.min_ticks <= width <= kind.max_ticks):
             wanted = f"{show_ticks(kind.min_ticks)} to {show_ticks(kind.max_ticks)}"
             self._report("pulse width", kind.pin, t, wanted, show_ticks(width))
         self.ended = t
         self._last = kind
         self.address_hold = t + kind.hold_ticks.get("address", 0)
         self.data_hold = t + kind.hold_ticks.get("data", 0)
+        self.control_hold = t + kind.hold_ticks.get("control", 0)
+
+    def overdue(self, t: int) -> None:
+        """The pulse that runs has passed `due`: reported now, for it may never end."""
+        self.due = FOREVER
+        self._late = True
+        if self.kind is not None:
+            got = f"still on after {show_ticks(t - self.began)}"
+            self._report("pulse width", self.kind.pin, t, f"at most {show_ticks(self.kind.max_ticks)}", got)
+
+    def control_moved(self, t: int, pin: int) -> None:
+        """One of `controls` moved before `control_hold`."""
+        self._moved(t, pin, "control")
 
     def address_moved(self, t: int, pin: int) -> None:
         """An address pin moved before `address_hold`."""
@@ -213,6 +272,15 @@ class PulseWatch:
             if began < self.ended + least:
                 got = show_ticks(max(0, began - self.ended))
                 self._report("raised hold", pin, t, f"at least {show_ticks(least)}", got)
+
+
+def _gates(pulse: PulseLimit) -> tuple[tuple[int, bool], ...]:
+    """(pin, whether low) that make it a pulse at all."""
+    return (*((pin, True) for pin in pulse.only_low), *((pin, False) for pin in pulse.only_high))
+
+
+def _is_at(level: int | None, *, low: bool) -> bool:
+    return level is not None and (level <= VIL_MV if low else level >= VIH_MV)
 
 
 def _shown(level: int | None) -> str:

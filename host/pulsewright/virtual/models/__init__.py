@@ -6,6 +6,7 @@ import difflib
 import sys
 import traceback
 from collections.abc import Callable
+from dataclasses import dataclass
 from pathlib import Path
 from types import ModuleType
 
@@ -23,11 +24,30 @@ def _e512() -> ChipModel:
     return e512.make_chip()
 
 
-MODELS: dict[str, Callable[[], ChipModel]] = {"27e512": _e512}  # part name -> maker of a fresh chip
+def _c256(maker: str = "st") -> ChipModel:
+    from pulsewright.virtual.models import c256
+
+    return c256.make_chip(maker)
 
 
-def make_model(name: str) -> ChipModel:
-    """A fresh chip of a part that has a model here; UsageMistake with the nearest name for any other."""
+@dataclass(frozen=True)
+class Makers:
+    """Makers whose chips of one part differ; `names[0]` is the one that is made when none is named."""
+
+    make: Callable[[str], ChipModel]
+    names: tuple[str, ...]
+
+
+# part name -> what makes a fresh chip
+MODELS: dict[str, Callable[[], ChipModel]] = {"27e512": _e512, "27c256": _c256}
+MAKERS: dict[str, Makers] = {"27c256": Makers(_c256, ("st", "atmel", "ti", "national", "amd"))}
+
+
+def make_model(name: str, maker: str = "") -> ChipModel:
+    """A fresh chip of a part that has a model here, of a maker where its makers' chips differ.
+
+    UsageMistake with the nearest name for any other part or maker.
+    """
     make = MODELS.get(name.lower())
     if make is None:
         near = difflib.get_close_matches(name.lower(), MODELS, n=1)
@@ -38,7 +58,22 @@ def make_model(name: str) -> ChipModel:
             got=name,
             hint=f"did you mean {near[0]}? else {own}" if near else own,
         )
-    return make()
+    return _of_maker(name, maker) if maker else make()
+
+
+def _of_maker(name: str, maker: str) -> ChipModel:
+    makers = MAKERS.get(name.lower())
+    if makers is None:
+        raise UsageMistake(f"the virtual rig's model of the chip {name} is of one maker only", got=f"--maker {maker}")
+    if maker.lower() not in makers.names:
+        near = difflib.get_close_matches(maker.lower(), makers.names, n=1)
+        raise UsageMistake(
+            f"the virtual rig has no {name} of the maker {maker}",
+            wanted=", ".join(makers.names),
+            got=maker,
+            hint=f"did you mean {near[0]}?" if near else "",
+        )
+    return makers.make(maker.lower())
 
 
 def load_model(path: Path | str) -> ChipModel:
