@@ -11,25 +11,20 @@ from collections.abc import Iterable, Mapping
 from typing import Any
 
 from pulsewright import units
+from pulsewright.chip.build_steps import StepBuilder, windows
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import (
+    BusWrite,
+    CommandIdentify,
     Definition,
-    EachStep,
-    EveryWord,
-    ExpectStep,
     IdCell,
     MakerRow,
     Maximum,
     Method,
     Mode,
-    ModeStep,
-    PulseStep,
-    RepeatStep,
-    Step,
+    Protect,
     SupplyStep,
     VerifyPass,
-    WaitStep,
-    Window,
 )
 from pulsewright.chip.source import Tree, flattened, overrides_of
 
@@ -51,6 +46,7 @@ def build(tree: Tree) -> Definition:
     width = chip.get("width", 8)
     identify = plain.get("identify", {})
     rows = _rows(tree)
+    steps = StepBuilder(tree)
     return Definition(
         path=str(tree.parsed.path),
         name=chip.get("name", ""),
@@ -65,15 +61,22 @@ def build(tree: Tree) -> Definition:
         supplies=_supplies(tree),
         maxima=_maxima(tree),
         modes=_modes(tree),
-        timing=_timing(tree),
-        identify="none" if "kind" in identify else "mode",
-        identify_mode=identify.get("mode", ""),
+        timing=windows(tree),
+        identify="none" if "kind" in identify else "command" if "command" in identify else "mode",
+        identify_mode="" if "command" in identify else identify.get("mode", ""),
         makers=rows,
         row=rows[tree.row] if tree.row is not None and tree.row < len(rows) else None,
-        program=_method(tree, "program"),
-        erase=_method(tree, "erase"),
+        program=_method(steps, ("program",)),
+        erase=_method(steps, ("erase",)),
         verify=_passes(tree),
         notes=tuple(note for note in chip.get("notes", ()) if note),
+        page=plain.get("geometry", {}).get("page", 0),
+        write=_write(tree),
+        commands=steps.commands,
+        identify_command=_identify_command(steps),
+        protect=_protect(steps),
+        protected=_method(steps, ("program", "protected"), plain.get("program", {})),
+        technology=chip.get("technology", ""),
         digest=digest_of(tree),
         raw=tree.merged,
     )
@@ -156,17 +159,6 @@ def _modes(tree: Tree) -> dict[str, Mode]:
     return modes
 
 
-def _timing(tree: Tree) -> dict[str, Window]:
-    windows = {}
-    for name, entry in tree.plain.get("timing", {}).items():
-        if not isinstance(entry, Mapping):
-            continue
-        limits = {f"{key}_ps": units.parse_ps(entry[key]) for key in ("min", "typ", "max") if key in entry}
-        path = ("timing", name)
-        windows[name] = Window(name, **limits, source=tree.source_of(path), where=tree.places.where(path))
-    return windows
-
-
 def _rows(tree: Tree) -> tuple[MakerRow, ...]:
     rows = []
     for index, entry in enumerate(tree.plain.get("makers", ())):
@@ -205,64 +197,58 @@ def _passes(tree: Tree) -> tuple[VerifyPass, ...]:
     )
 
 
-# ---- steps --------------------------------------------------------------------------------------
+# ---- what holds steps ---------------------------------------------------------------------------
 
 
-def _method(tree: Tree, name: str) -> Method | None:
-    table = tree.plain.get(name)
+def _method(builder: StepBuilder, path: KeyPath, around: Mapping[str, str] | None = None) -> Method | None:
+    """The method at a table; what it does not say of bits, unit and unloaded words it takes of the table `around`."""
+    table: Any = builder.tree.plain
+    for name in path:
+        table = table.get(name) if isinstance(table, Mapping) else None
     if not isinstance(table, Mapping):
         return None
-    builder = _Steps(tree)
+    bits, unit, unloaded = (table.get(key, (around or {}).get(key, "")) for key in ("bits", "unit", "unloaded"))
     return Method(
-        bits=table.get("bits", ""),
-        unit=table.get("unit", ""),
-        steps=builder.steps(table.get("steps", ()), (name, "steps")),
-        finally_=builder.steps(table.get("finally", ()), (name, "finally")),
-        where=tree.places.where((name,)),
+        bits=bits,
+        unit=unit,
+        steps=builder.steps(table.get("steps", ()), (*path, "steps")),
+        finally_=builder.steps(table.get("finally", ()), (*path, "finally")),
+        where=builder.tree.places.where(path),
+        unloaded=unloaded,
     )
 
 
-class _Steps:
-    """Builds steps; a step with a part missing is left out."""
-
-    def __init__(self, tree: Tree) -> None:
-        self.tree = tree
-        self.timing = _timing(tree)
-
-    def steps(self, entries: Iterable[Any], path: KeyPath) -> tuple[Step, ...]:
-        built = [self.step(entry, (*path, index)) for index, entry in enumerate(entries) if isinstance(entry, Mapping)]
-        return tuple(step for step in built if step is not None)
-
-    def step(self, entry: Mapping[str, Any], path: KeyPath) -> Step | None:
-        where = self.tree.places.where(path)
-        if "repeat" in entry:
-            inner = self.steps(entry["repeat"], (*path, "repeat"))
-            return RepeatStep(inner, entry.get("max", 1), self.until(entry.get("until"), (*path, "until")), where)
-        if "each" in entry:
-            return EachStep(entry["each"], self.steps(entry.get("steps", ()), (*path, "steps")), where)
-        if "pulse" in entry:
-            complete = "to" in entry and "time" in entry
-            return PulseStep(entry["pulse"], entry["to"], entry["time"], where) if complete else None
-        if "expect" in entry:
-            width = self.tree.plain.get("chip", {}).get("width", 8)
-            return ExpectStep(entry["expect"], entry.get("mask", (1 << width) - 1), where)
-        if "wait" in entry:
-            return self.wait(entry["wait"], path)
-        return ModeStep(entry["mode"], entry.get("D"), where) if "mode" in entry else None
-
-    def until(self, entry: object, path: KeyPath) -> EveryWord | None:
-        if isinstance(entry, Mapping) and "mode" in entry and "is" in entry:
-            return EveryWord(entry["mode"], entry["is"], self.tree.places.where(path))
+def _protect(builder: StepBuilder) -> Protect | None:
+    table = builder.tree.plain.get("protect")
+    if not isinstance(table, Mapping):
         return None
+    on, off = (builder.steps(table.get(key, ()), ("protect", key)) for key in ("on", "off"))
+    return Protect(on, off, builder.tree.places.where(("protect",)))
 
-    def wait(self, text: str, path: KeyPath) -> WaitStep | None:
-        """At least the parameter's minimum; where only the chip's own maximum is given, at least that."""
-        where = self.tree.places.where((*path, "wait"))
-        window = self.timing.get(text)
-        if window is not None:
-            known = (window.min_ps, window.max_ps, window.typ_ps)
-            return WaitStep(text, next((ps for ps in known if ps is not None), 0), where)
-        try:
-            return WaitStep("", units.parse_ps(text), where)
-        except units.UnitMistake:
-            return None
+
+def _write(tree: Tree) -> BusWrite | None:
+    table = tree.plain.get("write")
+    if not isinstance(table, Mapping) or any(key not in table for key in ("mode", "pin", "to", "time")):
+        return None
+    return BusWrite(
+        mode=table["mode"],
+        pin=table["pin"],
+        to=table["to"],
+        timing=table["time"],
+        gap=table.get("gap", ""),
+        busy=table.get("busy", ""),
+        where=tree.places.where(("write",)),
+    )
+
+
+def _identify_command(builder: StepBuilder) -> CommandIdentify | None:
+    table = builder.tree.plain.get("identify", {})
+    if "command" not in table or "leave" not in table or "mode" not in table or "kind" in table:
+        return None
+    return CommandIdentify(
+        enter=builder.cycles(table["command"], ("identify", "command")),
+        leave=builder.cycles(table["leave"], ("identify", "leave")),
+        mode=table["mode"],
+        settle_ps=builder.least_ps(table["settle"]) or 0 if "settle" in table else 0,
+        where=builder.tree.places.where(("identify",)),
+    )

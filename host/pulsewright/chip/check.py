@@ -4,12 +4,22 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from pulsewright.chip import check_levels, check_pins, check_steps
+from pulsewright.chip import check_bus, check_identify, check_levels, check_lock, check_pins, check_steps
 from pulsewright.chip.build import build
 from pulsewright.chip.findings import Findings
 from pulsewright.chip.source import Parsed, Tree, examined, maker_of, read, resolve_tree, row_count
 from pulsewright.chip.tighten import tightest
 from pulsewright.errors import DefinitionMistake, Problem
+
+_PARTS = (
+    check_pins.check,
+    check_levels.check,
+    check_identify.check,
+    check_bus.check,
+    check_steps.check,
+    check_steps.check_waits,
+    check_lock.check,
+)
 
 
 def check_file(path: Path) -> list[Problem]:
@@ -33,7 +43,7 @@ def examine_rows(parsed: Parsed) -> tuple[list[Problem], list[Tree]]:
     definitions = []
     for tree in trees:
         found = Findings(tree, build(tree))
-        for part in (check_pins.check, check_levels.check, check_steps.check, check_steps.check_waits):
+        for part in _PARTS:
             part(found)
         problems += tree.problems + found.problems
         definitions.append(found.defn)

@@ -22,7 +22,6 @@ def check(found: Findings) -> None:
         _one_rail(found, name)
     _drives_against_outputs(found)
     _plain_modes(found)
-    _identify_mode(found)
     _timing(found)
 
 
@@ -198,40 +197,6 @@ def _plain_modes(found: Findings) -> None:
             found.at(("modes", name), f"{name} raises a level", found=raised, wanted="no raised level")
 
 
-def _identify_mode(found: Findings) -> None:
-    table = found.tree.written.get("identify")
-    if not isinstance(table, Mapping):
-        return
-    keys = [key for key in ("mode", "kind") if key in table]
-    if len(keys) != 1:
-        wanted = 'one of mode = "identify", kind = "none"'
-        found.at(("identify",), "identification is said once", found=" and ".join(keys) or "nothing", wanted=wanted)
-    name = found.defn.identify_mode
-    if not name:
-        return
-    path: KeyPath = ("identify", "mode")
-    if not found.has_mode(name):
-        found.unknown(path, "mode", name, found.tree.names("modes"))
-        return
-    mode = found.defn.modes.get(name)
-    if mode is None:
-        return
-    raised = found.raised_levels(name)
-    written_levels = [level for level in mode.levels.values() if "." in level]
-    all_built = all(level in found.defn.supplies for level in written_levels)
-    if all_built and len(raised) != 1:
-        levels = ", ".join(f"{role} {step.name}" for role, step in raised.items()) or "no raised level"
-        found.at(
-            ("modes", name), "an identify mode has one raised level", found=levels, wanted='such as A9 = "VH.identify"'
-        )
-    if mode.data != "out":
-        found.at(("modes", name, "D"), "an identify mode that does not read", found=str(mode.data), wanted='"out"')
-    vcc = found.defn.supplies.get(mode.vcc)
-    if vcc is not None and vcc.max_mv > VCC_RAISED_ABOVE_MV:
-        reach = f"{vcc.name} up to {show_mv(vcc.max_mv)}"
-        found.at(("modes", name, "VCC"), "an identify mode with VCC raised", found=reach, wanted="at most 5.5 V")
-
-
 # ---- timing ----
 
 
@@ -265,7 +230,8 @@ def _timing(found: Findings) -> None:
 def _used_timings(found: Findings) -> set[str]:
     """Names that steps or modes refer to."""
     used = {mode.access for mode in found.defn.modes.values()}
-    used |= set(_texts(found.tree.written.get("program"))) | set(_texts(found.tree.written.get("erase")))
+    for name in ("program", "erase", "protect", "write", "identify"):
+        used |= set(_texts(found.tree.written.get(name)))
     return used
 
 

@@ -79,26 +79,26 @@ def _sizes(found: Findings) -> None:
 
 def _identities(found: Findings) -> None:
     seen: dict[frozenset[tuple[int, int]], str] = {}
-    by_mode = found.defn.identify == "mode"
+    by_id = found.defn.identify != "none"
     for index, row in enumerate(found.defn.makers):
         if found.tree.row is not None and index != found.tree.row:
             _remember(row, seen)  # rows are told apart in the turn of each; the later one gets the message
             if index > found.tree.row:
                 continue
         else:
-            _row(found, row, ("makers", index), by_mode, seen)
-    if by_mode and found.tree.row is None and found.tree.names("identify"):
+            _row(found, row, ("makers", index), by_id, seen)
+    if by_id and found.tree.row is None and found.tree.names("identify"):
         found.at(("makers",), "identification needs ID bytes", wanted="a [[makers]] row with id, or identify.kind")
 
 
 def _row(
-    found: Findings, row: MakerRow, path: KeyPath, by_mode: bool, seen: dict[frozenset[tuple[int, int]], str]
+    found: Findings, row: MakerRow, path: KeyPath, by_id: bool, seen: dict[frozenset[tuple[int, int]], str]
 ) -> None:
-    if by_mode and not row.ids and "id" not in found.tree.names(*path):
+    if by_id and not row.ids and "id" not in found.tree.names(*path):
         found.at(
             (*path, "id"), "a maker row without ID bytes", wanted='id = [...], or identify.kind = "none" in the row'
         )
-    if not by_mode and row.ids:
+    if not by_id and row.ids:
         found.at((*path, "id"), "ID bytes of a part that has no identification", wanted="identify.mode, or no id")
     for cells in row.ids:
         for cell in cells:

@@ -1,65 +1,113 @@
-"""Checks of [program], [erase], [verify]: every step list is walked as it runs, with the modes that can be in force."""
+"""Checks of [program], [erase], [protect], [verify]: every step list is walked as it runs, with the mode in force."""
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping
+from dataclasses import dataclass, replace
 
-from pulsewright import units
-from pulsewright.chip.check_levels import control_pattern, enabled_by
-from pulsewright.chip.findings import Findings
+from pulsewright.chip.check_bus import check_load, check_poll, check_write
+from pulsewright.chip.check_pulse import check_pulse
+from pulsewright.chip.findings import Findings, is_time
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import (
     EachStep,
     EveryWord,
     ExpectStep,
+    LoadStep,
     Method,
-    Mode,
     ModeStep,
+    PollStep,
     PulseStep,
     RepeatStep,
     Step,
     WaitStep,
+    WriteStep,
 )
 
-LOCK = (0xAA, 0x55, 0x80, 0xAA, 0x55, 0x40)  # boot-block lock of page-write flash: it can never be undone
-_OTHER = {"L": "H", "H": "L"}
+MOST_LOOPS = 3  # one inside the other (design: the rig's routines loop three deep); each = "word" is two by itself
+_AT_REST = "standby"  # the mode a sequence enters before its first step
+_UNKNOWN = "?"  # a mode that is told of where it is named
+
+
+@dataclass(frozen=True)
+class Scope:
+    """What is around a step: loops over data, other loops, and whether there is any data to loop over."""
+
+    data: bool  # the steps are given words to write
+    unit: str = ""  # what the method writes at once
+    page: bool = False  # inside a loop over pages
+    word: bool = False  # inside a loop over words: the image's word is known
+    repeat: bool = False
+    loops: int = 0
 
 
 def check(found: Findings) -> None:
     """All checks of step lists."""
-    for name, method in (("program", found.defn.program), ("erase", found.defn.erase)):
+    defn = found.defn
+    methods = ((("program",), defn.program), (("program", "protected"), defn.protected), (("erase",), defn.erase))
+    for path, method in methods:
         if method is not None:
-            _method(found, name, method)
-    for index, one in enumerate(found.defn.verify):
+            _method(found, path, method)
+    if defn.protect is not None:
+        _protect(found, "on", defn.protect.on)
+        _protect(found, "off", defn.protect.off)
+    for index, one in enumerate(defn.verify):
         _read_mode(found, ("verify", "passes", index, "mode"), one.mode)
-    for name in found.tree.names():
-        _no_lock(found, name)
 
 
-def _method(found: Findings, name: str, method: Method) -> None:
-    written = found.tree.names(name)
+def _method(found: Findings, path: KeyPath, method: Method) -> None:
+    written = found.tree.names(*path)
+    around = found.tree.names(*path[:-1]) if len(path) > 1 else ()
     for key in ("bits", "unit"):
-        if key not in written:
-            found.at((name, key), "a key is missing", wanted=key)
+        if key not in written and key not in around:
+            found.at((*path, key), "a key is missing", wanted=key)
     if "steps" not in written and "method" not in written:
-        found.at((name, "steps"), "a key is missing", wanted="steps, or method")
-    walk = _Walk(found, name)
-    after = walk.steps(method.steps, frozenset(), inside_each=False)
-    walk.steps(method.finally_, after, inside_each=False)
-    for step in _all_steps(method.finally_):
-        if isinstance(step, ModeStep):
-            raised = ", ".join(found.raised_levels(step.mode))
+        found.at((*path, "steps"), "a key is missing", wanted="steps, or method")
+    if method.unit == "page" and "unloaded" not in (*written, *around):
+        wanted = 'unloaded = "kept", "undefined" or "blank"'
+        found.at((*path, "unloaded"), "nothing says what becomes of words that are not loaded", wanted=wanted)
+    elif method.unit != "page" and "unloaded" in written:
+        what = "unloaded words of a part that is not written in pages"
+        found.at((*path, "unloaded"), what, found=f'unit = "{method.unit}"', wanted='unit = "page"')
+    walk = _Walk(found)
+    walk.steps(method.steps, "", Scope(data=path[0] == "program", unit=method.unit))
+    walk.steps(method.finally_, "", Scope(data=False))
+    _raise_nothing(found, "finally", method.finally_)
+
+
+def _protect(found: Findings, key: str, steps: tuple[Step, ...]) -> None:
+    end = _Walk(found).steps(steps, "", Scope(data=False))
+    if end not in ("", _AT_REST, _UNKNOWN):
+        wanted = '{ mode = "standby" } at the end'
+        found.at(("protect", key), "protect does not end in standby", found=f"it ends in {end}", wanted=wanted)
+    _raise_nothing(found, "protect", steps)
+
+
+def _raise_nothing(found: Findings, name: str, steps: Iterable[Step]) -> None:
+    for step in all_steps(steps):
+        modes = []
+        if isinstance(step, ModeStep | PollStep):
+            modes = [step.mode]
+        elif isinstance(step, RepeatStep) and step.until is not None:
+            modes = [step.until.mode]
+        elif isinstance(step, WriteStep) and found.defn.write is not None:
+            modes = [found.defn.write.mode]
+        for mode in modes:
+            raised = ", ".join(found.raised_pins(mode))
             if raised:
-                what = "finally raises a level"
-                found.at(step.where, what, found=f"mode {step.mode} at {raised}", wanted="modes without raised levels")
+                what = f"{name} raises a level"
+                found.at(step.where, what, found=f"mode {mode} at {raised}", wanted="modes without raised levels")
 
 
-def _all_steps(steps: Iterable[Step]) -> list[Step]:
+def all_steps(steps: Iterable[Step]) -> list[Step]:
+    """Steps with those inside them."""
     found: list[Step] = []
     for step in steps:
         found.append(step)
-        if isinstance(step, (RepeatStep, EachStep)):
-            found += _all_steps(step.steps)
+        if isinstance(step, RepeatStep | EachStep):
+            found += all_steps(step.steps)
+        elif isinstance(step, ExpectStep):
+            found += all_steps(step.else_)
     return found
 
 
@@ -76,43 +124,44 @@ def _read_mode(found: Findings, place: KeyPath, name: str) -> None:
 
 
 class _Walk:
-    """Walks steps in the order they run; `modes` are the names of those that may be in force."""
+    """Walks steps in the order they run, with the name of the mode in force ("": at rest, before the first mode)."""
 
-    def __init__(self, found: Findings, table: str) -> None:
+    def __init__(self, found: Findings) -> None:
         self.found = found
-        self.table = table
 
-    def steps(self, steps: Iterable[Step], modes: frozenset[str], *, inside_each: bool) -> frozenset[str]:
+    def steps(self, steps: Iterable[Step], mode: str, scope: Scope) -> str:
         for step in steps:
-            modes = self.step(step, modes, inside_each)
-        return modes
+            mode = self.step(step, mode, scope)
+        return mode
 
-    def step(self, step: Step, modes: frozenset[str], inside_each: bool) -> frozenset[str]:
-        if isinstance(step, ModeStep):
-            self.mode(step, inside_each)
-            return frozenset({step.mode})
-        if isinstance(step, PulseStep):
-            self.pulse(step, modes)
-        elif isinstance(step, WaitStep):
-            pass  # its name was checked where it is written, `waits`
-        elif isinstance(step, ExpectStep):
-            self.expect(step, modes, inside_each)
-        elif isinstance(step, EachStep):
-            return self.loop(step.steps, modes, inside_each=True)
-        else:
-            return self.repeat(step, modes, inside_each)
-        return modes
+    def step(self, step: Step, mode: str, scope: Scope) -> str:
+        """The mode in force behind the step; a loop that does not end where it began is told, and the rest goes on."""
+        found = self.found
+        match step:
+            case ModeStep():
+                self.mode(step, scope)
+                return step.mode if found.has_mode(step.mode) else _UNKNOWN
+            case PulseStep():
+                check_pulse(found, step, mode)
+            case WaitStep():
+                pass  # its name is checked where it is written, `check_waits`
+            case ExpectStep():
+                self.expect(step, mode, scope)
+            case EachStep():
+                self.each(step, mode, scope)
+            case RepeatStep():
+                return self.repeat(step, mode, scope)
+            case PollStep():
+                check_poll(found, step, mode or _AT_REST, in_hand=scope.word or scope.page)
+            case WriteStep() | LoadStep():
+                if isinstance(step, WriteStep):
+                    check_write(found, step, in_word=scope.word)
+                else:
+                    check_load(found, step, in_page=scope.page and not scope.word)
+                return found.defn.write.mode if found.defn.write is not None else _UNKNOWN
+        return mode
 
-    def loop(self, steps: tuple[Step, ...], modes: frozenset[str], *, inside_each: bool) -> frozenset[str]:
-        """A body that runs again starts in the modes of its own end too; a second walk tells nothing twice."""
-        end = self.steps(steps, modes, inside_each=inside_each)
-        if not end <= modes:
-            known = list(self.found.problems)
-            end = self.steps(steps, modes | end, inside_each=inside_each)
-            self.found.problems = known + [one for one in self.found.problems[len(known) :] if one not in known]
-        return modes | end
-
-    def mode(self, step: ModeStep, inside_each: bool) -> None:
+    def mode(self, step: ModeStep, scope: Scope) -> None:
         found = self.found
         if not found.has_mode(step.mode):
             found.unknown(step.where, "mode", step.mode, found.tree.names("modes"))
@@ -127,41 +176,81 @@ class _Walk:
             found.at(
                 step.where, "a mode that drives D without saying what", found=step.mode, wanted='D = "image" or a value'
             )
-        self.value(step, step.data, inside_each)
+        self.value(step, step.data, scope)
 
-    def value(self, step: Step, value: str | int | None, inside_each: bool) -> None:
+    def value(self, step: Step, value: str | int | None, scope: Scope) -> None:
         found = self.found
-        if value == "image" and not inside_each:
+        if value == "image" and not scope.word:
             found.at(
                 step.where, "the image's word outside `each`", found='"image"', wanted='inside { each = "word", ... }'
             )
         if isinstance(value, int) and value >= 1 << found.defn.width:
             found.at(step.where, "a value wider than a word", found=f"0x{value:X}", wanted=f"{found.defn.width} bits")
 
-    def expect(self, step: ExpectStep, modes: frozenset[str], inside_each: bool) -> None:
-        self.value(step, step.value, inside_each)
-        if step.mask >= 1 << self.found.defn.width:
-            wanted = f"{self.found.defn.width} bits"
-            self.found.at(step.where, "a mask wider than a word", found=f"0x{step.mask:X}", wanted=wanted)
-        if not modes:
-            self.found.at(step.where, "a sample before any mode", wanted='a mode with D = "out" before it')
-        for name in sorted(modes):
-            mode = self.found.defn.modes.get(name)
-            if mode is not None and mode.data != "out":
-                what = "a sample while the chip does not drive D"
-                self.found.at(
-                    step.where, what, found=f"mode {name} has D {mode.data!r}", wanted='a mode with D = "out"'
-                )
+    def expect(self, step: ExpectStep, mode: str, scope: Scope) -> None:
+        found = self.found
+        self.value(step, step.value, scope)
+        if step.mask >= 1 << found.defn.width:
+            wanted = f"{found.defn.width} bits"
+            found.at(step.where, "a mask wider than a word", found=f"0x{step.mask:X}", wanted=wanted)
+        if not mode:
+            found.at(step.where, "a sample before any mode", wanted='a mode with D = "out" before it')
+        row = found.defn.modes.get(mode)
+        if row is not None and row.data != "out":
+            what = "a sample while the chip does not drive D"
+            found.at(step.where, what, found=f"mode {mode} has D {row.data!r}", wanted='a mode with D = "out"')
+        self.back(step, "else", self.steps(step.else_, mode, scope), mode)
 
-    def repeat(self, step: RepeatStep, modes: frozenset[str], inside_each: bool) -> frozenset[str]:
-        after = self.loop(step.steps, modes, inside_each=inside_each)
-        if step.until is None:
-            if not any(isinstance(one, ExpectStep) for one in _own_steps(step.steps)):
-                wanted = 'an expect inside, or until = { every = "word", ... }'
-                self.found.at(step.where, "a repeat without a way to end", found=f"max {step.max}", wanted=wanted)
-            return after
-        self.every(step.until)
-        return frozenset({step.until.mode})
+    def back(self, step: Step, name: str, end: str, begin: str) -> None:
+        """What runs again, or only now and then, leaves the chip as it found it."""
+        if _UNKNOWN not in (end, begin) and (end or _AT_REST) != (begin or _AT_REST):
+            what = f"{name} does not end in the mode it began in"
+            begin = begin or f"{_AT_REST} (at rest)"
+            self.found.at(step.where, what, found=f"begins in {begin}, ends in {end}", wanted=f"{begin} at its end")
+
+    # ---- loops ----
+
+    def each(self, step: EachStep, mode: str, scope: Scope) -> None:
+        found = self.found
+        around = scope.page or scope.word
+        if around and not (step.unit == "word" and scope.page and not scope.word):
+            found.at(step.where, "a loop over the data inside another", found=f"each {step.unit}", wanted=_NESTED)
+        elif not around and not scope.data:
+            what = "a loop over the data where there is none"
+            found.at(step.where, what, found=f"each {step.unit}", wanted="steps of [program]")
+        elif not around and scope.repeat:
+            found.at(step.where, "a loop over the data inside a repeat", found=f"each {step.unit}", wanted=_NESTED)
+        if step.unit == "page" and scope.unit != "page":
+            what = "a loop over pages in a method of another unit"
+            found.at(step.where, what, found=f'unit = "{scope.unit}"', wanted='unit = "page"')
+        if step.unit == "page" and "page" not in found.tree.names("geometry"):
+            found.at(step.where, "pages of a part that has none", wanted="[geometry] page = ...")
+        loops = 2 if step.unit == "word" and not around else 1
+        inside = replace(scope, page=scope.page or step.unit == "page", word=step.unit == "word")
+        end = self.steps(step.steps, mode, self.deeper(step, inside, loops))
+        self.back(step, f"each {step.unit}", end, mode)
+
+    def deeper(self, step: Step, scope: Scope, loops: int) -> Scope:
+        if scope.loops <= MOST_LOOPS < scope.loops + loops:
+            wanted = f"at most {MOST_LOOPS}, of which a loop over words alone is two"
+            self.found.at(step.where, "too many loops one inside the other", found=str(scope.loops + loops), wanted=wanted)
+        return replace(scope, loops=scope.loops + loops)
+
+    def repeat(self, step: RepeatStep, mode: str, scope: Scope) -> str:
+        found = self.found
+        end = self.steps(step.steps, mode, self.deeper(step, replace(scope, repeat=True), 1))
+        if step.max > 1:
+            self.back(step, "repeat", end, mode)
+        looks = [one for one in step.steps if isinstance(one, ExpectStep) and not one.else_]
+        if step.until is not None:
+            self.every(step.until)
+        elif not looks:
+            wanted = 'an expect at the top of its list, or until = { every = "word", ... }'
+            found.at(step.where, "a repeat without a way to end", found=f"max {step.max}", wanted=wanted)
+        for one in looks if step.until is not None else looks[:-1]:
+            wanted = "one expect at the top of a repeat, none where it reads every word"
+            found.at(one.where, "an expect that decides nothing", found=f"expect {one.value}", wanted=wanted)
+        return end
 
     def every(self, until: EveryWord) -> None:
         found = self.found
@@ -175,94 +264,14 @@ class _Walk:
                 until.where, "a value wider than a word", found=f"0x{until.is_:X}", wanted=f"{found.defn.width} bits"
             )
 
-    def pulse(self, step: PulseStep, modes: frozenset[str]) -> None:
-        found = self.found
-        if step.pin not in found.tree.names("pins"):
-            found.unknown(step.where, "pin", step.pin, found.control_roles())
-            return
-        if step.pin not in found.control_roles():
-            found.at(
-                step.where,
-                "a pulse at a pin that is no control pin",
-                found=step.pin,
-                wanted=", ".join(found.control_roles()),
-            )
-            return
-        self.pulse_time(step)
-        if not modes:
-            found.at(step.where, "a pulse before any mode", found=step.pin, wanted="a mode step before it")
-        for name in sorted(modes):
-            mode = found.defn.modes.get(name)
-            if mode is not None:
-                self.pulse_in(step, mode)
 
-    def pulse_in(self, step: PulseStep, mode: Mode) -> None:
-        found = self.found
-        level = mode.levels.get(step.pin)
-        if level is None:
-            if step.pin not in found.tree.names("modes", mode.name):
-                found.at(
-                    step.where,
-                    "a pulse at a pin the mode does not set",
-                    found=f"{step.pin} in {mode.name}",
-                    wanted=step.pin,
-                )
-        elif level == step.to:
-            what = "a pulse that does not end at the pin's idle level"
-            wanted = f'{step.pin} = "{_OTHER[step.to]}" in {mode.name}, or to = "{_OTHER[step.to]}"'
-            found.at(step.where, what, found=f"{step.pin} is {level} in {mode.name} already", wanted=wanted)
-        elif level != _OTHER[step.to]:
-            what = "a pulse at a pin that has no idle level"
-            found.at(step.where, what, found=f"{step.pin} is {level} in {mode.name}", wanted=f'"{_OTHER[step.to]}"')
-        elif mode.data == "in" or isinstance(mode.data, int):
-            out = enabled_by(found, {**control_pattern(found, mode), step.pin: step.to})
-            if out:
-                what = "a pulse that enables the outputs while D is driven"
-                found.at(
-                    step.where, what, found=f"{mode.name} with {step.pin} {step.to} is as {out}", wanted="outputs off"
-                )
-
-    def pulse_time(self, step: PulseStep) -> None:
-        found = self.found
-        known = found.tree.names("timing")
-        if step.timing not in known:
-            if _is_time(step.timing):
-                wanted = "the name of a timing parameter with min and max"
-                found.at(step.where, "a pulse with no window", found=f'"{step.timing}"', wanted=wanted)
-            else:
-                found.unknown(step.where, "timing parameter", step.timing, known)
-            return
-        missing = [key for key in ("min", "max") if key not in found.tree.names("timing", step.timing)]
-        if missing:
-            lacks = f"{step.timing} without {' and '.join(missing)}"
-            found.at(step.where, "a pulse with no window", found=lacks, wanted=f"min and max of {step.timing}")
-
-
-def _own_steps(steps: Iterable[Step]) -> list[Step]:
-    """Steps of a repeat, down to but not into a repeat inside it."""
-    own: list[Step] = []
-    for step in steps:
-        own.append(step)
-        if isinstance(step, EachStep):
-            own += _own_steps(step.steps)
-    return own
-
-
-def _is_time(text: str) -> bool:
-    try:
-        units.parse_ps(text)
-    except units.UnitMistake:
-        return False
-    return True
+_NESTED = 'loops one after the other, or each = "word" inside each = "page"'
 
 
 def check_waits(found: Findings) -> None:
     """Each `wait` names a timing parameter or is a time; read from the tree, as a wrong one builds no step."""
-    for name in ("program", "erase"):
-        table = found.tree.plain.get(name)
-        if isinstance(table, Mapping):
-            for key in ("steps", "finally"):
-                _waits(found, table.get(key), (name, key))
+    for name in ("program", "erase", "protect"):
+        _waits(found, found.tree.plain.get(name), (name,))
 
 
 def _waits(found: Findings, node: object, path: KeyPath) -> None:
@@ -270,64 +279,18 @@ def _waits(found: Findings, node: object, path: KeyPath) -> None:
         for index, one in enumerate(node):
             _waits(found, one, (*path, index))
     elif isinstance(node, Mapping):
-        text = node.get("wait")
-        if isinstance(text, str) and text not in found.tree.names("timing") and not _is_time(text):
-            if units_wrong(text):
-                found.at((*path, "wait"), "not a time", found=f'"{text}"', wanted='a time such as "2 us"')
-            else:
-                found.unknown((*path, "wait"), "timing parameter", text, found.tree.names("timing"))
-        for key in ("repeat", "steps"):
-            _waits(found, node.get(key), (*path, key))
-
-
-def units_wrong(text: str) -> bool:
-    """Whether a text was meant as a number with a unit, rather than a name."""
-    return text.strip()[:1].isdigit() or text.strip()[:1] in ("+", "-")
-
-
-# ---- the permanent lock ----
-
-
-def _no_lock(found: Findings, table: str) -> None:
-    """No table holds the lock's six data values in a row, whatever the steps that carry them are called."""
-    values: list[tuple[int, KeyPath]] = []
-    _data_values(found, found.tree.written.get(table), (table,), values)
-    flat = [value for value, _ in values]
-    for start in range(len(flat) - len(LOCK) + 1):
-        if tuple(flat[start : start + len(LOCK)]) == LOCK:
-            what = "a permanent lock in a step list"
-            text = " ".join(f"{value:02X}" for value in LOCK)
-            found.at(values[start][1], what, found=text, wanted="no such sequence: it can never be undone")
-
-
-def _data_values(found: Findings, node: object, path: KeyPath, values: list[tuple[int, KeyPath]]) -> None:
-    """Data in the order it would be written: D of steps, data of cycles, pairs of address and data, plain lists."""
-    if isinstance(node, list):
-        numbers = all(isinstance(one, int) for one in node)
-        pair = numbers and len(node) == 2 and node[0] > 0xFF
-        for index, one in enumerate(node):
-            if isinstance(one, int):
-                if not pair or index:
-                    _data(found, values, one, (*path, index))
-            else:
-                _data_values(found, one, (*path, index), values)
-    elif isinstance(node, Mapping):
+        if isinstance(text := node.get("wait"), str):
+            check_least_time(found, text, (*path, "wait"))
         for key, one in node.items():
-            if isinstance(one, int):
-                if key in ("D", "data", "value", "byte"):
-                    _data(found, values, one, (*path, key))
-            elif key == "mode" and isinstance(one, str) and "D" not in node:
-                mode = found.defn.modes.get(one)
-                if mode is not None and isinstance(mode.data, int):
-                    _data(found, values, mode.data, (*path, key))
-            else:
-                _data_values(found, one, (*path, key), values)
+            if key != "parameters":
+                _waits(found, one, (*path, key))
 
 
-def _data(found: Findings, values: list[tuple[int, KeyPath]], value: int, path: KeyPath) -> None:
-    """The same value held over several steps counts once; what is wider than a word is an address."""
-    if value >= 1 << found.defn.width:
+def check_least_time(found: Findings, text: str, path: KeyPath) -> None:
+    """A timing parameter of the file, or a time."""
+    if text in found.tree.names("timing") or is_time(text):
         return
-    value &= 0xFF  # word-wide parts take the code in the low byte
-    if not values or values[-1][0] != value:
-        values.append((value, path))
+    if text.strip()[:1].isdigit() or text.strip()[:1] in ("+", "-"):
+        found.at(path, "not a time", found=f'"{text}"', wanted='a time such as "2 us"')
+    else:
+        found.unknown(path, "timing parameter", text, found.tree.names("timing"))

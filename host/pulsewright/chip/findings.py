@@ -6,6 +6,7 @@ import re
 from collections.abc import Iterable
 from dataclasses import dataclass, field
 
+from pulsewright import units
 from pulsewright.chip.kinds import any_of, nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Definition, SupplyStep
@@ -69,3 +70,19 @@ class Findings:
         found = self.defn.modes.get(mode)
         levels = {} if found is None else found.levels
         return {role: step for role, level in levels.items() if (step := self.raised(level)) is not None}
+
+    def raised_pins(self, mode: str) -> list[str]:
+        """Pins of a mode at a raised level, VCC among them where it stands above 5.5 V."""
+        row = self.defn.modes.get(mode)
+        vcc = self.defn.supplies.get(row.vcc) if row is not None else None
+        high = ["VCC"] if vcc is not None and vcc.max_mv > VCC_RAISED_ABOVE_MV else []
+        return [*self.raised_levels(mode), *high]
+
+
+def is_time(text: str) -> bool:
+    """Whether a text is a time with its unit."""
+    try:
+        units.parse_ps(text)
+    except units.UnitMistake:
+        return False
+    return True

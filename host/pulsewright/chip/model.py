@@ -267,7 +267,7 @@ class Method:
     steps: tuple[Step, ...]
     finally_: tuple[Step, ...] = ()
     where: Where = field(default_factory=Where)
-    unloaded: str = ""  # unit "page": what becomes of words that are not loaded: "kept", "undefined", "0xFF" (blank)
+    unloaded: str = ""  # unit "page": what becomes of words that are not loaded: "kept", "undefined", "blank"
 
 
 @dataclass(frozen=True)
@@ -310,6 +310,8 @@ class Definition:
     identify_command: CommandIdentify | None = None  # when identify == "command"
     protect: Protect | None = None
     protected: Method | None = None  # [program.protected]: how a part with protection on is written
+    technology: str = ""  # "eprom" | "eeprom" | "flash"; "": the file does not say
+    apart: tuple[str, ...] = ()  # row None: what differs between rows and no common value serves, by dotted key
     digest: str = ""  # sha-256 of the resolved definition (file, methods, row), hex
     raw: Mapping[str, object] = field(default_factory=dict)  # the resolved TOML tree
 

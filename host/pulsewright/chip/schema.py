@@ -31,10 +31,15 @@ CONTROL_ROLES = ("CE", "OE", "WE", "PGM", "CS", "BYTE", "RESET", "WP")
 ROLES = ("A", "D", *CONTROL_ROLES, "VPP", "VCC", "GND", "BUSY", "NC", "DC")
 UNDRIVEN_ROLES = ("VCC", "GND", "BUSY", "NC", "DC")  # a mode never sets these
 # Timing parameters the proof gives a meaning to by their name alone; README.md of chipdefs explains each.
-MEANT_TIMINGS = ("tAS", "tAH", "tDS", "tDH", "tVCS", "tVS", "tVH", "tVR", "tPRT", "tACC", "tCE", "tOE", "tDF")
+MEANT_TIMINGS = (
+    *("tAS", "tAH", "tDS", "tDH", "tVCS", "tVS", "tVH", "tVR", "tPRT", "tACC", "tCE", "tOE", "tDF"),
+    *("tCS", "tCH", "tOES", "tOEH", "tOEHP", "tWPH", "tWPH2"),  # of bus writes and polls
+)
 # What the chip takes at most, not what it asks of the rig: over several maker rows the slowest counts.
 RESPONSE_TIMINGS = ("tACC", "tCE", "tOE", "tDF", "tWC")
 DATA_WORDS = ("in", "out", "Z")
+POLL_BITS = ("DQ7", "DQ6")
+TECHNOLOGIES = ("eprom", "eeprom", "flash")
 
 _IDENT = r"[a-z][a-z0-9_]*"
 _ROLE = ROLE_NAME = "|".join(ROLES) + r"|(?:CE|OE|WE|CS)[0-9]"
@@ -43,6 +48,7 @@ _LEVEL = rf"L|H|X|Z|VCC|(?:{'|'.join(SUPPLIES)})\.{_IDENT}"
 _VOLTAGE = r"\s*[+-]?\d+(?:\.\d+)?\s*(?:V|mV)\s*"
 _MAXIMUM = rf"{_VOLTAGE}|VCC\s*[+-]{_VOLTAGE}|VCC"
 TIMING_NAME = r"t[A-Z][A-Za-z0-9]*"
+CYCLE = r"([0-9A-Fa-f]{1,4})@([0-9A-Fa-f]{1,6})"  # a bus write cycle: word, address
 
 
 def _voltage(about: str, low: int = 0) -> Quantity:
@@ -117,6 +123,19 @@ _ID_CELL = Table(
     },
     required=("at", "is"),
 )
+_CYCLES = ListOf(Text(pattern=CYCLE, wanted='a bus cycle such as "AA@5555", word and address in hex'))
+_WRITES = Either(
+    (
+        Text(pattern=_IDENT, wanted="the name of a command, or a list of bus cycles"),
+        ListOf(Text(pattern=rf"{CYCLE}|image", wanted='a bus cycle such as "AA@5555", both in hex, or "image"')),
+    ),
+    wanted='the name of a command, or a list of bus cycles such as ["AA@5555", "55@2AAA", "image"]',
+)
+_COMMAND = Either(
+    (Text(pattern=_IDENT, wanted="the name of a command, or a list of bus cycles"), _CYCLES),
+    wanted='the name of a command, or a list of bus cycles such as ["AA@5555", "55@2AAA"]',
+)
+_TIMING_REF = Text(pattern=TIMING_NAME, wanted='the name of a timing parameter such as "tWC"')
 _VALUE = Either((Text(choices=("image",)), _DATA_CONSTANT), wanted='"image" or a constant such as 0xFF')
 _STEPS = Named("steps", table=False)
 
@@ -136,8 +155,8 @@ _STEP = Tables(
             required=("max",),
         ),
         "each": Table(
-            about="once for each word that is to be written",
-            keys={"each": Text(choices=("word",)), "steps": _STEPS},
+            about="once for each word that is to be written, or for each page that has such words",
+            keys={"each": Text(choices=("word", "page")), "steps": _STEPS},
             required=("steps",),
         ),
         "pulse": Table(
@@ -150,8 +169,29 @@ _STEP = Tables(
             required=("to", "time"),
         ),
         "expect": Table(
-            about="sample D and compare; ends the repeat around it when equal",
-            keys={"expect": _VALUE, "mask": Whole(low=1, high=0xFFFF)},
+            about="sample D and compare; at the top of a repeat's list equal ends the repeat",
+            keys={
+                "expect": _VALUE,
+                "mask": Whole(low=1, high=0xFFFF),
+                "else": Named("steps", table=False, about="what is done when it differs; it ends in the mode it began in"),
+            },
+        ),
+        "write": Table(
+            about="bus write cycles, back to back, as [write] makes them",
+            keys={"write": replace(_WRITES, about="a name in [commands], or a list of cycles")},
+        ),
+        "load": Table(
+            about="the words of the page in hand, back to back, as bus write cycles",
+            keys={"load": Text(choices=("page",))},
+        ),
+        "poll": Table(
+            about="read the chip in `mode` until it has done its work; not done within the parameter's max: failed",
+            keys={
+                "poll": Text(choices=POLL_BITS, about="DQ7: equals bit 7 of the word last written; DQ6: stops toggling"),
+                "mode": Text(about="the mode it is read in"),
+                "within": Text(about="a timing parameter with a max"),
+            },
+            required=("mode", "within"),
         ),
         "wait": Table(
             about="wait at least a timing parameter, or a time",
@@ -167,7 +207,7 @@ _EVERY = Table(
 )
 
 
-def _method(bits: tuple[str, ...]) -> Table:
+def _method(bits: tuple[str, ...], more: Mapping[str, Kind] | None = None) -> Table:
     return Table(
         keys={
             "bits": Text(choices=bits, about="which way it changes bits"),
@@ -175,9 +215,19 @@ def _method(bits: tuple[str, ...]) -> Table:
             "steps": _STEPS,
             "method": Text(about="a step list in methods/NAME.toml, instead of `steps`"),
             "parameters": Anything({"type": "object"}, about="values for the method's $names"),
-            "finally": Named("steps", table=False),
+            "finally": Named("steps", table=False, about="steps at the end, whatever happened; they raise nothing"),
+            **(more or {}),
         },
     )
+
+
+_UNLOADED = {
+    "unloaded": Text(
+        choices=("kept", "undefined", "blank"), about="what becomes of the words of a page that are not loaded"
+    )
+}
+_PROGRAM_BITS = ("1 to 0", "both")
+_PROTECTED = replace(_method(_PROGRAM_BITS, _UNLOADED), about="how the part is written with its protection on")
 
 
 KINDS: Mapping[str, Kind] = {
@@ -202,6 +252,9 @@ _TABLES: dict[str, Kind] = {
             "source": Text(about='title, number and revision of the data sheet, or "from memory"'),
             "blank": Whole(high=0xFFFF, about="a word in the erased state; all ones if not given"),
             "erase": Text(choices=("electrical", "uv", "none"), about="how the part is erased"),
+            "technology": Text(
+                choices=TECHNOLOGIES, about='what the cells are; only "flash" may be identified by command writes'
+            ),
             "notes": ListOf(Text(), about="what a person at the bench should know"),
         },
         required=("name", "about", "words", "width", "package", "source"),
@@ -246,14 +299,43 @@ _TABLES: dict[str, Kind] = {
         what="timing parameter",
         wanted="a name such as tAS or tPW",
     ),
+    "geometry": Table(keys={"page": Whole(low=1, about="words of a page: a power of two that divides words")}),
+    "commands": Table(
+        about='named lists of bus write cycles "WORD@ADDRESS", both hex',
+        keys={},
+        others=_CYCLES,
+        names=_IDENT,
+        what="command",
+        wanted="a name in small letters, such as protect_on",
+    ),
+    "write": Table(
+        about="how a bus write cycle is made",
+        keys={
+            "mode": Text(about='the mode it is made in: D = "in", the strobe at its idle level'),
+            "pin": Text(pattern=_ROLE, wanted="a control pin such as WE", about="the strobe"),
+            "to": Text(choices=("L", "H"), about="where the strobe goes"),
+            "time": replace(_TIMING_REF, about="width of the strobe: a timing parameter with a min"),
+            "gap": replace(_TIMING_REF, about="window from load to load of one page"),
+            "busy": replace(_TIMING_REF, about="the longest time the part works by itself after a write; needs a max"),
+        },
+        required=("mode", "pin", "to", "time"),
+    ),
     "identify": Table(
         keys={
             "mode": Text(about="the mode in which the chip gives its ID bytes"),
             "kind": Text(choices=("none",), about="the part has no electronic ID"),
+            "command": replace(_COMMAND, about="bus cycles after which the ID is read; only on flash"),
+            "leave": replace(_COMMAND, about="bus cycles that lead back to reading"),
+            "settle": Text(about='wait after each of the two: a timing parameter such as "tIDA", or a time'),
         },
     ),
-    "program": _method(("1 to 0", "both")),
+    "program": _method(_PROGRAM_BITS, {**_UNLOADED, "protected": _PROTECTED}),
     "erase": _method(("to blank", "both")),
+    "protect": Table(
+        about="software data protection, switched on and off; from standby to standby, nothing raised",
+        keys={"on": _STEPS, "off": _STEPS},
+        required=("on", "off"),
+    ),
     "verify": Table(keys={"passes": ListOf(Table(keys={"mode": Text()}, required=("mode",)))}, required=("passes",)),
 }
 REQUIRED_TABLES = ("chip", "pins", "supplies", "maxima", "modes", "timing", "identify")

@@ -27,6 +27,7 @@ METHOD_FILE = Table(
     required=("format", "steps"),
 )
 _MEMORY = "from memory"
+METHOD_TABLES: tuple[KeyPath, ...] = (("program",), ("program", "protected"), ("erase",))
 
 
 @dataclass(frozen=True)
@@ -146,14 +147,30 @@ def resolve_tree(parsed: Parsed, row: int | None) -> Tree:
         _merge(merged, overrides_of(entry))
         places.mount((), parsed.text, ("makers", row), exact=True)
     problems: list[Problem] = []
-    for name in ("program", "erase"):
-        if isinstance(merged.get(name), dict):
-            _expand_method(merged[name], (name,), parsed, places, problems)
+    for path in METHOD_TABLES:
+        table = _table_at(merged, path)
+        if table is not None:
+            _expand_method(table, path, parsed, places, problems, _inherited(parsed.tree, overrides_of(entry), path))
     sources: dict[KeyPath, str] = {}
     if isinstance(entry, Mapping) and isinstance(source := entry.get("from"), str):
         sources.update(dict.fromkeys(_leaves(overrides_of(entry)), source))
     plain = _unwrapped(merged, (), sources)
     return Tree(parsed, row, merged, plain, sources, places, problems, plain)
+
+
+def _inherited(base: Node, over: Node, path: KeyPath) -> frozenset[str]:
+    """Parameters of the base's method where the row names a method of its own: it takes those it knows."""
+    if "method" not in (_table_at(over, path) or {}):
+        return frozenset()
+    of_base, of_row = (_table_at(tree, (*path, "parameters")) or {} for tree in (base, over))
+    return frozenset(of_base) - frozenset(of_row)
+
+
+def _table_at(tree: Node, path: KeyPath) -> Node | None:
+    node: Any = tree
+    for part in path:
+        node = node.get(part) if isinstance(node, dict) else None
+    return node if isinstance(node, dict) else None
 
 
 def examined(tree: Tree) -> Tree:
@@ -186,8 +203,8 @@ def _drop_what_is_answered(base: Node, over: Mapping[str, Any], path: KeyPath) -
     if len(path) == 3 and path[0] == "supplies":
         apart = (("limits",), ("min", "max"))
     elif path == ("identify",):
-        apart = (("mode",), ("kind",))
-    elif path in (("program",), ("erase",)):
+        apart = (("mode", "command", "leave", "settle"), ("kind",))
+    elif path in METHOD_TABLES:
         apart = (("steps",), ("method", "parameters"))
     for these, those in (apart, apart[::-1]) if apart else ():
         if any(key in over for key in these) and not any(key in over for key in those):
@@ -212,8 +229,10 @@ def _unwrapped(value: Any, path: KeyPath, sources: dict[KeyPath, str]) -> Any:
 # ---- methods ------------------------------------------------------------------------------------
 
 
-def _expand_method(table: Node, path: KeyPath, parsed: Parsed, places: Places, problems: list[Problem]) -> None:
-    """Put the steps of `method = "name"` in their place, its parameters filled in."""
+def _expand_method(
+    table: Node, path: KeyPath, parsed: Parsed, places: Places, problems: list[Problem], inherited: frozenset[str]
+) -> None:
+    """Put the steps of `method = "name"` in their place, its parameters filled in; `inherited` ones may be unknown."""
     if "method" not in table:
         if "parameters" in table:
             where = places.where((*path, "parameters"))
@@ -227,6 +246,8 @@ def _expand_method(table: Node, path: KeyPath, parsed: Parsed, places: Places, p
     if loaded is None:
         return
     body, text = loaded
+    if isinstance(given := table.get("parameters"), dict) and isinstance(declared := body.get("parameters"), dict):
+        table["parameters"] = {key: one for key, one in given.items() if key in declared or key not in inherited}
     values = _parameter_values(body, text, table.get("parameters", {}), places, (*path, "parameters"), problems)
     for key in ("bits", "unit", "steps", "finally"):
         if key in body and key not in table:
