@@ -23,3 +23,14 @@ def test_bench_show_calls_the_pins_by_their_names(
     assert rows["24"][0] == "A9"
     assert float(rows["24"][1]) > 11
     assert rows["22"][0] == "OE/VPP"
+
+
+def test_bench_new_takes_a_maker(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    """The maker is said when a bench is made and when it is shown; a wrong one is a usage mistake."""
+    bench = str(tmp_path / "b.bench")
+    assert main(["bench", "new", bench, "--chip", "27c256", "--maker", "atmel"]) == 0
+    assert "27c256 of atmel" in capsys.readouterr().out
+    assert main(["bench", "show", bench]) == 0
+    assert capsys.readouterr().out.startswith("27c256 of atmel, ")
+    assert main(["bench", "new", bench, "--chip", "27c256", "--maker", "atmal"]) == 2
+    assert "did you mean atmel?" in capsys.readouterr().err

@@ -266,6 +266,42 @@ def test_a_bench_comes_back_as_it_was_saved(tmp_path: Path) -> None:
     assert again.chip.cells.count(0xFF) == WORDS
 
 
+def test_a_bench_keeps_whose_chip_it_is(tmp_path: Path) -> None:
+    """The maker goes through the file, and the chip that comes back has that maker's limits."""
+    path = tmp_path / "a.bench"
+    assert Bench.new(path, "27c256", maker="Atmel").chip.limits == Bench.load(path).chip.limits
+    assert Bench.load(path).chip.limits.vcc_most_mv == 6_750
+    assert Bench.load(path).rig().socket.chip is not None
+    assert Bench.fresh("27c256", maker="atmel").chip.limits.vcc_most_mv == 6_750
+    assert Bench.fresh("27c256").chip.limits.vcc_most_mv == 6_500
+
+
+def test_a_bench_from_before_makers_still_loads(tmp_path: Path) -> None:
+    """A bench file without the key is one of the first maker."""
+    path = tmp_path / "a.bench"
+    Bench.new(path, "27e512", contents="noise")
+    kept = json.loads(path.read_bytes())
+    del kept["maker"]
+    path.write_text(json.dumps(kept), "utf-8")
+    assert Bench.load(path).maker == ""
+
+
+@pytest.mark.parametrize(("chip", "maker"), [("27c256", "acme"), ("27e512", "st")])
+def test_a_maker_that_has_no_such_chip_is_refused(tmp_path: Path, chip: str, maker: str) -> None:
+    """No bench is made of an unknown maker, or where makers make no difference."""
+    with pytest.raises(UsageMistake):
+        Bench.new(tmp_path / "a.bench", chip, maker=maker)
+    assert not (tmp_path / "a.bench").exists()
+
+
+def test_a_model_of_ones_own_takes_no_maker(tmp_path: Path) -> None:
+    """--maker chooses among our models; beside --model it would be ignored, so it is refused."""
+    model = tmp_path / "tiny.py"
+    model.write_text(example(), "utf-8")
+    with pytest.raises(UsageMistake, match="no other maker"):
+        Bench.new(tmp_path / "a.bench", "tiny", model=model, maker="st")
+
+
 def test_a_strangers_model_is_loaded_again(tmp_path: Path) -> None:
     """The bench keeps the path of the model's file; when that is gone, the error names it."""
     model = tmp_path / "tiny.py"
@@ -313,6 +349,7 @@ def test_no_bench_is_a_file_mistake(tmp_path: Path) -> None:
         ("state", [], "state"),
         ("boots", "one", "boots"),
         ("chip", None, "chip"),
+        ("maker", 5, "maker"),
         ("faults", [5], "faults"),
     ],
 )

@@ -17,7 +17,7 @@ class UvBus(Bus):
     `ready` are the control pins between pulses, and whether they are high. `aside_mv`: what VPP lacks of VCC at rest.
     """
 
-    a = A[:15]
+    a: tuple[int, ...] = A[:15]
     vpp = VPP
     pulse_pin, active_high = CE, False
     ready: tuple[tuple[int, bool], ...] = ((CE, True), (OE, True))

@@ -42,6 +42,7 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     )
     new.add_argument("--fault", metavar="NAME[=...]", action="append", default=[], help="a fault, as often as wanted")
     new.add_argument("--model", metavar="FILE", help="a Python file with make_chip() -> ChipModel, instead of ours")
+    new.add_argument("--maker", metavar="NAME", default="", help="whose chip it is, where its makers' chips differ")
     new.late = _faults_text
     show = add(
         inner,
@@ -88,12 +89,16 @@ def _new(args: argparse.Namespace, desk: Desk) -> int:
             got=args.contents,
             hint="check the name and the folder",
         )
-    bench = Bench.new(args.bench, name, contents=contents, faults=args.fault, model=args.model)
+    bench = Bench.new(args.bench, name, contents=contents, faults=args.fault, model=args.model, maker=args.maker)
     facts = bench.report()
-    lines = [f"{args.bench}: {facts['chip']}, contents CRC-32 {facts['crc32'].upper()}"]
+    lines = [f"{args.bench}: {_chip_text(bench)}, contents CRC-32 {facts['crc32'].upper()}"]
     if args.fault:
         lines.append(f"faults: {', '.join(args.fault)}")
-    return desk.answer(lines, {**facts, "bench": args.bench, "faults": args.fault})
+    return desk.answer(lines, {**facts, "bench": args.bench, "maker": args.maker, "faults": args.fault})
+
+
+def _chip_text(bench: Bench) -> str:
+    return f"{bench.chip_name} of {bench.maker}" if bench.maker else bench.chip_name
 
 
 def _chip_name(given: str) -> str:
@@ -110,7 +115,7 @@ def _image(args: argparse.Namespace, name: str) -> bytes:
     from pulsewright.image.memory import fit
     from pulsewright.virtual.bench import Bench
 
-    chip = Bench(name, model=Path(args.model) if args.model else None).chip
+    chip = Bench(name, model=Path(args.model) if args.model else None, maker=args.maker).chip
     return fit(load_image(args.contents), len(chip.cells), blank=chip.erased_word & 0xFF, name=name).data
 
 
@@ -123,14 +128,15 @@ def _show(args: argparse.Namespace, desk: Desk) -> int:
     if args.save:
         save(args.save, bytes(bench.chip.cells))
         facts["saved"] = args.save
-    return desk.answer(_show_lines(bench, facts, args.save), {**facts, "faults": list(bench.faults.texts)})
+    rest = {"maker": bench.maker, "faults": list(bench.faults.texts)}
+    return desk.answer(_show_lines(bench, facts, args.save), {**facts, **rest})
 
 
 def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[str]:
     from pulsewright.report.modes import table
     from pulsewright.units import show_mv
 
-    lines = [f"{facts['chip']}, contents CRC-32 {facts['crc32'].upper()}"]
+    lines = [f"{_chip_text(bench)}, contents CRC-32 {facts['crc32'].upper()}"]
     lines.append(f"faults: {', '.join(bench.faults.texts) or 'none'}")
     signals = _signals(bench.chip_name)
     rows = [[pin, signals.get(int(pin), ""), show_mv(seen["max_mv"])] for pin, seen in facts["pins"].items()]

@@ -33,10 +33,16 @@ _KIND = "pulsewright bench"
 class Bench:
     """A chip, its faults and its history. Make one with `fresh`, `new` or `load`; `rig` puts it into a virtual rig."""
 
-    def __init__(self, chip_name: str, *, faults: Iterable[str] = (), model: Path | None = None) -> None:
-        """A chip as its model makes it. UsageMistake or FileMistake for a chip, fault or model that does not exist."""
+    def __init__(
+        self, chip_name: str, *, faults: Iterable[str] = (), model: Path | None = None, maker: str = ""
+    ) -> None:
+        """A chip as its model makes it, of a maker where its makers' chips differ.
+
+        UsageMistake or FileMistake for a chip, maker, fault or model that does not exist.
+        """
         self.path: Path | None = None
         self.chip_name = chip_name
+        self.maker = maker
         self.model = model
         self.faults: Faults = parse_faults(faults)
         self.chip = self._make()
@@ -49,10 +55,16 @@ class Bench:
 
     @classmethod
     def fresh(
-        cls, chip_name: str, contents: bytes | str = "noise", *, seed: int = 1, faults: Iterable[str] = ()
+        cls,
+        chip_name: str,
+        contents: bytes | str = "noise",
+        *,
+        seed: int = 1,
+        faults: Iterable[str] = (),
+        maker: str = "",
     ) -> Bench:
         """A bench that is kept nowhere. `contents`: bytes, "blank", "noise" (of `seed`) or "noise:SEED"."""
-        bench = cls(chip_name, faults=faults)
+        bench = cls(chip_name, faults=faults, maker=maker)
         bench._fill(contents, seed)
         bench._take_faults()
         return bench
@@ -66,12 +78,13 @@ class Bench:
         contents: bytes | str = "blank",
         faults: Iterable[str] = (),
         model: Path | str | None = None,
+        maker: str = "",
     ) -> Bench:
         """A bench in a file, saved at once. A bench that is there already is replaced, any other file is not."""
         target = Path(path)
         if target.exists():
             _look_at_old(target)
-        bench = cls(chip, faults=faults, model=None if model is None else Path(model).resolve())
+        bench = cls(chip, faults=faults, model=None if model is None else Path(model).resolve(), maker=maker)
         bench.path = target
         bench._fill(contents, 1)
         bench._take_faults()
@@ -84,7 +97,8 @@ class Bench:
         target = Path(path)
         kept = _parse(target)
         model = kept["model"]
-        bench = cls(kept["chip"], faults=kept["faults"], model=None if model is None else Path(model))
+        maker = kept.get("maker", "")
+        bench = cls(kept["chip"], faults=kept["faults"], model=None if model is None else Path(model), maker=maker)
         bench.path = target
         bench._restore(target, kept)
         return bench
@@ -114,7 +128,15 @@ class Bench:
         return VirtualRig(Socket(chip, wiring(limits.package, seat), (judge,)), boot=self.boots, board=board)
 
     def _make(self) -> ChipModel:
-        return make_model(self.chip_name) if self.model is None else load_model(self.model)
+        if self.model is None:
+            return make_model(self.chip_name, self.maker)
+        if self.maker:
+            raise UsageMistake(
+                "a model of your own is of no other maker",
+                wanted="--maker or --model",
+                got=f"--maker {self.maker} and --model {self.model}",
+            )
+        return load_model(self.model)
 
     def _seat_anew(self) -> None:
         """The same chip without what it knew of the last rig's clock: a new rig begins at tick 0."""
@@ -201,6 +223,7 @@ class Bench:
             "what": _KIND,
             "format": FORMAT,
             "chip": self.chip_name,
+            "maker": self.maker,
             "model": None if self.model is None else str(self.model),
             "faults": list(self.faults.texts),
             "boots": self.boots,
@@ -279,6 +302,8 @@ def _parse(path: Path) -> dict[str, Any]:
         for key, kind in _SHAPE.items()
         if key not in kept or not isinstance(kept[key], kind)
     ]
+    if not isinstance(kept.get("maker", ""), str):  # older benches have no such key
+        problems.append(_problem(path, "maker", "is of another kind"))
     faults = kept.get("faults")
     if isinstance(faults, list) and not all(isinstance(text, str) for text in faults):
         problems.append(_problem(path, "faults", "are not all texts"))
