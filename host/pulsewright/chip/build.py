@@ -182,7 +182,13 @@ def _rows(tree: Tree) -> tuple[MakerRow, ...]:
 
 def _cells(cells: Iterable[Any], path: KeyPath, tree: Tree) -> tuple[IdCell, ...]:
     return tuple(
-        IdCell(cell["at"], cell["is"], cell.get("what", ""), tree.places.where((*path, index)))
+        IdCell(
+            at=cell["at"],
+            is_=cell["is"],
+            what=cell.get("what", ""),
+            where=tree.places.where((*path, index)),
+            source=tree.sources.get((*path, index), ""),
+        )
         for index, cell in enumerate(cells)
         if isinstance(cell, Mapping) and "at" in cell and "is" in cell
     )

@@ -25,6 +25,7 @@ from pulsewright.chip.model import (
 )
 from pulsewright.chip.schema import CYCLE
 from pulsewright.chip.source import Tree
+from pulsewright.chip.steps import least_wait_ps
 
 
 def windows(tree: Tree) -> dict[str, Window]:
@@ -37,12 +38,6 @@ def windows(tree: Tree) -> dict[str, Window]:
         path = ("timing", name)
         found[name] = Window(name, **limits, source=tree.source_of(path), where=tree.places.where(path))
     return found
-
-
-def least_wait_ps(window: Window) -> int:
-    """What to wait for a parameter: its minimum; where only the chip's own maximum is given, that."""
-    known = (window.min_ps, window.max_ps, window.typ_ps)
-    return next((ps for ps in known if ps is not None), 0)
 
 
 class StepBuilder:

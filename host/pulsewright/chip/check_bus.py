@@ -115,9 +115,7 @@ def check_write(found: Findings, step: WriteStep, *, in_word: bool) -> None:
         if cycle.word is None:
             found.at(cycle.where, "the image's word before the end of a list", found='"image"', wanted="it comes last")
     if any(cycle.word is None for cycle in step.cycles) and not in_word:
-        found.at(
-            step.where, "the image's word outside `each`", found='"image"', wanted='inside { each = "word", ... }'
-        )
+        found.at(step.where, "the image's word outside `each`", found='"image"', wanted='inside { each = "word", ... }')
 
 
 def check_load(found: Findings, step: LoadStep, *, in_page: bool) -> None:

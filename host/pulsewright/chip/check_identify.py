@@ -73,8 +73,8 @@ def _command(found: Findings, table: Mapping[str, object]) -> None:
         found.at(("identify", "leave"), "a key is missing", wanted="leave")
     for key in ("command", "leave"):
         check_command(found, ("identify", key), table.get(key))
-    if found.defn.identify_command is not None:
-        for key, cycles in (("command", found.defn.identify_command.enter), ("leave", found.defn.identify_command.leave)):
+    if (built := found.defn.identify_command) is not None:
+        for key, cycles in (("command", built.enter), ("leave", built.leave)):
             if not isinstance(table.get(key), str):
                 check_cycles(found, cycles)
     if isinstance(settle := table.get("settle"), str):

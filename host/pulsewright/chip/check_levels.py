@@ -5,7 +5,7 @@ from __future__ import annotations
 import re
 from collections.abc import Mapping
 
-from pulsewright.chip.findings import VCC_RAISED_ABOVE_MV, Findings
+from pulsewright.chip.findings import Findings
 from pulsewright.chip.kinds import nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Maximum, Mode, SupplyStep

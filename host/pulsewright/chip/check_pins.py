@@ -7,6 +7,7 @@ from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import IdCell, MakerRow
 from pulsewright.chip.packages import POWER_PINS, pin_count
 from pulsewright.chip.schema import UNDRIVEN_ROLES
+from pulsewright.chip.source import MEMORY
 
 
 def check(found: Findings) -> None:
@@ -125,6 +126,9 @@ def _cell(found: Findings, cell: IdCell) -> None:
     if cell.is_ >= 1 << width:
         found.at(cell.where, "an ID byte wider than a word", found=f"0x{cell.is_:X}", wanted=f"{width} bits")
     elif cell.what == "manufacturer" and (cell.is_ & 0xFF).bit_count() % 2 == 0:
-        # JEP106: bit 7 of a manufacturer's code makes its parity odd; some makers answer otherwise all the same.
-        what = "a manufacturer's code of even parity"
-        found.at(cell.where, what, found=f"0x{cell.is_:X}", wanted="odd parity (JEP106)", warning=True)
+        # JEP106: bit 7 of a manufacturer's code makes its parity odd; some makers answer otherwise all the same, and a
+        # cell that names the sheet it was read in is one of those.
+        if not cell.source or MEMORY in cell.source:
+            what = "a manufacturer's code of even parity"
+            wanted = "odd parity (JEP106), or `from`, the sheet that has it so"
+            found.at(cell.where, what, found=f"0x{cell.is_:X}", wanted=wanted, warning=True)

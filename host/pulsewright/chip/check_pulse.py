@@ -25,7 +25,7 @@ def check_pulse(found: Findings, step: PulseStep, name: str) -> None:
     _time(found, step)
     if not name:
         found.at(step.where, "a pulse before any mode", found=step.pin, wanted="a mode step before it")
-    mode = found.defn.modes.get(name)
+    mode = found.defn.modes.get(name or "standby")  # which a sequence begins in
     if mode is not None:
         _in_mode(found, step, mode)
 
@@ -51,9 +51,7 @@ def _in_mode(found: Findings, step: PulseStep, mode: Mode) -> None:
         out = enabled_by(found, {**control_pattern(found, mode), step.pin: step.to})
         if out:
             what = "a pulse that enables the outputs while D is driven"
-            found.at(
-                step.where, what, found=f"{mode.name} with {step.pin} {step.to} is as {out}", wanted="outputs off"
-            )
+            found.at(step.where, what, found=f"{mode.name} with {step.pin} {step.to} is as {out}", wanted="outputs off")
 
 
 def _time(found: Findings, step: PulseStep) -> None:

@@ -23,6 +23,7 @@ from pulsewright.chip.model import (
     WaitStep,
     WriteStep,
 )
+from pulsewright.chip.steps import all_steps
 
 MOST_LOOPS = 3  # one inside the other (design: the rig's routines loop three deep); each = "word" is two by itself
 _AT_REST = "standby"  # the mode a sequence enters before its first step
@@ -97,18 +98,6 @@ def _raise_nothing(found: Findings, name: str, steps: Iterable[Step]) -> None:
             if raised:
                 what = f"{name} raises a level"
                 found.at(step.where, what, found=f"mode {mode} at {raised}", wanted="modes without raised levels")
-
-
-def all_steps(steps: Iterable[Step]) -> list[Step]:
-    """Steps with those inside them."""
-    found: list[Step] = []
-    for step in steps:
-        found.append(step)
-        if isinstance(step, RepeatStep | EachStep):
-            found += all_steps(step.steps)
-        elif isinstance(step, ExpectStep):
-            found += all_steps(step.else_)
-    return found
 
 
 def _read_mode(found: Findings, place: KeyPath, name: str) -> None:
@@ -203,7 +192,9 @@ class _Walk:
 
     def back(self, step: Step, name: str, end: str, begin: str) -> None:
         """What runs again, or only now and then, leaves the chip as it found it."""
-        if _UNKNOWN not in (end, begin) and (end or _AT_REST) != (begin or _AT_REST):
+        if _UNKNOWN in (end, begin) or not self.found.has_mode(_AT_REST):
+            return
+        if (end or _AT_REST) != (begin or _AT_REST):
             what = f"{name} does not end in the mode it began in"
             begin = begin or f"{_AT_REST} (at rest)"
             self.found.at(step.where, what, found=f"begins in {begin}, ends in {end}", wanted=f"{begin} at its end")
@@ -233,7 +224,8 @@ class _Walk:
     def deeper(self, step: Step, scope: Scope, loops: int) -> Scope:
         if scope.loops <= MOST_LOOPS < scope.loops + loops:
             wanted = f"at most {MOST_LOOPS}, of which a loop over words alone is two"
-            self.found.at(step.where, "too many loops one inside the other", found=str(scope.loops + loops), wanted=wanted)
+            what = "too many loops one inside the other"
+            self.found.at(step.where, what, found=str(scope.loops + loops), wanted=wanted)
         return replace(scope, loops=scope.loops + loops)
 
     def repeat(self, step: RepeatStep, mode: str, scope: Scope) -> str:

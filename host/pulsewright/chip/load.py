@@ -12,11 +12,10 @@ from pulsewright.chip.check import examine_rows
 from pulsewright.chip.kinds import any_of, nearest
 from pulsewright.chip.model import Definition
 from pulsewright.chip.shipped import shipped_folder
-from pulsewright.chip.source import Parsed, Tree, maker_of, read, resolve_tree, row_count
+from pulsewright.chip.source import MEMORY, Parsed, Tree, examined, maker_of, read, resolve_tree, row_count
 from pulsewright.chip.tighten import tightest
 from pulsewright.errors import DefinitionMistake, FileMistake, Problem, UsageMistake, Where
 
-MEMORY = "from memory"
 _CHIP_TABLE = re.compile(r"^\[chip\][^\n]*\n(.*?)(?=^\[|\Z)", re.MULTILINE | re.DOTALL)
 
 
@@ -70,8 +69,8 @@ def resolve(parsed: Parsed, maker: str | None) -> Definition:
 def _over_all(parsed: Parsed, trees: list[Tree]) -> Definition:
     if len(trees) == 1:
         return build(trees[0])
-    whole = resolve_tree(parsed, None)
-    merged = tightest([build(tree) for tree in trees]).defn
+    whole = examined(resolve_tree(parsed, None))  # it may lack what only rows have: that is no mistake
+    merged = tightest([build(tree) for tree in trees], build(whole)).defn
     return replace(merged, digest=digest_of(whole), raw=whole.merged)
 
 
@@ -91,9 +90,12 @@ def _row_of(parsed: Parsed, maker: str) -> int:
 
 
 def maker_needed(defn: Definition) -> list[str]:
-    """The makers for --maker to choose from, where no ID tells rows apart that differ in more than words; else []."""
-    harmful = any(not key.startswith("chip.") for row in defn.makers for key in row.overrides)
-    if defn.row is None and len(defn.makers) > 1 and harmful and any(not row.ids for row in defn.makers):
+    """The makers for --maker to choose from, where no ID tells rows apart whose differences no common limit settles.
+
+    Those are levels, modes, pages, commands, the way of writing, steps, pins (`defn.apart`); [] where --maker may be left
+    out: rows that differ in times and maxima alone are served by the tightest of them.
+    """
+    if defn.apart and any(not row.ids for row in defn.makers):
         return [row.maker for row in defn.makers]
     return []
 

@@ -82,6 +82,7 @@ class IdCell:
     is_: int
     what: str = ""
     where: Where = field(default_factory=Where)
+    source: str = ""  # of this very cell; "": the row's or the chip's
 
 
 @dataclass(frozen=True)

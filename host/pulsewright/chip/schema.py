@@ -173,7 +173,7 @@ _STEP = Tables(
             keys={
                 "expect": _VALUE,
                 "mask": Whole(low=1, high=0xFFFF),
-                "else": Named("steps", table=False, about="what is done when it differs; it ends in the mode it began in"),
+                "else": Named("steps", table=False, about="done when it differs; ends in the mode it began in"),
             },
         ),
         "write": Table(
@@ -187,7 +187,7 @@ _STEP = Tables(
         "poll": Table(
             about="read the chip in `mode` until it has done its work; not done within the parameter's max: failed",
             keys={
-                "poll": Text(choices=POLL_BITS, about="DQ7: equals bit 7 of the word last written; DQ6: stops toggling"),
+                "poll": Text(choices=POLL_BITS, about="DQ7: as bit 7 of the word last written; DQ6: stops toggling"),
                 "mode": Text(about="the mode it is read in"),
                 "within": Text(about="a timing parameter with a max"),
             },

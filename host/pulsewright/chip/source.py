@@ -26,7 +26,7 @@ METHOD_FILE = Table(
     },
     required=("format", "steps"),
 )
-_MEMORY = "from memory"
+MEMORY = "from memory"
 METHOD_TABLES: tuple[KeyPath, ...] = (("program",), ("program", "protected"), ("erase",))
 
 
@@ -59,7 +59,7 @@ class Tree:
         """
         below = [text for at, text in self.sources.items() if at[: len(path)] == path]
         if below:
-            return next((text for text in below if _MEMORY in text), below[0])
+            return next((text for text in below if MEMORY in text), below[0])
         around = (self.sources.get(path[:length]) for length in range(len(path) - 1, 0, -1))
         return next((text for text in around if text), "")
 

@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
-from dataclasses import dataclass, replace
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, fields, is_dataclass, replace
 
-from pulsewright.chip.model import Definition, Maximum, SupplyStep, Window
+from pulsewright.chip.model import Definition, Maximum, Method, PollStep, SupplyStep, WaitStep, Window
 from pulsewright.chip.schema import RESPONSE_TIMINGS
+from pulsewright.chip.steps import method_with_waits, steps_of, with_waits
 from pulsewright.errors import Problem, Where
 from pulsewright.units import show_mv, show_ps
 
@@ -21,10 +22,12 @@ class Tightest:
     problems: tuple[Problem, ...]
 
 
-def tightest(rows: Sequence[Definition]) -> Tightest:
-    """Each limit the tightest of all rows; modes, pins and steps stay the first row's, limits alone can be tightened.
+def tightest(rows: Sequence[Definition], base: Definition | None = None) -> Tightest:
+    """Each limit the tightest of all rows; what no limit can settle stays the first row's and is named in `apart`.
 
-    What stands only in some rows is kept as it is there. One row is that row. `rows` are definitions of one file.
+    Steps are those of `base`, the file without its rows, where it has them: a row that is not chosen never runs its
+    own. Waits in them are as long as the longest of all rows. What stands only in some rows is kept as it is there.
+    One row is that row. `rows` are definitions of one file.
     """
     if len(rows) == 1:
         return Tightest(rows[0], ())
@@ -43,17 +46,107 @@ def tightest(rows: Sequence[Definition]) -> Tightest:
         name: _maximum([one for row in rows if (one := row.maximum_of(name)) is not None], vcc, problems)
         for name in _names(row.maxima for row in rows)
     }
-    merged = replace(rows[0], supplies=supplies, timing=timing, maxima=maxima, row=None)
-    return Tightest(merged, tuple(problems))
+    problems += _looks_apart(rows)
+    merged = replace(rows[0], supplies=supplies, timing=timing, maxima=maxima, row=None, apart=apart(rows))
+    if merged.identify_command is not None:
+        settles = [row.identify_command.settle_ps for row in rows if row.identify_command is not None]
+        merged = replace(merged, identify_command=replace(merged.identify_command, settle_ps=max(settles)))
+    return Tightest(_with_steps(merged, rows[0] if base is None else base), tuple(problems))
+
+
+def _with_steps(merged: Definition, base: Definition) -> Definition:
+    """`merged` with the steps of `base`, where it has any, and every wait as `merged` has its times."""
+    timing = merged.timing
+    protect = merged.protect if base.protect is None else base.protect
+    if protect is not None:
+        protect = replace(protect, on=with_waits(protect.on, timing), off=with_waits(protect.off, timing))
+
+    def chosen(own: Method | None, other: Method | None) -> Method | None:
+        return method_with_waits(own if other is None or not other.steps else other, timing)
+
+    return replace(
+        merged,
+        program=chosen(merged.program, base.program),
+        protected=chosen(merged.protected, base.protected),
+        erase=chosen(merged.erase, base.erase),
+        protect=protect,
+        verify=base.verify or merged.verify,
+    )
+
+
+# ---- what no limit settles ----
+
+_IN_COMMON = ("words", "width", "package", "blank", "erase_kind", "pins")
+_BY_KEY = {
+    "geometry.page": "page",
+    "write": "write",
+    "commands": "commands",
+    "identify": "identify",
+    "identify.mode": "identify_mode",
+    "identify.command": "identify_command",
+    "program": "program",
+    "program.protected": "protected",
+    "erase": "erase",
+    "protect": "protect",
+    "verify": "verify",
+    **{f"chip.{name}" if name != "pins" else name: name for name in _IN_COMMON},
+}
+_NO_MATTER = ("where", "source", "settle_ps", "current_ua", "limits_known")  # or tightened
+
+
+def apart(rows: Sequence[Definition]) -> tuple[str, ...]:
+    """The dotted keys in which rows differ beyond times and maxima, which have a tightest: levels, steps, pages ..."""
+    keys = [key for key, name in _BY_KEY.items() if _differ([getattr(row, name) for row in rows])]
+    for table in ("modes", "supplies"):
+        names = _names(getattr(row, table) for row in rows)
+        keys += [f"{table}.{name}" for name in names if _differ([getattr(row, table).get(name) for row in rows])]
+    return tuple(keys)
+
+
+def _differ(values: Sequence[object]) -> bool:
+    first = _content(values[0])
+    return any(_content(value) != first for value in values[1:])
+
+
+def _content(value: object) -> object:
+    """A value without its place and source; a wait for a parameter without its length, which is tightened."""
+    if is_dataclass(value) and not isinstance(value, type):
+        skipped = (*_NO_MATTER, "ps") if isinstance(value, WaitStep) and value.timing else _NO_MATTER
+        kept = [field.name for field in fields(value) if field.name not in skipped]
+        return type(value).__name__, [_content(getattr(value, name)) for name in kept]
+    if isinstance(value, Mapping):
+        return {name: _content(one) for name, one in value.items()}
+    return [_content(one) for one in value] if isinstance(value, tuple | list) else value
+
+
+def _looks_apart(rows: Sequence[Definition]) -> list[Problem]:
+    """Rows with IDs are told apart by one look, so the look is the same for all of them."""
+    with_id = [row for row in rows if row.row is not None and row.row.ids]
+    problems = []
+    for row in with_id[1:]:
+        pair = (with_id[0], row)
+        keys = [key for key in _BY_KEY if key.startswith(("identify", "pins")) and key in apart(pair)]
+        looks = [f"modes.{name}" for name in (row.identify_mode, "standby") if name and f"modes.{name}" in apart(pair)]
+        if (keys or looks) and row.row is not None:
+            what = "maker rows that no one look tells apart"
+            problems.append(Problem(row.row.where, what, ", ".join([*keys, *looks]), _APART))
+    return problems
 
 
 def _names(tables: Iterable[Iterable[str]]) -> list[str]:
     return list(dict.fromkeys(name for table in tables for name in table))
 
 
-def _responses(rows: Iterable[Definition]) -> set[str]:
+def _responses(rows: Sequence[Definition]) -> set[str]:
     """Timing parameters that say how long the chip takes: the rig waits for the slowest."""
-    return {*RESPONSE_TIMINGS, *(mode.access for row in rows for mode in row.modes.values())}
+    names = {*RESPONSE_TIMINGS, *(mode.access for row in rows for mode in row.modes.values())}
+    names |= {row.write.busy for row in rows if row.write is not None}
+    least = {name for row in rows for name, window in row.timing.items() if window.min_ps is not None}
+    for row in rows:
+        for step in steps_of(row):
+            if isinstance(step, PollStep) or (isinstance(step, WaitStep) and step.timing not in least):
+                names.add(step.timing)
+    return names
 
 
 def _nothing_fits(where: Where, name: str, found: Sequence[str]) -> Problem:
