@@ -1,5 +1,6 @@
-"""What a call costs: chip model and judge under the edges of a burn and of a read, in nanoseconds of processor time.
+"""What a call costs: chip models and judge under the edges of a burn and of a read, in nanoseconds of processor time.
 
+A part with a shared OE/VPP raises it for each word, one with a VPP pin of its own once for all.
 Run from the top folder: `python -m tests.bench.bench_virtual`. It asserts nothing; the machine decides the numbers.
 """
 
@@ -9,10 +10,10 @@ import sys
 import time
 from collections.abc import Callable, Sequence
 
-from pulsewright.virtual.interface import Levels
+from pulsewright.virtual.interface import ChipModel, Levels
 from pulsewright.virtual.judge import Judge
-from pulsewright.virtual.models.e512 import make_chip
-from pulsewright.virtual.models.e512_limits import LIMITS
+from pulsewright.virtual.models import make_model
+from tests.virtual.uv_wave import UvBus
 from tests.virtual.waveform import CE, OE, US, Bus
 
 WORDS = 4_096
@@ -47,6 +48,15 @@ def burn(bus: Bus) -> None:
         bus.standby()
 
 
+def burn_under_vpp(bus: UvBus) -> None:
+    """The same with VPP up all the while."""
+    bus.enter()
+    for at in range(WORDS):
+        bus.word(at, at & 0xFF)
+        bus.verify(at)
+    bus.leave()
+
+
 def read(bus: Bus) -> None:
     """The outputs on, one address after the other."""
     bus.set({CE: 0, OE: 0})
@@ -56,9 +66,8 @@ def read(bus: Bus) -> None:
         bus.sample()
 
 
-def play_chip(tape: Tape) -> int:
+def play_chip(tape: Tape, chip: ChipModel) -> int:
     """Nanoseconds in the chip model: every group, and `drive` for every sample."""
-    chip = make_chip()
     calls: list[Call] = []
     for kind, t, extra in tape.calls:
         if kind == "edges" and isinstance(extra, int):
@@ -68,9 +77,9 @@ def play_chip(tape: Tape) -> int:
     return _timed(calls)
 
 
-def play_judge(tape: Tape) -> int:
+def play_judge(tape: Tape, chip: ChipModel) -> int:
     """Nanoseconds in the judge; says so if it found something, for then the numbers are not those of a clean job."""
-    judge = Judge(LIMITS)
+    judge = Judge(chip.limits)
     calls: list[Call] = []
     for kind, t, extra in tape.calls:
         if kind == "edges" and isinstance(extra, int):
@@ -94,17 +103,25 @@ def _timed(calls: list[Call]) -> int:
 
 def main() -> None:
     """Prints a line for each job and each listener: the best of five runs."""
-    for name, work in (("burn", burn), ("read", read)):
+    shared, own, shared_read, own_read = Bus(), UvBus(), Bus(), UvBus()
+    jobs: list[tuple[str, str, Bus, Callable[[], None]]] = [
+        ("27e512", "burn", shared, lambda: burn(shared)),
+        ("27e512", "read", shared_read, lambda: read(shared_read)),
+        ("27c256", "burn", own, lambda: burn_under_vpp(own)),
+        ("27c256", "read", own_read, lambda: read(own_read)),
+    ]
+    for name, job, bus, work in jobs:
         tape = Tape()
-        bus = Bus(tape)
+        bus.watchers = (tape,)
+        bus.release()
         bus.up()
-        work(bus)
+        work()
         for who, play in (("chip", play_chip), ("judge", play_judge)):
-            best = min(play(tape) for _ in range(5))
+            best = min(play(tape, make_model(name)) for _ in range(5))
             groups, calls = len(tape.groups), len(tape.calls)
             each = f"{best // groups} ns a group, {best // WORDS} ns a word"
             whole = f"{best * 65_536 // WORDS / 1e9:.2f} s for 64K words"
-            sys.stdout.write(f"{name}, {who}: {groups} groups, {calls} calls, {each}, {whole}\n")
+            sys.stdout.write(f"{name} {job}, {who}: {groups} groups, {calls} calls, {each}, {whole}\n")
 
 
 if __name__ == "__main__":

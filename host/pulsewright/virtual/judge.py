@@ -304,9 +304,9 @@ class Judge:
 
     def _stands(self, t: int, pin: int, level: int, began: int) -> None:
         """A raised level stands: has VCC been in a step of its own since before, and is it a level with a name?"""
-        allowed = self._table.vcc_for(pin, level)
-        fitting = [since for window, since in self._vcc_since.items() if window in allowed]
-        since = fitting or list(self._vcc_since.values())
+        allowed, standing = self._table.vcc_for(pin, level), self._vcc_since
+        fitting = [standing[window] for window in allowed if window in standing]
+        since = fitting or list(standing.values())
         if not since or min(since) > began:
             self._report("supply order", pin, t, "VCC in its window first", f"VCC at {show_mv(self._vcc_mv)}")
         if not allowed:

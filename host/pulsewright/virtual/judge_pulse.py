@@ -15,6 +15,7 @@ from pulsewright.virtual.pin_number import PinNumber
 VIL_MV, VIH_MV = 800, 2000  # TTL input levels: common practice
 LONG_AGO = -(1 << 62)
 FOREVER = 1 << 62
+_MEMO_LIMIT = 4_096
 
 Report = Callable[[str, int, int, str, str], None]  # rule, pin, t, wanted, got
 
@@ -52,7 +53,11 @@ class PulseWatch:
     def __init__(self, limits: Limits, report: Report) -> None:
         self._limits = limits
         self._report = report
-        self._kinds = [(pulse, pulse.pin, pulse.active_low, _gates(pulse)) for pulse in limits.pulses]
+        rows = [(pulse, _gates(pulse)) for pulse in limits.pulses]
+        self._kinds = rows
+        lines = dict.fromkeys(pin for _pulse, gates in rows for pin, _low in gates)
+        self._lines_of = itemgetter(*lines) if lines else tuple
+        self._given_by: dict[object, tuple[PulseLimit, ...]] = {}  # levels of those lines -> kinds of pulse they give
         self.controls = frozenset(
             pin for pulse in limits.pulses for pin in (*pulse.high_pins, *pulse.only_low, *pulse.only_high)
         )
@@ -96,7 +101,7 @@ class PulseWatch:
 
         `vcc_since`: since when VCC stands in each of the windows that it stands in.
         """
-        given = self._given(levels) if raised else []
+        given = self._given(levels) if raised else ()
         kind = self._kind_of(given, raised) if given else None
         unknown = bool(given) and kind is None and not self._is_identify(raised)
         if kind is not self.kind:
@@ -111,18 +116,19 @@ class PulseWatch:
             self._report("unknown pulse", given[0].pin, t, wanted, shown)
         self.unknown = unknown
 
-    def _given(self, levels: Levels) -> list[PulseLimit]:
+    def _given(self, levels: Levels) -> tuple[PulseLimit, ...]:
         """The kinds of pulse that the control lines give now, whatever stands raised."""
-        given = []
-        for pulse, pin, active_low, gates in self._kinds:
-            level = levels[pin]
-            if level is None or (level > VIL_MV if active_low else level < VIH_MV):
-                continue
-            if not gates or all(_is_at(levels[gate], low=low) for gate, low in gates):
-                given.append(pulse)
+        key = self._lines_of(levels)
+        given = self._given_by.get(key)
+        if given is None:
+            if len(self._given_by) >= _MEMO_LIMIT:
+                self._given_by.clear()
+            given = self._given_by[key] = tuple(
+                pulse for pulse, gates in self._kinds if all(_is_at(levels[pin], low=low) for pin, low in gates)
+            )
         return given
 
-    def _kind_of(self, given: list[PulseLimit], raised: dict[int, int]) -> PulseLimit | None:
+    def _kind_of(self, given: tuple[PulseLimit, ...], raised: dict[int, int]) -> PulseLimit | None:
         for pulse in given:
             if raised.keys() == pulse.raised.keys():
                 if all(low <= raised[pin] <= high for pin, (low, high) in pulse.raised.items()):
@@ -275,8 +281,9 @@ class PulseWatch:
 
 
 def _gates(pulse: PulseLimit) -> tuple[tuple[int, bool], ...]:
-    """(pin, whether low) that make it a pulse at all."""
-    return (*((pin, True) for pin in pulse.only_low), *((pin, False) for pin in pulse.only_high))
+    """(pin, whether low) that make it a pulse at all; the pulse pin first."""
+    others = (*((pin, True) for pin in pulse.only_low), *((pin, False) for pin in pulse.only_high))
+    return ((pulse.pin, pulse.active_low), *others)
 
 
 def _is_at(level: int | None, *, low: bool) -> bool:

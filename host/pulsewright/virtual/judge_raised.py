@@ -11,6 +11,7 @@ from pulsewright.units import show_mv
 from pulsewright.virtual.interface import Limits, PulseLimit, RaisedLimit
 
 Window = tuple[int, int]
+_MEMO_LIMIT = 4_096
 
 
 class RaisedTable:
@@ -26,6 +27,7 @@ class RaisedTable:
         if limits.identify_pin is not None and limits.identify_mv is not None:
             rows[limits.identify_pin].setdefault(limits.identify_mv, []).append(limits.vcc_read_mv)
         self._rows = rows
+        self._vcc_for: dict[tuple[int, int], tuple[Window, ...]] = {}
 
     def window_of(self, pin: int, level: int) -> Window | None:
         """The first window of the pin in which the level lies."""
@@ -37,8 +39,14 @@ class RaisedTable:
 
     def vcc_for(self, pin: int, level: int) -> tuple[Window, ...]:
         """The windows of VCC at which the pin may stand at this level; none for a level without a name."""
-        found = [vcc for window, all_vcc in self._rows[pin].items() if within(level, window) for vcc in all_vcc]
-        return tuple(dict.fromkeys(found))
+        found = self._vcc_for.get((pin, level))
+        if found is None:
+            if len(self._vcc_for) >= _MEMO_LIMIT:
+                self._vcc_for.clear()
+            rows = self._rows[pin].items()
+            every = [vcc for window, all_vcc in rows if within(level, window) for vcc in all_vcc]
+            found = self._vcc_for[pin, level] = tuple(dict.fromkeys(every))
+        return found
 
     def standing(self, raised: Mapping[int, int], vcc_mv: int) -> tuple[RaisedLimit | None, tuple[int, ...]]:
         """The row under which D may be read with exactly these raised levels, and which pins switch the outputs then.
