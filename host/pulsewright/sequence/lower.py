@@ -266,9 +266,10 @@ class Lowering:
         b.place(end)
 
     def _same(self, begun: Fork, text: str) -> None:
-        """The next turn of a loop begins as this one began; only what the address lines carry is another word."""
-        self.b.state.addressed = begun[0].addressed
+        """The next turn of a loop begins as this one began; only what the address lines carry may differ."""
+        carried, self.b.state.addressed = self.b.state.addressed, begun[0].addressed
         self.b.join(begun, text)
+        self.b.state.addressed = carried
 
 
 def modes_of(steps: tuple[Step, ...]) -> list[str]:

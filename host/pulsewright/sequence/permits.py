@@ -51,7 +51,7 @@ def _vcc_steps(definition: Definition, rig: Rig, used: dict[str, RailStep]) -> t
 
 def _drives(definition: Definition, pins: PinMap) -> tuple[bytes, ...]:
     """Every control-line pattern of the mode table in which the chip drives D."""
-    patterns = {pins.pattern(mode) for mode in definition.modes.values() if mode.data == "out"}
+    patterns = {pins.enabling(mode) for mode in definition.modes.values() if mode.data == "out"}
     return tuple(sorted(patterns))
 
 

@@ -89,6 +89,11 @@ class PinMap:
         """The mode's control lines as line bytes, in the order of roles."""
         return bytes(line_byte(self.line(role), level) for role, level in self.control_levels(mode).items())
 
+    def enabling(self, mode: Mode) -> bytes:
+        """Line bytes of the control lines that a mode holds at L or H by itself: what makes the chip drive D in it."""
+        own = [role for role in self.control_roles if mode.levels.get(role) in _LEVELS]
+        return bytes(line_byte(self.line(role), _LEVELS[mode.levels[role]]) for role in own)
+
     def raised_address_bits(self, mode: Mode) -> int:
         """Address bits that stand raised in a mode: their lines must be H."""
         bits = 0
