@@ -85,19 +85,20 @@ class Pulses:
 def pulses_of(method: Method, blocks: tuple[BlockDone, ...]) -> Pulses:
     """The sum over blocks and passes; a blind pass gives each of its words one pulse more."""
     blind = blind_passes(method)
-    last = [block for block in blocks if block.turn == len(passes_of(method)) - 1] or [*blocks]
+    last = [block for block in blocks if block.turn == len(passes_of(method)) - 1] or ([] if blind else [*blocks])
     size = max((len(block.histogram) for block in last), default=0)
     total = [0] * (size + blind + 1)
     for block in last:
         for index, count in enumerate(block.histogram):
             total[index + blind] += count
-        if blind:
-            total[blind - 1] += block.written - sum(block.histogram)
+    if blind:  # a later pass counts only the words that it gave more
+        first = [block.written for block in blocks if block.turn == 0]
+        total[blind - 1] += sum(first) - sum(sum(block.histogram) for block in last)
     worst = max(last, key=lambda block: block.worst_tries, default=None)
     while total and not total[-1]:
         total.pop()
     if worst is None or not worst.worst_tries:
-        return Pulses(tuple(total), last[0].first if last else 0, blind if last else 0)
+        return Pulses(tuple(total), blocks[0].first if blocks else 0, blind if blocks else 0)
     return Pulses(tuple(total), worst.worst, worst.worst_tries + blind)
 
 

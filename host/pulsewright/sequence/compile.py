@@ -33,7 +33,7 @@ def _start(definition: Definition, rig: Rig) -> Builder:
     return b
 
 
-def _vcc_used(definition: Definition, rig: Rig, modes: list[str]) -> dict[str, RailStep]:
+def _vcc_used(definition: Definition, rig: Rig, modes: list[str]) -> list[tuple[str, RailStep]]:
     names = ["standby", "read", *modes]
     if definition.identify == "mode":
         names.append(definition.identify_mode)
@@ -41,7 +41,7 @@ def _vcc_used(definition: Definition, rig: Rig, modes: list[str]) -> dict[str, R
     for name in names:
         step = definition.supplies[definition.modes[name].vcc]
         used[step.name] = choose_vcc(definition, rig, step)
-    return used
+    return list(used.items())
 
 
 def _finish(
@@ -53,7 +53,7 @@ def _finish(
     first: int,
     last: int,
     flow: Flow,
-    extra_vcc: dict[str, RailStep] | None = None,
+    extra_vcc: tuple[tuple[str, RailStep], ...] = (),
     passes: int = 1,
     block_words: int = 0,
     busy: int = 0,
@@ -78,7 +78,7 @@ def _finish(
         )
     raised = [name for name in modes if b.pins.raised_levels(definition.modes[name])]
     used = _vcc_used(definition, b.rig, modes)
-    permit = make_permit(b, raised, used | (extra_vcc or {}), code, busy)
+    permit = make_permit(b, raised, [*used, *extra_vcc], code, busy)
     return Sequence(
         kind=kind,
         title=title,
@@ -134,7 +134,7 @@ def compile_read(
         b.emit(Op.READ_RUN, wait=ticks(b.line_settle_ps + b.access_ps(mode), Rounding.AT_LEAST))
     at = b.state.vcc.mv if b.state.vcc else step.typ_mv
     title = f"read {_span(definition, first, last)} at {step.name} ({show_mv(at)})"
-    extra = {step.name: rail_step} if rail_step is not None else None
+    extra = ((step.name, rail_step),) if rail_step is not None else ()
     return _finish(b, kind="read", title=title, modes=[mode], first=first, last=last, flow=Flow.READ, extra_vcc=extra)
 
 

@@ -37,10 +37,10 @@ def _ceilings(b: Builder, modes: Iterable[str]) -> dict[int, int]:
     return ceilings
 
 
-def _vcc_steps(definition: Definition, rig: Rig, used: dict[str, RailStep]) -> tuple[VccStep, ...]:
+def _vcc_steps(definition: Definition, rig: Rig, used: Iterable[tuple[str, RailStep]]) -> tuple[VccStep, ...]:
     """Each VCC rail step in use with the tightest window of the supply steps that use it."""
     windows: dict[int, tuple[int, int]] = {}
-    for name, rail_step in used.items():
+    for name, rail_step in used:
         step = definition.supplies[name]
         low, high = rig.socket_vcc.count_at_least(step.min_mv), rig.socket_vcc.count_at_most(step.max_mv)
         seen = windows.get(rail_step.number, (low, high))
@@ -85,7 +85,7 @@ def _safe_mode(definition: Definition, pins: PinMap, modes: list[str]) -> Mode:
 
 
 def make_permit(
-    b: Builder, modes: Iterable[str], vcc_used: dict[str, RailStep], code: bytes, self_timed: int = 0
+    b: Builder, modes: Iterable[str], vcc_used: Iterable[tuple[str, RailStep]], code: bytes, self_timed: int = 0
 ) -> Permit:
     """The permit of a finished program that goes past the gate to raised `modes` and uses these steps of VCC.
 
