@@ -94,6 +94,15 @@ def most_pulses(bus: Bus) -> None:
         bus.up()
 
 
+def pulses_after_pulses_of_the_other_kind(bus: Bus) -> None:
+    """An erase lets a word have its 25 pulses again, and a program pulse the chip its 20."""
+    for _ in range(2):
+        for _ in range(25):
+            bus.program(5, 0x0F)
+        for _ in range(20):
+            bus.erase()
+
+
 def lowest_high(bus: Bus) -> None:
     """A pulse with lines at just 2.0 V and just 0.8 V, CE at 0.8 V as well."""
     bus.set({A[0]: 2_000, A[1]: 800})
@@ -131,7 +140,7 @@ def quick_walk_in_a_verify(bus: Bus) -> None:
     [
         *(highest_vcc, lowest_level, highest_line, line_under_falling_vcc, whole_hold, whole_release, whole_setup),
         *(steepest_rise, quick_float, lowest_vcc, lowest_high, quick_read_after_power_down, quick_walk_in_a_verify),
-        most_pulses,
+        *(most_pulses, pulses_after_pulses_of_the_other_kind),
     ],
 )
 def test_the_limit_itself_is_allowed(wave: Callable[[Bus], None]) -> None:

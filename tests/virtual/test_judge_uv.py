@@ -13,7 +13,8 @@ from tests.virtual.uv_broken import UV_WAVES
 from tests.virtual.uv_wave import VPP, UvBus
 from tests.virtual.waveform import A9, CE, HIGH, MS, OE, US, VCC
 
-# maker: VCC and VPP of program, verify and inhibit, most pulses of a word, typed again from the fact table [S11 ...]
+# maker: VCC and VPP of program, verify and inhibit, most pulses of a word, typed again from the fact table: S11 and
+# S15; S17; S30 and from memory; S27, S66 and from memory; from memory
 WINDOWS = {
     "st": ((6_000, 6_500), (12_500, 13_000), 25),
     "atmel": ((6_250, 6_750), (12_750, 13_250), 11),
@@ -95,8 +96,39 @@ def test_the_set_up_after_vpp_counts_once() -> None:
     assert rules(judge) == {"raised setup"}
 
 
-def test_a_pulse_that_does_not_end_is_reported_while_it_runs() -> None:
+@pytest.mark.parametrize("maker", WINDOWS)
+def test_one_pulse_more_than_the_maker_allows_is_too_many(maker: str) -> None:
+    """25 pulses a word (ST, National, AMD), one and 10 more (Atmel), 10 (TI); the next one is reported."""
+    judge, bus = watched(maker)
+    vcc, vpp, pulses = WINDOWS[maker]
+    bus.enter(vcc[0], vpp[0])
+    for _ in range(pulses + 1):
+        bus.word(5, 0x0F)
+    assert [violation.rule for violation in judge.violations] == ["too many pulses"]
+
+
+def test_vpp_on_its_way_up_before_vcc_has_its_step_is_out_of_order() -> None:
+    """VCC leaves the 6 V read for 6.1 V while VPP rises already: where it came from does not count."""
+    judge, bus = watched()
+    bus.power(5_900)
+    judge.edges(bus.t, bus.levels, [VPP])
+    bus.wait(US)
+    bus.set({VCC: 6_100})
+    bus.wait(US)
+    bus.set({VPP: 12_750})
+    assert rules(judge) == {"supply order"}
+
+
+@pytest.mark.parametrize("what", ["sample", "edge"])
+def test_a_pulse_that_does_not_end_is_reported_while_it_runs(what: str) -> None:
     """Past 105 us the next thing that happens at the pins brings the report, once, and the end adds nothing."""
+
+    def happens(vcc: int) -> None:
+        if what == "sample":
+            bus.sample()
+        else:
+            bus.set({VCC: vcc})
+
     judge, bus = watched()
     bus.enter()
     bus.address(5)
@@ -104,10 +136,10 @@ def test_a_pulse_that_does_not_end_is_reported_while_it_runs() -> None:
     bus.wait(2 * US)
     bus.give(on=True)
     bus.wait(105 * US)
-    bus.sample()
+    happens(6_240)
     assert judge.violations == []
     bus.wait(1)
-    bus.sample()
+    happens(6_230)
     assert [(violation.rule, violation.got) for violation in judge.violations] == [
         ("pulse width", "still on after 105.0625 us")
     ]

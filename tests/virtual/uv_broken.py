@@ -81,6 +81,12 @@ def vpp_sags_in_verify(bus: UvBus) -> None:
     bus.verify(5)
 
 
+def verify_at_5_v(bus: UvBus) -> None:
+    """A verify with VPP up and VCC at its read step."""
+    bus.enter(vcc=HIGH)
+    bus.verify(5)
+
+
 def identify_under_vpp(bus: UvBus) -> None:
     """D read with VPP and A9 both raised."""
     bus.enter()
@@ -105,6 +111,34 @@ def released_late(bus: UvBus) -> None:
     bus.release()
     bus.wait(2 * US - 1)
     bus.verify(5)
+
+
+def released_early(bus: UvBus) -> None:
+    """D released one tick less than 2 us after the pulse."""
+    bus.enter()
+    bus.address(5)
+    bus.drive(0x0F)
+    bus.wait(2 * US)
+    bus.give(on=True)
+    bus.wait(100 * US)
+    bus.give(on=False)
+    bus.wait(2 * US - 1)
+    bus.release()
+
+
+def float_time(bus: UvBus) -> None:
+    """A sample two ticks, 125 ns, after OE went high under VPP; 130 ns are asked for."""
+    bus.enter()
+    bus.set({OE: 0})
+    bus.wait(US)
+    bus.set({OE: bus.high_mv})
+    bus.wait(2)
+    bus.sample()
+
+
+def below_ground(bus: UvBus) -> None:
+    """A pin more than 0.5 V below ground."""
+    bus.set({CE: -501})
 
 
 def pulse_with_oe_low(bus: UvBus) -> None:
@@ -158,6 +192,10 @@ UV_WAVES: list[tuple[Callable[[UvBus], None], set[str]]] = [
     (vpp_open_in_read, {"supply at rest"}),
     (vpp_low_in_identify, {"supply at rest"}),
     (vpp_sags_in_verify, {"raised window", "raised read"}),
+    (verify_at_5_v, {"raised vcc", "raised read"}),
+    (released_early, {"data hold"}),
+    (float_time, {"float time"}),
+    (below_ground, {"lowest level"}),
     (identify_under_vpp, {"raised vcc", "raised read", "unknown pulse"}),
     (verify_too_soon, {"access time"}),
     (released_late, {"data release"}),

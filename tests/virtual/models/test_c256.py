@@ -16,7 +16,7 @@ from tests.virtual.uv_wave import VPP, UvBus
 from tests.virtual.waveform import A9, CE, HIGH, MS, OE, US, VCC
 
 WORDS = 32_768
-# maker: ID; VCC and VPP of program and verify; absolute maximum of VPP and A9
+# maker: ID; VCC and VPP of program and verify; absolute maximum of VPP and A9, typed again from the fact table
 MAKER_ROWS = {
     "st": ((0x20, 0x8D), (6_000, 6_500), (12_500, 13_000), 14_000, 13_500),  # [S11]
     "atmel": ((0x1E, 0x8C), (6_250, 6_750), (12_750, 13_250), 14_000, 14_000),  # [S17]
@@ -325,6 +325,35 @@ def test_currents_stay_within_the_published_ones() -> None:
     bus.set({A9: HIGH})
     bus.raise_to({A9: 12_000})
     assert chip.draw_ua(bus.t, A9) == 200
+
+
+@makers
+def test_times_and_currents_of_each_maker(maker: str) -> None:
+    """Address to data, OE to data under VPP, VPP in a pulse and in read: typed again, ns and uA.
+
+    ST 80, 100 ns, 50 mA, 100 uA [S11]; Atmel 150, 150, 25 mA, 10 uA [S17]; TI 250 [S30], National 250, AMD 250, 30 mA
+    (from memory), 100 uA [S33]; what is unknown as the slowest and the most of the known.
+    """
+    access, verify, pulse, rest = {
+        "st": (80, 100, 50_000, 100),
+        "atmel": (150, 150, 25_000, 10),
+        "ti": (250, 150, 50_000, 100),
+        "national": (250, 150, 50_000, 100),
+        "amd": (250, 150, 30_000, 100),
+    }[maker]
+    chip, bus = fresh(0x5A, maker)
+    ticks = -(-access * 10 // 625)
+    assert bus.read(3, access=ticks) == 0x5A
+    assert bus.read(5, access=ticks - 1) != 0x5A
+    assert chip.draw_ua(bus.t, VPP) == rest
+    bus.enter(MAKER_ROWS[maker][1][0], MAKER_ROWS[maker][2][0])
+    ticks = -(-verify * 10 // 625)
+    bus.address(7)
+    bus.wait(MS)
+    assert bus.verify(7, access=ticks) == 0x5A
+    assert bus.verify(7, access=ticks - 1) != 0x5A
+    bus.give(on=True)
+    assert chip.draw_ua(bus.t, VPP) == pulse
 
 
 def test_a_power_down_ends_everything() -> None:

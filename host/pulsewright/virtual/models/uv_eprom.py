@@ -150,7 +150,7 @@ class UvEprom(CellChip):
         if part.id is not None and limits.identify_pin is not None and limits.identify_mv is not None:
             a9 = levels[limits.identify_pin] or 0
             self._a9_raised = a9 > self._most
-            self._identifies = at_rest and limits.identify_mv[0] <= a9 <= limits.identify_mv[1]
+            self._identifies = limits.identify_mv[0] <= a9 <= limits.identify_mv[1]
         self._right = at_rest or (verifies and not self._a9_raised)
 
     def _outputs(self, t: int, levels: Levels) -> None:
