@@ -9,6 +9,7 @@ from pulsewright.chip.findings import Findings
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import BusWrite, Cycle, LoadStep, Mode, PollStep, WriteStep
 from pulsewright.errors import Where
+from pulsewright.units import show_ps
 
 _OTHER = {"L": "H", "H": "L"}
 
@@ -123,6 +124,8 @@ def check_load(found: Findings, step: LoadStep, *, in_page: bool) -> None:
     _can_write(found, step.where)
     if not in_page:
         found.at(step.where, "a load outside a loop over pages", wanted='in { each = "page", ... }, not in each word')
+    if found.defn.write is not None and "gap" not in found.tree.names("write"):
+        found.at(step.where, "a load, and nothing says how long the part waits for the next word", wanted="[write] gap")
 
 
 def check_poll(found: Findings, step: PollStep, mode: str, *, in_hand: bool) -> None:
@@ -134,6 +137,7 @@ def check_poll(found: Findings, step: PollStep, mode: str, *, in_hand: bool) -> 
         found.at(step.where, "a poll without a maximum", found=f'"{step.timing}"', wanted=wanted)
     else:
         found.unknown(step.where, "timing parameter", step.timing, found.tree.names("timing"))
+    _longest(found, step)
     if step.bit == "DQ7" and not in_hand:
         what = "a poll for a word that was not written"
         found.at(step.where, what, found=step.bit, wanted="DQ6, or a loop over words or pages")
@@ -148,3 +152,19 @@ def check_poll(found: Findings, step: PollStep, mode: str, *, in_hand: bool) -> 
     if raised or (row is not None and now is not None and row.vcc != now.vcc):
         levels = raised or f"{row.vcc if row else ''} after {now.vcc if now else ''}"
         found.at(step.where, "a poll that moves a supply", found=f"{step.mode}: {levels}", wanted="VCC as it stands")
+
+
+def _longest(found: Findings, step: PollStep) -> None:
+    """A job that is broken off waits for `busy` before VCC goes: no work of the part may outlast it (H5)."""
+    write, within = found.defn.write, found.defn.timing.get(step.timing)
+    if write is None or within is None or within.max_ps is None:
+        return
+    if "busy" not in found.tree.names("write"):
+        wanted = f'[write] busy = "{step.timing}", or a longer one'
+        found.at(step.where, "a poll, and nothing says how long the part is busy", found=step.timing, wanted=wanted)
+        return
+    busy = found.defn.timing.get(write.busy)
+    if busy is not None and busy.max_ps is not None and within.max_ps > busy.max_ps:
+        longer = f"{step.timing} up to {show_ps(within.max_ps)}"
+        wanted = f"at most {show_ps(busy.max_ps)} ({write.busy}), or a longer [write] busy"
+        found.at(step.where, "a poll that outlasts what the part is said to be busy", found=longer, wanted=wanted)
