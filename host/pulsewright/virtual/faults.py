@@ -39,7 +39,12 @@ class ChipFaults:
 
     def names(self) -> list[str]:
         """The faults that are set, by their names on the command line."""
-        is_set = {"wrong-id": self.wrong_id is not None, "stuck": bool(self.stuck), "slow": self.slow_percent > 0}
+        is_set = {
+            "wrong-id": self.wrong_id is not None,
+            "stuck": bool(self.stuck),
+            "slow": self.slow_percent > 0,
+            "weak": bool(self.weak),
+        }
         return [name for name, present in is_set.items() if present]
 
 
