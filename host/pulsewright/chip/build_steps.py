@@ -23,9 +23,9 @@ from pulsewright.chip.model import (
     Window,
     WriteStep,
 )
-from pulsewright.chip.schema import CYCLE
 from pulsewright.chip.source import Tree
 from pulsewright.chip.steps import least_wait_ps
+from pulsewright.chip.words import CYCLE
 
 
 def windows(tree: Tree) -> dict[str, Window]:

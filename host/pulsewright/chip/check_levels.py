@@ -9,7 +9,7 @@ from pulsewright.chip.findings import Findings
 from pulsewright.chip.kinds import nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Maximum, Mode, SupplyStep
-from pulsewright.chip.schema import MEANT_TIMINGS, TIMING_NAME
+from pulsewright.chip.words import MEANT_TIMINGS, TIMING_NAME
 from pulsewright.units import show_mv, show_ps
 
 

@@ -6,8 +6,8 @@ from pulsewright.chip.findings import Findings
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import IdCell, MakerRow
 from pulsewright.chip.packages import POWER_PINS, pin_count
-from pulsewright.chip.schema import UNDRIVEN_ROLES
 from pulsewright.chip.source import MEMORY
+from pulsewright.chip.words import UNDRIVEN_ROLES
 
 
 def check(found: Findings) -> None:

@@ -10,8 +10,8 @@ from pulsewright import units
 from pulsewright.chip.kinds import any_of, nearest
 from pulsewright.chip.lines import KeyPath
 from pulsewright.chip.model import Definition, SupplyStep
-from pulsewright.chip.schema import ROLE_NAME, UNDRIVEN_ROLES
 from pulsewright.chip.source import Tree
+from pulsewright.chip.words import ROLE_NAME, UNDRIVEN_ROLES
 from pulsewright.errors import Problem, Where
 
 VCC_RAISED_ABOVE_MV = 5_500  # design: VCC above 5.5 V counts as raised

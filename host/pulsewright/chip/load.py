@@ -92,8 +92,8 @@ def _row_of(parsed: Parsed, maker: str) -> int:
 def maker_needed(defn: Definition) -> list[str]:
     """The makers for --maker to choose from, where no ID tells rows apart whose differences no common limit settles.
 
-    Those are levels, modes, pages, commands, the way of writing, steps, pins (`defn.apart`); [] where --maker may be left
-    out: rows that differ in times and maxima alone are served by the tightest of them.
+    Those are levels, modes, pages, commands, the way of writing, steps, pins (`defn.apart`). [] where --maker may be
+    left out: rows that differ in times and maxima alone are served by the tightest of them.
     """
     if defn.apart and any(not row.ids for row in defn.makers):
         return [row.maker for row in defn.makers]

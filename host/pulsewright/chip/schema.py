@@ -17,38 +17,39 @@ from pulsewright.chip.kinds import (
     Named,
     Quantity,
     Table,
-    Tables,
     Text,
     Whole,
     any_of,
 )
 from pulsewright.chip.model import PACKAGE_PINS
-
-FORMAT = 1
-SUPPLIES = ("VCC", "VPP", "VH")
-# Pin roles of the data sheets; a part with several of one kind numbers them (CE1, CE2, CS1 ...).
-CONTROL_ROLES = ("CE", "OE", "WE", "PGM", "CS", "BYTE", "RESET", "WP")
-ROLES = ("A", "D", *CONTROL_ROLES, "VPP", "VCC", "GND", "BUSY", "NC", "DC")
-UNDRIVEN_ROLES = ("VCC", "GND", "BUSY", "NC", "DC")  # a mode never sets these
-# Timing parameters the proof gives a meaning to by their name alone; README.md of chipdefs explains each.
-MEANT_TIMINGS = (
-    *("tAS", "tAH", "tDS", "tDH", "tVCS", "tVS", "tVH", "tVR", "tPRT", "tACC", "tCE", "tOE", "tDF"),
-    *("tCS", "tCH", "tOES", "tOEH", "tOEHP", "tWPH", "tWPH2"),  # of bus writes and polls
+from pulsewright.chip.schema_steps import (
+    COMMAND,
+    CYCLES,
+    DATA_CONSTANT,
+    EVERY,
+    PROGRAM_BITS,
+    PROTECTED,
+    STEP,
+    STEPS,
+    TIMING_REF,
+    UNLOADED,
+    method,
 )
-# What the chip takes at most, not what it asks of the rig: over several maker rows the slowest counts.
-RESPONSE_TIMINGS = ("tACC", "tCE", "tOE", "tDF", "tWC")
-DATA_WORDS = ("in", "out", "Z")
-POLL_BITS = ("DQ7", "DQ6")
-TECHNOLOGIES = ("eprom", "eeprom", "flash")
-
-_IDENT = r"[a-z][a-z0-9_]*"
-_ROLE = ROLE_NAME = "|".join(ROLES) + r"|(?:CE|OE|WE|CS)[0-9]"
-_ALIAS = r"[AD][0-9]{1,2}"
-_LEVEL = rf"L|H|X|Z|VCC|(?:{'|'.join(SUPPLIES)})\.{_IDENT}"
-_VOLTAGE = r"\s*[+-]?\d+(?:\.\d+)?\s*(?:V|mV)\s*"
-_MAXIMUM = rf"{_VOLTAGE}|VCC\s*[+-]{_VOLTAGE}|VCC"
-TIMING_NAME = r"t[A-Z][A-Za-z0-9]*"
-CYCLE = r"([0-9A-Fa-f]{1,4})@([0-9A-Fa-f]{1,6})"  # a bus write cycle: word, address
+from pulsewright.chip.words import (
+    ALIAS,
+    CONTROL_ROLES,
+    DATA_WORDS,
+    FORMAT,
+    IDENT,
+    LEVEL,
+    MAXIMUM,
+    MEANT_TIMINGS,
+    ROLE_NAME,
+    ROLES,
+    SUPPLIES,
+    TECHNOLOGIES,
+    TIMING_NAME,
+)
 
 
 def _voltage(about: str, low: int = 0) -> Quantity:
@@ -76,11 +77,11 @@ _SUPPLY_STEP = Table(
 _SUPPLY = Table(
     keys={},
     others=Named("supply_step"),
-    names=_IDENT,
+    names=IDENT,
     what="step name",
     wanted="a name in small letters, such as read or program",
 )
-_MAXIMUM_TEXT = Text(pattern=_MAXIMUM, wanted='a voltage such as "14.5 V" or "VCC + 0.5 V"')
+_MAXIMUM_TEXT = Text(pattern=MAXIMUM, wanted='a voltage such as "14.5 V" or "VCC + 0.5 V"')
 _MAXIMUM_KIND = Either(
     wanted='a voltage such as "14.5 V" or "VCC + 0.5 V", or { max = ..., from = ... }',
     kinds=(
@@ -88,13 +89,12 @@ _MAXIMUM_KIND = Either(
         Table(keys={"max": _MAXIMUM_TEXT, "min": _voltage("deepest undershoot", low=-100_000)}, required=("max",)),
     ),
 )
-_DATA_CONSTANT = Whole(high=0xFFFF)
 _MODE = Table(
     about="a row of the mode table: what each pin is at",
     keys={
-        "VCC": Text(pattern=rf"VCC\.{_IDENT}", wanted='a step of VCC such as "VCC.read"'),
+        "VCC": Text(pattern=rf"VCC\.{IDENT}", wanted='a step of VCC such as "VCC.read"'),
         "D": Either(
-            (Text(choices=DATA_WORDS), _DATA_CONSTANT),
+            (Text(choices=DATA_WORDS), DATA_CONSTANT),
             wanted='"in", "out", "Z" or the value the rig drives',
             about='"out": the chip drives; "in": the rig drives the word; "Z": nobody; a number: the rig drives that',
         ),
@@ -105,8 +105,8 @@ _MODE = Table(
         ),
     },
     required=("VCC", "D"),
-    others=Text(pattern=_LEVEL, wanted='"L", "H", "X", "Z", "VCC" or a supply step such as "VPP.program"'),
-    names=rf"{_ROLE}|{_ALIAS}",
+    others=Text(pattern=LEVEL, wanted='"L", "H", "X", "Z", "VCC" or a supply step such as "VPP.program"'),
+    names=rf"{ROLE_NAME}|{ALIAS}",
     what="pin",
     wanted="a pin such as CE or A9, or VCC, D, access",
     words=CONTROL_ROLES,
@@ -123,117 +123,10 @@ _ID_CELL = Table(
     },
     required=("at", "is"),
 )
-_CYCLES = ListOf(Text(pattern=CYCLE, wanted='a bus cycle such as "AA@5555", word and address in hex'))
-_WRITES = Either(
-    (
-        Text(pattern=_IDENT, wanted="the name of a command, or a list of bus cycles"),
-        ListOf(Text(pattern=rf"{CYCLE}|image", wanted='a bus cycle such as "AA@5555", both in hex, or "image"')),
-    ),
-    wanted='the name of a command, or a list of bus cycles such as ["AA@5555", "55@2AAA", "image"]',
-)
-_COMMAND = Either(
-    (Text(pattern=_IDENT, wanted="the name of a command, or a list of bus cycles"), _CYCLES),
-    wanted='the name of a command, or a list of bus cycles such as ["AA@5555", "55@2AAA"]',
-)
-_TIMING_REF = Text(pattern=TIMING_NAME, wanted='the name of a timing parameter such as "tWC"')
-_VALUE = Either((Text(choices=("image",)), _DATA_CONSTANT), wanted='"image" or a constant such as 0xFF')
-_STEPS = Named("steps", table=False)
-
-_STEP = Tables(
-    what="step",
-    by_key={
-        "repeat": Table(
-            about="do the steps again until they match, at most `max` times",
-            keys={
-                "repeat": _STEPS,
-                "max": Whole(low=1, high=0xFFFF, about="how often at most; then it has failed"),
-                "until": Either(
-                    (Text(choices=("match",)), Named("every")),
-                    wanted='"match" or { every = "word", mode = ..., is = ... }',
-                ),
-            },
-            required=("max",),
-        ),
-        "each": Table(
-            about="once for each word that is to be written, or for each page that has such words",
-            keys={"each": Text(choices=("word", "page")), "steps": _STEPS},
-            required=("steps",),
-        ),
-        "pulse": Table(
-            about="from the pin's level in the mode in force to the other, for the parameter's time, and back",
-            keys={
-                "pulse": Text(pattern=_ROLE, wanted="a control pin such as CE"),
-                "to": Text(choices=("L", "H")),
-                "time": Text(about="a timing parameter with min and max"),
-            },
-            required=("to", "time"),
-        ),
-        "expect": Table(
-            about="sample D and compare; at the top of a repeat's list equal ends the repeat",
-            keys={
-                "expect": _VALUE,
-                "mask": Whole(low=1, high=0xFFFF),
-                "else": Named("steps", table=False, about="done when it differs; ends in the mode it began in"),
-            },
-        ),
-        "write": Table(
-            about="bus write cycles, back to back, as [write] makes them",
-            keys={"write": replace(_WRITES, about="a name in [commands], or a list of cycles")},
-        ),
-        "load": Table(
-            about="the words of the page in hand, back to back, as bus write cycles",
-            keys={"load": Text(choices=("page",))},
-        ),
-        "poll": Table(
-            about="read the chip in `mode` until it has done its work; not done within the parameter's max: failed",
-            keys={
-                "poll": Text(choices=POLL_BITS, about="DQ7: as bit 7 of the word last written; DQ6: stops toggling"),
-                "mode": Text(about="the mode it is read in"),
-                "within": Text(about="a timing parameter with a max"),
-            },
-            required=("mode", "within"),
-        ),
-        "wait": Table(
-            about="wait at least a timing parameter, or a time",
-            keys={"wait": Text(wanted='a timing parameter such as "tAS" or a time such as "2 us"')},
-        ),
-        "mode": Table(about="put the pins in a mode", keys={"mode": Text(), "D": _VALUE}),
-    },
-)
-_EVERY = Table(
-    about="read every word in a mode and compare",
-    keys={"every": Text(choices=("word",)), "mode": Text(), "is": _DATA_CONSTANT},
-    required=("every", "mode", "is"),
-)
-
-
-def _method(bits: tuple[str, ...], more: Mapping[str, Kind] | None = None) -> Table:
-    return Table(
-        keys={
-            "bits": Text(choices=bits, about="which way it changes bits"),
-            "unit": Text(choices=("word", "page", "sector", "chip"), about="what it writes or erases at once"),
-            "steps": _STEPS,
-            "method": Text(about="a step list in methods/NAME.toml, instead of `steps`"),
-            "parameters": Anything({"type": "object"}, about="values for the method's $names"),
-            "finally": Named("steps", table=False, about="steps at the end, whatever happened; they raise nothing"),
-            **(more or {}),
-        },
-    )
-
-
-_UNLOADED = {
-    "unloaded": Text(
-        choices=("kept", "undefined", "blank"), about="what becomes of the words of a page that are not loaded"
-    )
-}
-_PROGRAM_BITS = ("1 to 0", "both")
-_PROTECTED = replace(_method(_PROGRAM_BITS, _UNLOADED), about="how the part is written with its protection on")
-
-
 KINDS: Mapping[str, Kind] = {
-    "step": _STEP,
+    "step": STEP,
     "steps": ListOf(Named("step")),
-    "every": _EVERY,
+    "every": EVERY,
     "supply_step": _SUPPLY_STEP,
     "maximum": _MAXIMUM_KIND,
     "mode": _MODE,
@@ -264,7 +157,7 @@ _TABLES: dict[str, Kind] = {
         keys={"A": ListOf(Whole(low=1)), "D": ListOf(Whole(low=1))},
         required=("A", "D"),
         others=Either((Whole(low=1), ListOf(Whole(low=1))), wanted="a pin number or a list of them"),
-        names=_ROLE,
+        names=ROLE_NAME,
         what="pin",
         wanted=any_of(ROLES),
         words=ROLES,
@@ -279,7 +172,7 @@ _TABLES: dict[str, Kind] = {
         keys={"other": Named("maximum"), "VCC": Named("maximum")},
         required=("VCC", "other"),
         others=Named("maximum"),
-        names=rf"{_ROLE}|{_ALIAS}",
+        names=rf"{ROLE_NAME}|{ALIAS}",
         what="pin",
         wanted="a pin such as OE or A9, or other",
         words=ROLES,
@@ -288,7 +181,7 @@ _TABLES: dict[str, Kind] = {
         keys={"read": Named("mode"), "standby": Named("mode")},
         required=("read", "standby"),
         others=Named("mode"),
-        names=_IDENT,
+        names=IDENT,
         what="mode",
         wanted="a name in small letters, such as read or erase_verify",
     ),
@@ -303,8 +196,8 @@ _TABLES: dict[str, Kind] = {
     "commands": Table(
         about='named lists of bus write cycles "WORD@ADDRESS", both hex',
         keys={},
-        others=_CYCLES,
-        names=_IDENT,
+        others=CYCLES,
+        names=IDENT,
         what="command",
         wanted="a name in small letters, such as protect_on",
     ),
@@ -312,11 +205,11 @@ _TABLES: dict[str, Kind] = {
         about="how a bus write cycle is made",
         keys={
             "mode": Text(about='the mode it is made in: D = "in", the strobe at its idle level'),
-            "pin": Text(pattern=_ROLE, wanted="a control pin such as WE", about="the strobe"),
+            "pin": Text(pattern=ROLE_NAME, wanted="a control pin such as WE", about="the strobe"),
             "to": Text(choices=("L", "H"), about="where the strobe goes"),
-            "time": replace(_TIMING_REF, about="width of the strobe: a timing parameter with a min"),
-            "gap": replace(_TIMING_REF, about="window from load to load of one page"),
-            "busy": replace(_TIMING_REF, about="the longest time the part works by itself after a write; needs a max"),
+            "time": replace(TIMING_REF, about="width of the strobe: a timing parameter with a min"),
+            "gap": replace(TIMING_REF, about="window from load to load of one page"),
+            "busy": replace(TIMING_REF, about="the longest time the part works by itself after a write; needs a max"),
         },
         required=("mode", "pin", "to", "time"),
     ),
@@ -324,16 +217,16 @@ _TABLES: dict[str, Kind] = {
         keys={
             "mode": Text(about="the mode in which the chip gives its ID bytes"),
             "kind": Text(choices=("none",), about="the part has no electronic ID"),
-            "command": replace(_COMMAND, about="bus cycles after which the ID is read; only on flash"),
-            "leave": replace(_COMMAND, about="bus cycles that lead back to reading"),
+            "command": replace(COMMAND, about="bus cycles after which the ID is read; only on flash"),
+            "leave": replace(COMMAND, about="bus cycles that lead back to reading"),
             "settle": Text(about='wait after each of the two: a timing parameter such as "tIDA", or a time'),
         },
     ),
-    "program": _method(_PROGRAM_BITS, {**_UNLOADED, "protected": _PROTECTED}),
-    "erase": _method(("to blank", "both")),
+    "program": method(PROGRAM_BITS, {**UNLOADED, "protected": PROTECTED}),
+    "erase": method(("to blank", "both")),
     "protect": Table(
         about="software data protection, switched on and off; from standby to standby, nothing raised",
-        keys={"on": _STEPS, "off": _STEPS},
+        keys={"on": STEPS, "off": STEPS},
         required=("on", "off"),
     ),
     "verify": Table(keys={"passes": ListOf(Table(keys={"mode": Text()}, required=("mode",)))}, required=("passes",)),

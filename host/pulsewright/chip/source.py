@@ -10,7 +10,8 @@ from typing import Any
 
 from pulsewright.chip.kinds import Examiner, Table, Text, any_of, nearest, shown
 from pulsewright.chip.lines import KeyPath, Places, SourceText, dotted, scan, syntax_line
-from pulsewright.chip.schema import DEFINITION, FORMAT, KINDS
+from pulsewright.chip.schema import DEFINITION, KINDS
+from pulsewright.chip.words import FORMAT
 from pulsewright.errors import DefinitionMistake, FileMistake, Problem, Where
 
 Node = dict[str, Any]

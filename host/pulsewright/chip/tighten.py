@@ -6,8 +6,8 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, fields, is_dataclass, replace
 
 from pulsewright.chip.model import Definition, Maximum, Method, PollStep, SupplyStep, WaitStep, Window
-from pulsewright.chip.schema import RESPONSE_TIMINGS
 from pulsewright.chip.steps import method_with_waits, steps_of, with_waits
+from pulsewright.chip.words import RESPONSE_TIMINGS
 from pulsewright.errors import Problem, Where
 from pulsewright.units import show_mv, show_ps
 
