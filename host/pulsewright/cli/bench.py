@@ -43,6 +43,11 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     new.add_argument("--fault", metavar="NAME[=...]", action="append", default=[], help="a fault, as often as wanted")
     new.add_argument("--model", metavar="FILE", help="a Python file with make_chip() -> ChipModel, instead of ours")
     new.add_argument("--maker", metavar="NAME", default="", help="whose chip it is, where its makers' chips differ")
+    new.add_argument(
+        "--jumper",
+        action="store_true",
+        help="set the board's jumper, which parts without electronic ID and levels above 14.5 V ask for",
+    )
     new.late = _faults_text
     show = add(
         inner,
@@ -89,7 +94,9 @@ def _new(args: argparse.Namespace, desk: Desk) -> int:
             got=args.contents,
             hint="check the name and the folder",
         )
-    bench = Bench.new(args.bench, name, contents=contents, faults=args.fault, model=args.model, maker=args.maker)
+    bench = Bench.new(
+        args.bench, name, contents=contents, faults=args.fault, model=args.model, maker=args.maker, jumper=args.jumper
+    )
     facts = bench.report()
     lines = [f"{args.bench}: {_chip_text(bench)}, contents CRC-32 {facts['crc32'].upper()}"]
     if args.fault:

@@ -44,6 +44,7 @@ class Bench:
         self.chip_name = chip_name
         self.maker = maker
         self.model = model
+        self.jumper = False  # the board's jumper that a vouched part, or a level above 14.5 V, asks for
         self.faults: Faults = parse_faults(faults)
         self.chip = self._make()
         wiring(self.chip.limits.package, self.faults.seat)  # a package that cannot sit so is a mistake now
@@ -79,13 +80,14 @@ class Bench:
         faults: Iterable[str] = (),
         model: Path | str | None = None,
         maker: str = "",
+        jumper: bool = False,
     ) -> Bench:
         """A bench in a file, saved at once. A bench that is there already is replaced, any other file is not."""
         target = Path(path)
         if target.exists():
             _look_at_old(target)
         bench = cls(chip, faults=faults, model=None if model is None else Path(model).resolve(), maker=maker)
-        bench.path = target
+        bench.path, bench.jumper = target, jumper
         bench._fill(contents, 1)
         bench._take_faults()
         bench.save()
@@ -99,7 +101,7 @@ class Bench:
         model = kept["model"]
         maker = kept.get("maker", "")
         bench = cls(kept["chip"], faults=kept["faults"], model=None if model is None else Path(model), maker=maker)
-        bench.path = target
+        bench.path, bench.jumper = target, bool(kept.get("jumper", False))
         bench._restore(target, kept)
         return bench
 
@@ -122,7 +124,7 @@ class Bench:
         seat = self.faults.seat
         judge = self.judge = Judge(limits, misplaced=bool(seat))
         chip = EmptySeat(self.chip) if seat == "absent" else self.chip
-        board = Board()
+        board = Board(button=self.jumper)
         if self.faults.raised_limit_ua is not None:
             board = replace(board, raised_limit_ua=self.faults.raised_limit_ua)
         return VirtualRig(Socket(chip, wiring(limits.package, seat), (judge,)), boot=self.boots, board=board)
@@ -224,6 +226,7 @@ class Bench:
             "format": FORMAT,
             "chip": self.chip_name,
             "maker": self.maker,
+            "jumper": self.jumper,
             "model": None if self.model is None else str(self.model),
             "faults": list(self.faults.texts),
             "boots": self.boots,
