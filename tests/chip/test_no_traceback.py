@@ -16,8 +16,8 @@ from pulsewright.chip.load import find, load
 from pulsewright.errors import DefinitionMistake
 from tests.chip.mutants import save
 
-GOOD = Path(__file__).parent / "good" / "chime24.toml"
-TREES: list[dict[str, Any]] = [tomllib.loads(path.read_text(encoding="utf-8")) for path in (GOOD, find("27e512"))]
+FILES = [*sorted((Path(__file__).parent / "good").glob("*.toml")), find("27e512"), find("28c256")]
+TREES: list[dict[str, Any]] = [tomllib.loads(path.read_text(encoding="utf-8")) for path in FILES]
 WORDS = [
     "",
     "L",
@@ -30,10 +30,29 @@ WORDS = [
     "read",
     "tPW",
     "pulse_verify_shared",
+    "page_write_command",
+    "protect_on",
+    "AA@5555",
+    "page",
+    "DQ7",
     "A9",
     "out",
 ]
 NAMES = ["mode", "steps", "typ", "min", "max", "value", "from", "D", "VCC", "A", "id", "method", "kind", "repeat", "x"]
+NAMES += [
+    "write",
+    "load",
+    "poll",
+    "each",
+    "else",
+    "command",
+    "leave",
+    "parameters",
+    "protected",
+    "finally",
+    "page",
+    "gap",
+]
 SCALARS = st.sampled_from(WORDS) | st.integers(-2, 70_000) | st.booleans() | st.floats(0, 9)
 VALUES = st.recursive(
     SCALARS, lambda inner: st.lists(inner, max_size=3) | st.dictionaries(st.sampled_from(NAMES), inner, max_size=3)
