@@ -101,6 +101,33 @@ def test_both_commands_are_given_the_slowest_time_to_settle(tmp_path: Path) -> N
     assert part.identify_command.settle_ps == 20_000_000
 
 
+def test_waits_in_else_are_tightened_too(tmp_path: Path) -> None:
+    """A chip's own time that only an `else` waits for is the slowest row's."""
+    text = TEXT.replace('{ expect = "image" }', '{ expect = "image", else = [{ wait = "tXX" }] }', 1)
+    text = text.replace("tSCE = ", 'tXX  = { max = "5 us" }\ntSCE = ', 1)
+    row = WITH_ID + 'timing.tXX.max = "9 us"'
+    part = load(str(saved(tmp_path, text.replace("[program]", f"{row}\n\n[program]", 1))))
+    assert waits(program_of(part), "tXX") == [9_000_000]
+
+
+def test_busy_is_the_slowest_rows(tmp_path: Path) -> None:
+    """The longest time the part works by itself is not shortened by a quick row, whatever it is called."""
+    text = TEXT.replace('busy = "tSCE"', 'busy = "tBSY"').replace("tSCE = ", 'tBSY = { max = "20 ms" }\ntSCE = ')
+    row = WITH_ID + 'timing.tBSY.max = "30 ms"'
+    part = load(str(saved(tmp_path, text.replace("[program]", f"{row}\n\n[program]", 1))))
+    assert part.timing["tBSY"].max_ps == 30_000_000_000
+
+
+def test_a_row_without_identification_drops_the_command(tmp_path: Path) -> None:
+    """`identify.kind` of a row takes the place of every key that identifies."""
+    path = saved(tmp_path, TEXT.replace("[program]", f'{NO_ID}identify.kind = "none"\n\n[program]', 1))
+    assert check_file(path) == []
+    part = load(str(path), maker="Belfry")
+    assert (part.identify, part.identify_command, part.identify_mode) == ("none", None, "")
+    assert load(str(path), maker="Tower").identify == "command"
+    assert maker_needed(load(str(path))) == ["Tower", "Belfry"]
+
+
 # ---- not tightened ----
 
 
@@ -147,7 +174,8 @@ def test_a_row_that_differs_in_times_maxima_and_words_needs_none(tmp_path: Path,
 def test_rows_with_ids_may_differ_in_levels_and_steps(tmp_path: Path) -> None:
     """Such a part loads without a maker for the look that tells which it is, with the steps of the file itself."""
     row = 'program.steps = [{ each = "page", steps = [{ load = "page" }, { mode = "standby" }] }]'
-    path = with_id(tmp_path, f'{row}\nsupplies.VCC.read.max = "5.25 V"')
+    rows = f'{WITH_ID}{row}\nsupplies.VCC.read.max = "5.25 V"\n\n{FIRST}'
+    path = saved(tmp_path, TEXT.replace(FIRST, rows))
     part, belfry = load(str(path)), load(str(path), maker="Belfry")
     assert (part.row, maker_needed(part)) == (None, [])
     assert part.supplies["VCC.read"].max_mv == 5_250

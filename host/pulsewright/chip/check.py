@@ -39,17 +39,15 @@ def check(parsed: Parsed) -> list[Problem]:
 def examine_rows(parsed: Parsed) -> tuple[list[Problem], list[Tree]]:
     """Every problem, and the examined tree for each maker row (or for the file as it stands, if it has none)."""
     trees = [examined(resolve_tree(parsed, row)) for row in (range(row_count(parsed)) or [None])]
-    problems: list[Problem] = []
-    definitions = []
-    for tree in trees:
-        found = Findings(tree, build(tree))
+    rows = [Findings(tree, build(tree)) for tree in trees]
+    for found in rows:
         for part in _PARTS:
             part(found)
-        problems += tree.problems + found.problems
-        definitions.append(found.defn)
+    check_levels.check_unused(rows)
+    problems = [problem for found in rows for problem in found.tree.problems + found.problems]
     problems += _equal_makers(parsed, trees[0])
     if not any(not one.warning for one in problems):
-        problems += tightest(definitions).problems
+        problems += tightest([found.defn for found in rows]).problems
     unique = list(dict.fromkeys(problems))
     return sorted(unique, key=lambda one: (one.where.file != str(parsed.path), one.where.file, one.where.line)), trees
 

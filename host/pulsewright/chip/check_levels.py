@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 from pulsewright.chip.findings import Findings
 from pulsewright.chip.kinds import nearest
@@ -219,12 +219,19 @@ def _timing(found: Findings) -> None:
     drives = any(mode.data == "in" or isinstance(mode.data, int) for mode in found.defn.modes.values())
     if drives and "tDF" not in written:
         found.at(("timing", "tDF"), "nothing says when the outputs float", wanted="tDF")
-    used = _used_timings(found)
-    for name in written:
-        if name not in MEANT_TIMINGS and name not in used and re.fullmatch(TIMING_NAME, name):
-            close = nearest(name, MEANT_TIMINGS)
-            what = "a timing parameter that nothing uses"
-            found.at(("timing", name), what, found=name, wanted="a name with a meaning", nearest=close, warning=True)
+
+
+def check_unused(rows: Sequence[Findings]) -> None:
+    """Warns of timing parameters that have no meaning by their name and are used in no row."""
+    used = {name for found in rows for name in _used_timings(found)}
+    for found in rows:
+        for name in found.tree.names("timing"):
+            if name not in MEANT_TIMINGS and name not in used and re.fullmatch(TIMING_NAME, name):
+                close = nearest(name, MEANT_TIMINGS)
+                what = "a timing parameter that nothing uses"
+                found.at(
+                    ("timing", name), what, found=name, wanted="a name with a meaning", nearest=close, warning=True
+                )
 
 
 def _used_timings(found: Findings) -> set[str]:
