@@ -17,7 +17,16 @@ from pulsewright.chip.shipped import shipped_folder
 HERE = Path(__file__).parent
 SOUND = [*sorted(shipped_folder().glob("*.toml")), *sorted((HERE / "good").glob("*.toml"))]
 # Fixtures whose mistakes are of shape, type or word, so that an editor can see them; the rest need sense.
-OF_SHAPE = ["missing_keys", "missing_tables", "row_mistakes", "sizes", "units_and_types", "unknown_names"]
+OF_SHAPE = [
+    "bus_steps",
+    "bus_tables",
+    "missing_keys",
+    "missing_tables",
+    "row_mistakes",
+    "sizes",
+    "units_and_types",
+    "unknown_names",
+]
 
 
 def validator() -> jsonschema.Draft202012Validator:
