@@ -171,7 +171,7 @@ def test_an_odd_permit_is_refused(rule: str, bend: dict[str, Any], text: str) ->
     ("kind", "bend", "text"),
     [
         ("read", {"identity": Identity.NONE, "raised": ((2, 422),)}, "identity none, yet raised levels"),
-        ("burn", {"identity": Identity.NONE}, "identity none, yet the program can write"),
+        ("burn", {"identity": Identity.NONE, "identify_switch": 4}, "identity none, yet the program can write"),
         ("read", {"identity": Identity.WANTED}, "wants an ID of a part that has none"),
         ("read", {"identity": Identity.NONE, "alternatives": (ONE,)}, "names ID cells though it wants no identity"),
         ("read", {"identity": Identity.NONE, "identify_switch": 4}, "an identify level that the definition does not"),

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from pulsewright.sequence.proof.algorithm import IDENTIFY
 from pulsewright.sequence.proof.modes import lines_fit
 from pulsewright.sequence.proof.state import (
     ADDRESS,
@@ -11,6 +12,7 @@ from pulsewright.sequence.proof.state import (
     EITHER,
     HIGH,
     LOW,
+    NOT_LOOKED,
     OFF,
     PULSE,
     RELEASED,
@@ -33,8 +35,7 @@ _SHORT = {Level.LOW: LOW, Level.HIGH: HIGH, Level.RELEASED: RELEASED}
 
 def held(t: Tables, state: State, clocks: Clocks, kind: str) -> None:
     """An edge of a kind keeps its hold time after the last pulse."""
-    pulse = t.pulses[state.written.pulse] if state.written.pulse >= 0 else None
-    hold = t.timing.hold_ticks(kind, pulse, state)
+    hold = t.timing.hold_ticks(kind, state.last, state)
     t.need(
         elapsed(clocks, PULSE) >= hold, "H7", f"{kind} hold after the pulse", f"{hold} ticks", elapsed(clocks, PULSE)
     )
@@ -101,6 +102,8 @@ def lines(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
             kind = "control"
         if line in t.pins.data or line in t.rig.site.data_lines:
             t.find("H6", f"line {line} is a data line: it is driven as a word or not at all")
+        elif line in t.pins.open_lines:
+            t.need(level != HIGH, "H6", f"line {line} meets a pin that is not connected", "low or released", level)
         elif line in t.pins.supply_lines:
             t.find("H6", f"line {line} meets a supply pin, or a pin that no mode drives")
         elif line not in t.pins.inputs:
@@ -144,12 +147,13 @@ def address_word(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> R
 
 
 def _drive(t: Tables, state: State, clocks: Clocks, word: str | int) -> Result:
-    t.need(state.gate, "H2", "D is driven before the gate")
+    asks = state.looked != NOT_LOOKED and any(t.course.phases[one] == IDENTIFY for one in state.pos)
+    t.need(state.gate or asks, "H2", "D is driven before the gate")
     t.need(not t.may_drive(state.levels), "H6", "D is driven while the chip may drive it", "outputs off")
     floating = at_least(t.timing.float_ps + t.timing.line_ps(state))
     since = elapsed(clocks, DISABLED)
     t.need(since >= floating, "H6", "D is driven before the chip has let go of it (tDF)", f"{floating} ticks", since)
-    idle = any(not row.drives and lines_fit(row, state.levels) for row in t.rows)
+    idle = any(row.data not in ("out", "Z") and lines_fit(row, state.levels) for row in t.rows)
     t.need(idle, "H6", "D is driven in no mode of the definition in which the chip listens")
     if state.data != word or word == WORD:
         held(t, state, clocks, "data")
@@ -170,7 +174,7 @@ def drive(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 
 def drive_word(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     """Drives D with the word in hand."""
-    t.need(state.register == WORD, "H7", "drives a word when none is in hand")
+    t.need(state.hand, "H7", "drives a word when none is in hand")
     return _drive(t, state, clocks, WORD)
 
 

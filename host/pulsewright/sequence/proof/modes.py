@@ -11,6 +11,7 @@ from pulsewright.sequence.proof.electrical import Sums, raised_sums, vcc_sums
 from pulsewright.sequence.proof.state import HIGH, LOW, RELEASED, State
 
 _SUPPLY_PINS = ("VCC", "GND")
+_UNCONNECTED = ("NC", "DC")
 
 
 @dataclass(frozen=True)
@@ -52,6 +53,7 @@ class Pins:
     control: Mapping[int, str]  # line -> role
     data: tuple[int, ...]
     supply_lines: frozenset[int]  # lines at VCC, GND, outputs and pins without a role in any mode: never to be driven
+    open_lines: frozenset[int]  # lines at pins that are not connected: low or released
     vcc_mask: int
     power_lines: tuple[int, ...]  # supply positions of the packages that this chip is not
     problems: tuple[str, ...]
@@ -86,11 +88,14 @@ def map_pins(definition: Definition, rig: Rig) -> Pins:
     address: list[int] = []
     control: dict[int, str] = {}
     closed: set[int] = set()
+    loose: set[int] = set()
     data: list[int] = []
     for role, pins in definition.pins.items():
         for pin in pins:
             line = line_at(definition, rig, pin)
-            if role in _SUPPLY_PINS or (role not in ("A", "D") and role not in named):
+            if role in _UNCONNECTED and role not in named:
+                loose |= set() if line is None else {line}
+            elif role in _SUPPLY_PINS or (role not in ("A", "D") and role not in named):
                 closed |= set() if line is None else {line}
             elif line is None:
                 problems.append(f"no line of the rig reaches pin {pin} ({role})")
@@ -111,7 +116,8 @@ def map_pins(definition: Definition, rig: Rig) -> Pins:
         else:
             mask |= 1 << switch.number
     power = _power_lines(definition, rig, own)
-    return Pins(tuple(address), control, tuple(data), frozenset(closed), mask, power, tuple(problems))
+    own_lines, unused = frozenset(closed), frozenset(loose)
+    return Pins(tuple(address), control, tuple(data), own_lines, unused, mask, power, tuple(problems))
 
 
 def _raised_at(definition: Definition, rig: Rig, mode: Mode, role: str, pin: int, supply: SupplyStep) -> Raised | None:

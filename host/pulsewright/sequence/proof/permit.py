@@ -7,7 +7,7 @@ import zlib
 from pulsewright.chip.model import IdCell
 from pulsewright.rig.model import Switch
 from pulsewright.sequence.proof.modes import Raised, Row
-from pulsewright.sequence.proof.tables import Tables
+from pulsewright.sequence.proof.tables import RAISED_VCC_MV, Tables
 from pulsewright.sequence.proof.timing import at_least
 from pulsewright.units import show_mv
 from pulsewright.wire.fields import WireMistake
@@ -59,20 +59,31 @@ def _identity(t: Tables) -> None:
         kind.name,
     ):
         return
-    t.need(
-        t.definition.identify == "mode",
-        "H2",
-        "this way of identification is not understood",
-        "mode",
-        t.definition.identify,
-    )
+    way = t.definition.identify
+    t.need(way in ("mode", "command"), "H2", "this way of identification is not understood", "mode or command", way)
+    if way == "command":
+        _by_command(t)
     _alternatives(t)
 
 
+def _by_command(t: Tables) -> None:
+    """A command before the gate is a write to a chip that nobody knows yet: only to flash, and only at 5 V."""
+    t.need(t.definition.technology == "flash", "H2", "an ID asked by command of a part that is no flash",
+           "flash", t.definition.technology or "not stated")  # fmt: skip
+    raised = [row.name for row in t.rows if row.raised]
+    t.need(not raised, "H2", "an ID asked by command of a part that has raised levels", "", ", ".join(raised))
+    t.need(t.command_row is not None, "H2", "the definition has no commands for its ID")
+
+
 def _only_looks(t: Tables) -> None:
+    """Without identity nothing is raised, VCC neither; the identify step, where there is one, allows no write."""
     t.need(not t.permit.raised, "H2", "identity none, yet raised levels past the gate", "none", len(t.permit.raised))
+    known = {one.number: one.mv for one in t.rig.vcc.steps}
+    high = [one.step for one in t.permit.vcc if known.get(one.step, 0) > RAISED_VCC_MV]
+    t.need(not high, "H9", "identity none, yet VCC above 5.5 V", "vouched none", high)
     flat = t.shape.flat if t.shape else ()
-    t.need(not any(one.op in _WRITING for _, one in flat), "H2", "identity none, yet the program can write")
+    writes = t.permit.identify_switch != NO_SWITCH and any(one.op in _WRITING for _, one in flat)
+    t.need(not writes, "H2", "identity none, yet the program can write")
 
 
 def _alternatives(t: Tables) -> None:
@@ -178,6 +189,9 @@ def check_used(t: Tables) -> None:
     t.need(not spare, "H3", "the permit allows raised levels that the program never uses", "", sorted(spare))
     spare = set(t.vcc_permit) - t.used_vcc
     t.need(not spare, "H3", "the permit allows VCC steps that the program never uses", "", sorted(spare))
+    _self_timed(t)
+    page, block = t.definition.page, t.shape.header.block_words if t.shape else 0
+    t.need(not t.used_load or page == block, "H7", "a page is loaded from blocks of another size", page, block)
 
 
 # ---- patterns -------------------------------------------------------------------------------------------------------
@@ -218,22 +232,33 @@ def _safe(t: Tables) -> None:
     t.need(levels <= {"L", "H"}, "H5", "the safe pattern leaves a line released", "L or H", safe)
     t.need(set(safe) == set(t.pins.control), "H5", "the safe pattern does not set just the control lines",
            sorted(t.pins.control), sorted(safe))  # fmt: skip
-    quiet = [row for row in t.rows if row.data == "Z" and not row.raised and row.pattern.items() <= safe.items()]
+    quiet = [row for row in t.rows if row.data == "Z" and all(safe.get(at) == one for at, one in row.pattern.items())]
     t.need(
         bool(quiet),
         "H5",
-        "the safe pattern is no row of the mode table in which D floats and nothing is raised",
+        "the safe pattern is no row of the mode table in which D floats",
         "",
         safe,
     )
+    never_low = [at for at in safe if all("L" not in row.lines.get(at, "L") for row in t.rows) and safe[at] == "L"]
+    t.need(not never_low, "H5", "in the safe pattern a line is low that no mode has low", "H", never_low)
     drives = [row.name for row in t.rows if row.drives and row.pattern.items() <= safe.items()]
     t.need(not drives, "H5", "in the safe pattern the chip drives D", "", ", ".join(drives))
-    for pulse, line in zip(t.pulses, t.pulse_lines, strict=True):
-        row = next((one for one in t.rows if one.name == pulse.mode), None)
-        if row is None or line is None:
-            continue
-        pulsed = {**row.pattern, line: pulse.to}
-        if all(safe.get(at, level) == level for at, level in pulsed.items()):
-            t.find("H5", f"with the raised level still up the safe pattern is the pulse of {pulse.mode}", "", safe)
-    longest = at_least(t.timing.most("tWC"))
-    t.need(t.permit.self_timed >= longest, "H5", "self-timed wait", f"at least {longest} ticks", t.permit.self_timed)
+    up = {number for number, _ in t.permit.raised} | {t.permit.identify_switch}
+    for one in t.actives:
+        raised = {number for number in range(8) if one.raised >> number & 1}
+        if raised <= up and all(safe.get(at, level) == level for at, level in one.lines.items()):
+            t.find("H5", f"with the raised level still up the safe pattern is the pulse of {one.mode}", "", safe)
+
+
+def _self_timed(t: Tables) -> None:
+    """How long the firmware waits before VCC goes: as long as the chip may write by itself, and not for ever."""
+    busy = t.timing.busy_ps()
+    if busy is None:
+        polls = [one.max_ps for one in t.course.polls]
+        busy = max([*polls, t.timing.most("tWC")], default=0) + t.timing.gap_ps()
+    longest = at_least(busy)
+    got = t.permit.self_timed
+    t.need(got >= longest or not t.used_busy, "H5", "self-timed wait", f"at least {longest} ticks", got)
+    most = max(2 * longest, t.timing.longest_ticks)
+    t.need(got <= most, "H5", "self-timed wait", f"at most {most} ticks", got)

@@ -11,6 +11,7 @@ from pulsewright.sequence.proof.state import (
     CONTROL,
     DATA,
     HIGH,
+    IDLE,
     LOW,
     NOT_LOOKED,
     OFF,
@@ -20,13 +21,14 @@ from pulsewright.sequence.proof.state import (
     RELEASED,
     VCC,
     VCC_MOVED,
+    WRITING,
     Clocks,
     State,
     edge,
     elapsed,
     started,
 )
-from pulsewright.sequence.proof.tables import SEAT_DEAD, SEAT_OFF, SEAT_POSITION, SEAT_POWER, SEAT_PROBE, Tables
+from pulsewright.sequence.proof.tables import SEAT_DEAD, SEAT_OFF, SEAT_POSITION, SEAT_PROBE, Tables
 from pulsewright.sequence.proof.timing import at_least
 from pulsewright.units import show_mv
 from pulsewright.wire.ops import Instruction
@@ -35,6 +37,7 @@ from pulsewright.wire.tables import Bias, Channel, Group, Rail, Range
 Result = tuple[State, Clocks]
 _PROBE_LEAST_MV: Final = 1500  # design, seating check: less means turned or short
 _GONE_MV: Final = 500  # H5: VCC that is off
+_PATIENCE: Final = 1_600_000  # 100 ms: what H5 gives a converter that will not go down
 _STANDS_LOW_MV: Final = 800  # TTL low: a raised position under it does not stand up
 
 
@@ -43,8 +46,27 @@ def still(t: Tables, state: State, clocks: Clocks, what: str) -> None:
     t.need(not state.on, "H4", f"{what} with raised switches closed", 0, f"{state.on:b}")
     fall = t.timing.fall_ticks(state.opened)
     t.need(elapsed(clocks, OFF) >= fall, "H4", f"{what} while a raised level falls", fall, elapsed(clocks, OFF))
-    hold = t.timing.hold_ticks("vcc", t.pulses[state.written.pulse] if state.written.pulse >= 0 else None, state)
+    hold = t.timing.hold_ticks("vcc", state.last, state)
     t.need(elapsed(clocks, PULSE) >= hold, "H7", f"{what} too soon after a pulse", hold, elapsed(clocks, PULSE))
+    at_rest(t, state, clocks, what)
+
+
+def at_rest(t: Tables, state: State, clocks: Clocks, what: str) -> None:
+    """The chip does not work by itself: it was polled until done, or its longest time is over."""
+    if state.busy == IDLE:
+        return
+    if state.busy == WRITING:
+        longest = t.timing.busy_ps()
+        text = f"{what} while the chip may still be writing"
+    else:
+        command = t.definition.identify_command
+        longest = t.timing.gap_ps() + (command.settle_ps if command else 0)
+        text = f"{what} before the identify command has settled"
+    if longest is None:
+        t.find("H7", text, "a poll")
+        return
+    need, since = at_least(longest), elapsed(clocks, PULSE)
+    t.need(since >= need, "H7", text, f"{need} ticks", since)
 
 
 def _low_vcc(t: Tables, step: int) -> bool:
@@ -147,6 +169,8 @@ def measure(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result
     channel, low, high_ = ins.args["channel"], ins.args["low"], ins.args["high"]
     if not t.need(low <= high_, "H8", "a window with nothing inside", "", f"{low}..{high_}"):
         return state, clocks
+    patience = ins.args["limit"]
+    t.need(patience <= _PATIENCE, "H8", "a measurement that may take for ever", f"{_PATIENCE} ticks", patience)
     if channel == Channel.SOCKET_VCC:
         return _measure_vcc(t, state, clocks, low, high_)
     if channel == Channel.RAISED_RAIL:
@@ -253,6 +277,16 @@ def invariants(t: Tables, state: State) -> None:
             )
 
 
-def power_fact(line: int) -> int:
-    """The seating fact that a supply position of another package stays low."""
-    return SEAT_POWER << line
+def out_of_pulse(t: Tables, state: State, clocks: Clocks) -> None:
+    """No pulse's own levels stand outside a pulse, while its raised levels are up, rising or falling (H7)."""
+    if state.range == Range.OFF:
+        return
+    up = state.on
+    if state.opened and elapsed(clocks, OFF) < t.timing.fall_ticks(state.opened):
+        up |= state.opened
+    for one in t.actives:
+        if one.raised & up != one.raised or (not one.raised and state.range != Range.FULL):
+            continue
+        if all(state.levels[line] not in (LOW, HIGH) or state.levels[line] == level
+               for line, level in one.lines.items()):  # fmt: skip
+            t.find("H7", f"the levels of the pulse of {one.mode} stand outside a pulse")

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
+from pulsewright.sequence.proof.algorithm import AFTER, FAILED, THE_GATE, Event
 from pulsewright.sequence.proof.lines import held
 from pulsewright.sequence.proof.modes import Row, lines_fit
 from pulsewright.sequence.proof.permit import check_ceiling
-from pulsewright.sequence.proof.power import measured_for, rail_measured_for
+from pulsewright.sequence.proof.power import at_rest, measured_for, rail_measured_for
 from pulsewright.sequence.proof.state import (
     ADDRESS,
     CONTROL,
@@ -20,6 +21,7 @@ from pulsewright.sequence.proof.state import (
     elapsed,
     started,
 )
+from pulsewright.sequence.proof.steps import advance, in_phase
 from pulsewright.sequence.proof.tables import (
     SEAT_DOWN,
     SEAT_HELD,
@@ -44,6 +46,9 @@ def switches(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Resul
     rising, falling = on & ~state.on, state.on & ~on
     if on:
         _may_close(t, state, on)
+    if rising:
+        t.need(not in_phase(t, state, AFTER, FAILED), "H3", "a level is raised in the steps that end a method")
+        at_rest(t, state, clocks, "a level is raised")
     if rising or falling:
         held(t, state, clocks, "raised")
     others = state.opened & ~on
@@ -152,7 +157,8 @@ def seated(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 
 
 def _identifies(t: Tables, state: State, clocks: Clocks, wait: int) -> None:
-    row = t.identify_row
+    row = t.identify_row or t.command_row
+    t.need(wait <= t.timing.longest_ticks, "H7", "a wait longer than anything asks for", t.timing.longest_ticks, wait)
     if not t.need(row is not None, "H2", "the gate reads an ID that the definition does not have") or row is None:
         return
     address_ps, control_ps = t.timing.access_ps(row)
@@ -183,6 +189,8 @@ def gate_look(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Resu
     """The look at the ID cells without the identify level."""
     t.need(state.seated, "H1", "a look at the ID cells before the seating check has passed")
     t.need(not state.on, "H2", "the look before the gate is done under a raised level")
+    asked = state.pos != frozenset({t.course.start})
+    t.need(not asked, "H2", "the look before the gate comes after a command")
     _identifies(t, state, clocks, ins.args["wait"])
     after = _with_free_address(t, state)
     return after._replace(looked=ins.args["wait"]), started(clocks, ADDRESS)
@@ -204,6 +212,11 @@ def gate(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
     t.need(state.looked != NOT_LOOKED, "H2", "the gate without the look before it")
     t.need(state.looked == wait, "H2", "look and gate wait differently", state.looked, wait)
     _identifies(t, state, clocks, wait)
+    if t.definition.identify == "command":
+        t.need(not state.on, "H2", "a raised level at a gate that asks by command")
+        at_rest(t, state, clocks, "the gate")
+        after = advance(t, state, Event(THE_GATE))
+        return _with_free_address(t, after)._replace(gate=True), started(clocks, ADDRESS)
     t.need(
         number != NO_SWITCH and state.on == 1 << number,
         "H2",

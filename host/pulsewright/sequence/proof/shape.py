@@ -13,7 +13,7 @@ from pulsewright.wire.tables import LOOP_DEPTH, PROGRAM_BYTES, Op
 
 OPENING: Final = {Op.LOOP: Op.NEXT, Op.EACH_BLOCK: Op.NEXT_BLOCK, Op.EACH_WORD: Op.NEXT_WORD}
 CLOSING: Final = {close: open_ for open_, close in OPENING.items()}
-_WRAP: Final = 65_536
+WRAP: Final = 65_536
 
 Report = Callable[[int, str, str, str], None]  # offset, text, wanted, got
 
@@ -26,15 +26,6 @@ class Shape:
     flat: tuple[tuple[int, Instruction], ...]
     nests: tuple[tuple[int, ...], ...]
     original: dict[int, Instruction]  # by byte offset, fused ops as they stand
-
-    def turns(self, index: int) -> int:
-        """How often the counted loops around an index run it, at most, for each word or block."""
-        product = 1
-        for start in self.nests[index]:
-            instruction = self.flat[start][1]
-            if instruction.op is Op.LOOP:
-                product *= instruction.args["count"] or _WRAP
-        return product
 
     def each(self, index: int) -> tuple[Op, ...]:
         """The data loops around an index."""

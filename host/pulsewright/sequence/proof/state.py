@@ -23,13 +23,15 @@ DISABLED: Final = 8  # the lines left a pattern in which the chip may drive D
 BIAS: Final = 9  # a weak pull changed
 VCC_MOVED: Final = 10  # VCC at the socket was told to move
 RAIL_MOVED: Final = 11  # the raised rail was told to move
-CLOCKS: Final = 12
+ACT: Final = 12  # the last pulse, bus write or poll
+CLOCKS: Final = 13
+AGE: Final = CLOCKS  # no lower bound but an upper one, negative: since the last strobe began, inside a load
 
 LONG_AGO: Final = 1 << 40
 FRESH: Final = -1
 
 Clocks = tuple[int, ...]
-START: Final[Clocks] = (LONG_AGO,) * CLOCKS
+START: Final[Clocks] = (*(LONG_AGO,) * CLOCKS, 0)
 
 # Levels of a line: low, high, released; a bit of the word in hand, of an earlier word; known to be set, not to what;
 # never set since the board's reset.
@@ -42,6 +44,13 @@ EITHER: Final = "U"
 UNSET: Final = "?"
 
 NOT_LOOKED: Final = -1
+NO_PULSE: Final = -1
+STROBE: Final = -2
+
+# What a chip may be busy with.
+IDLE: Final = 0
+WRITING: Final = 1  # a bus write of a method
+ANSWERING: Final = 2  # a command of the identification
 
 
 def elapsed(clocks: Clocks, which: int) -> int:
@@ -54,6 +63,7 @@ def edge(clocks: Clocks, *which: int, width: int = 0) -> Clocks:
     """Clocks after an edge of the given kinds, `width` ticks after the op began."""
     passed = clocks[SINCE] + width
     aged = [width if gap == FRESH else min(gap + passed, LONG_AGO) for gap in clocks]
+    aged[AGE] = clocks[AGE]
     aged[SINCE] = 0
     for kind in which:
         aged[kind] = 0
@@ -70,24 +80,28 @@ def started(clocks: Clocks, which: int) -> Clocks:
     return (*clocks[:which], FRESH, *clocks[which + 1 :])
 
 
+def aged(clocks: Clocks, ticks: int, most: int) -> Clocks:
+    """Clocks after at most so many ticks more since the last strobe; past `most` it no longer matters how many."""
+    return (*clocks[:AGE], max(clocks[AGE] - ticks, -most))
+
+
+def strobed(clocks: Clocks, width: int) -> Clocks:
+    """Clocks at the end of a strobe: it began at most its width ago."""
+    return (*clocks[:AGE], -width)
+
+
 def joined(one: Clocks, other: Clocks) -> Clocks:
     """Clocks that hold on both of two paths: the least of each."""
     return one if one == other else tuple(map(min, one, other))
 
 
 class Flag(NamedTuple):
-    """What the flag says: set means `fact` holds (a seating bit) or a write is right; `value` if the path knows it."""
+    """What the flag says: set means `fact` holds (a seating bit), or the answer to a look or poll of the steps."""
 
     fact: int = 0
-    verifies: int = -1  # index of the pulse whose result was compared
-    value: bool | None = None
-
-
-class Written(NamedTuple):
-    """The last pulse that has not yet been read back as right: its index, and whether a compare has followed it."""
-
-    pulse: int = -1
-    compared: bool = False
+    kind: str = ""  # LOOK or POLL; "": it answers nothing
+    n: int = 0
+    value: bool | None = None  # if the path knows it
 
 
 class State(NamedTuple):
@@ -113,6 +127,11 @@ class State(NamedTuple):
     sample: str = ""
     kept: str = ""
     flag: Flag = Flag()
-    written: Written = Written()
-    done: int = -1  # the pulse whose result, for the word in hand or the chip, is known to be right
+    read: tuple[str, ...] = ()  # modes in which the sample register was read, its access times kept
+    last: int = NO_PULSE  # the last pulse by its number, or STROBE
+    pos: frozenset[int] = frozenset()  # where in the definition's steps the program stands
+    due: int = 0  # ticks that the steps want between the last pulse, write or poll and what comes next
+    busy: int = IDLE  # why the chip may be at work by itself since PULSE
+    lock: int = 0  # words of the permanent lock that were written last
     register: str = UNSET  # the address register: EITHER known to us, WORD, or never loaded
+    hand: bool = False  # a word is in hand

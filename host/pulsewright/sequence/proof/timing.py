@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Final
 
-from pulsewright.chip.model import Definition
+from pulsewright.chip.model import Definition, WaitStep
+from pulsewright.chip.steps import steps_of
 from pulsewright.rig.model import Rig
 from pulsewright.sequence.proof.algorithm import Pulse
 from pulsewright.sequence.proof.modes import Row
-from pulsewright.sequence.proof.state import State
+from pulsewright.sequence.proof.state import NO_PULSE, State
 from pulsewright.units import Rounding, ticks
 
 
@@ -26,6 +28,7 @@ def at_most(ps: int) -> int:
 # A weak pull needs this long to move a position: two time constants of 100 kohm on 200 pF of cable, socket and chip.
 # Shorter, and an empty socket still holds what the pull before left there, as a chip would.
 BIAS_SETTLE_PS: Final = 40_000_000
+_LEEWAY_PS: Final = 1_000_000_000  # 1 ms, where everything stated is short
 
 
 @dataclass(frozen=True)
@@ -34,6 +37,7 @@ class Timing:
 
     definition: Definition
     rig: Rig
+    pulses: Sequence[Pulse] = ()
 
     def least(self, *names: str) -> int:
         """The longest minimum among the named parameters."""
@@ -44,6 +48,17 @@ class Timing:
         """The longest maximum among the named parameters."""
         found = [self.definition.timing[name].max_ps or 0 for name in names if name in self.definition.timing]
         return max(found, default=0)
+
+    def busy_ps(self) -> int | None:
+        """Longest time the chip may work by itself after a bus write, its load gap included; None: not stated."""
+        write = self.definition.write
+        if write is None or not write.busy or not self.most(write.busy):
+            return None
+        return self.most(write.busy) + self.gap_ps()
+
+    def gap_ps(self) -> int:
+        """Longest time between two loads of a page; 0: the definition states none."""
+        return self.most(self.definition.write.gap) if self.definition.write is not None else 0
 
     def line_ps(self, state: State) -> int:
         """How long an edge of a line may take, either way."""
@@ -80,11 +95,20 @@ class Timing:
         """From raised switches opened to their levels gone."""
         return at_least(self.fall_ps(mask))
 
-    def hold_ticks(self, kind: str, pulse: Pulse | None, state: State) -> int:
-        """From the end of a pulse to the next edge of a kind: address, data, raised, control or vcc."""
+    def hold_ticks(self, kind: str, last: int, state: State) -> int:
+        """From the end of a pulse or strobe to the next edge of a kind: address, data, control, raised or vcc."""
         names = {
-            "address": ("tAH",), "data": ("tDH",), "raised": ("tVH",), "control": (),
+            "address": ("tAH",), "data": ("tDH",), "raised": ("tVH",), "control": ("tOEH", "tCH"),
             "vcc": ("tAH", "tDH", "tVH"),
         }[kind]  # fmt: skip
-        after = 0 if pulse is None else pulse.after_ps
-        return at_least(max(self.least(*names), after) + self.line_ps(state))
+        after = self.pulses[last].after_ps if last >= 0 else 0
+        return at_least(max(self.least(*names), after) + self.line_ps(state)) if last != NO_PULSE else 0
+
+    @property
+    def longest_ticks(self) -> int:
+        """What no single wait of a program has a reason to exceed: twice the longest time anybody states."""
+        windows = [time for one in self.definition.timing.values() for time in (one.min_ps, one.typ_ps, one.max_ps)]
+        steps = [one.ps for one in steps_of(self.definition) if isinstance(one, WaitStep)]
+        rig = [self.rig.vcc.settle_ps, self.rig.raised.settle_ps, self.rig.fall_limit_ps, self.rig.off_limit_ps]
+        settle = [one.settle_ps for one in self.definition.supplies.values()]
+        return at_least(2 * max(*(time or 0 for time in windows), *steps, *settle, *rig, 0) + _LEEWAY_PS)
