@@ -75,6 +75,7 @@ class Look:
     value: str | int
     mask: int
     wait_ps: int  # waits between the event before and the read-back
+    before_ps: int = 0  # waits between the mode before and the mode it is made in
     whole: bool = False
 
     def __str__(self) -> str:

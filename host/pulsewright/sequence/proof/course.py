@@ -99,6 +99,7 @@ class _Reader:
         self.mode = ""
         self.data: str | int | None = None
         self.before_ps = 0  # since the mode was entered
+        self.between_ps = 0  # waits in the mode before
         self.last = -1  # pulse since which only waits came
         self.block = False
         self.each = ""
@@ -158,7 +159,7 @@ class _Reader:
 
     def _enter(self, mode: str, data: str | int | None) -> None:
         self.mode, self.data = mode, data
-        self.before_ps, self.last = 0, -1
+        self.between_ps, self.before_ps, self.last = self.before_ps, 0, -1
 
     def _wait(self, step: WaitStep) -> None:
         self.wait_ps += step.ps
@@ -185,7 +186,7 @@ class _Reader:
         return len(self.course.looks) - 1
 
     def _expect(self, step: ExpectStep, *, in_turn: bool) -> None:
-        number = self._new_look(Look(self.mode, step.value, step.mask, self.wait_ps))
+        number = self._new_look(Look(self.mode, step.value, step.mask, self.wait_ps, self.between_ps))
         if in_turn and not step.else_:
             if self.look >= 0:
                 self.nowhere()  # two looks that end a turn

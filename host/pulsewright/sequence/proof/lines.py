@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from pulsewright.sequence.proof.algorithm import IDENTIFY
+from pulsewright.sequence.proof.algorithm import A_LOOK, IDENTIFY
 from pulsewright.sequence.proof.modes import lines_fit
 from pulsewright.sequence.proof.state import (
     ADDRESS,
@@ -76,6 +76,11 @@ def _moved(t: Tables, state: State, clocks: Clocks, levels: tuple[str, ...], kin
         recovery = t.timing.recovery_ticks(state.opened)
         t.need(elapsed(clocks, OFF) >= recovery, "H7", "outputs are enabled too soon after a raised level",
                f"{recovery} ticks", elapsed(clocks, OFF))  # fmt: skip
+        least = at_least(t.timing.least("tOES") if state.last >= 0 else 0)
+        looks = [t.course.looks[arrow.event.n] for arrow in t.course.next(state.pos) if arrow.event.kind == A_LOOK]
+        least = max([least, *(at_least(look.before_ps) for look in looks)])
+        t.need(elapsed(clocks, DATA) >= least, "H7", "outputs are enabled too soon after D was let go",
+               f"{least} ticks", elapsed(clocks, DATA))  # fmt: skip
     if was and not now:
         kinds.append(DISABLED)
     return state._replace(levels=levels), edge(clocks, *kinds)

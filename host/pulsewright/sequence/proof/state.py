@@ -8,6 +8,7 @@ ticks, until the next edge: a wait may already have been over when it started.
 
 from __future__ import annotations
 
+from operator import le
 from typing import Final, NamedTuple
 
 # Clocks. SINCE is the time since the last edge; the others are gaps to it.
@@ -88,6 +89,11 @@ def aged(clocks: Clocks, ticks: int, most: int) -> Clocks:
 def strobed(clocks: Clocks, width: int) -> Clocks:
     """Clocks at the end of a strobe: it began at most its width ago."""
     return (*clocks[:AGE], -width)
+
+
+def covers(one: Clocks, other: Clocks) -> bool:
+    """Whether what holds by one holds by the other too: none of its times is longer."""
+    return all(map(le, one, other))
 
 
 def joined(one: Clocks, other: Clocks) -> Clocks:

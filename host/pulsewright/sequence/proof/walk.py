@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
+from functools import reduce
 from typing import Final
 
 from pulsewright.sequence.proof import bus, lines, looks, power, raised, work
@@ -18,6 +19,7 @@ from pulsewright.sequence.proof.state import (
     Flag,
     State,
     aged,
+    covers,
     joined,
     waited,
 )
@@ -27,6 +29,7 @@ from pulsewright.wire.ops import Instruction
 from pulsewright.wire.tables import BLOCK_BYTES, Flow, Op, Range
 
 MOST_STATES: Final = 4_000  # far above what any real program has; past it the proof refuses
+_MOST_CLOCKS: Final = 4  # of one state at one op; more are taken together as the least of each
 
 Result = tuple[State, Clocks]
 Step = tuple[int, State, Clocks]
@@ -81,14 +84,14 @@ _FUSED: Final = {Op.SCAN, Op.READ_RUN}  # their loops are no steps of a method
 
 
 class Walk:
-    """One walk; `seen[index]` holds every discrete state that reaches an op, with the least clocks of all paths."""
+    """One walk; `seen[index]` holds every discrete state that reaches an op, with the least clocks of its paths."""
 
     def __init__(self, tables: Tables, shape: Shape) -> None:
         self.t = tables
         self.shape = shape
-        self.seen: list[dict[State, Clocks]] = [{} for _ in shape.flat]
+        self.seen: list[dict[State, list[Clocks]]] = [{} for _ in shape.flat]
         self.count = 0
-        self.todo: list[tuple[int, State]] = []
+        self.todo: list[tuple[int, State, Clocks]] = []
 
     def run(self) -> None:
         """Follows every path until nothing new is found."""
@@ -100,10 +103,10 @@ class Walk:
         rest = State(levels, data=0, pos=frozenset({self.t.course.start}))  # every line is low, D too
         self._reach(0, rest, START)
         while self.todo and self.count <= MOST_STATES:
-            index, state = self.todo.pop()
+            index, state, clocks = self.todo.pop()
             offset, instruction = self.shape.flat[index]
             self.t.offset, self.t.index = offset, index
-            self._judge(index, instruction, state, self.seen[index][state])
+            self._judge(index, instruction, state, clocks)
         self.t.offset = 0
         self.t.need(self.count <= MOST_STATES, "H5", "too many states to follow", MOST_STATES, self.count)
         for (offset, instruction), states in zip(self.shape.flat, self.seen, strict=True):
@@ -116,11 +119,18 @@ class Walk:
             return
         states = self.seen[index]
         old = states.get(state)
-        new = clocks if old is None else joined(old, clocks)
-        if new != old:
-            self.count += old is None
-            states[state] = new
-            self.todo.append((index, state))
+        if old is None:
+            self.count += 1
+            states[state] = [clocks]
+        elif any(covers(one, clocks) for one in old):
+            return
+        else:
+            kept = [*(one for one in old if not covers(clocks, one)), clocks]
+            if len(kept) > _MOST_CLOCKS:
+                clocks = reduce(joined, kept)
+                kept = [clocks]
+            states[state] = kept
+        self.todo.append((index, state, clocks))
 
     def _judge(self, index: int, ins: Instruction, state: State, clocks: Clocks) -> None:
         self._allowed(ins, state)
