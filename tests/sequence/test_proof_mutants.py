@@ -1,0 +1,73 @@
+"""Each single op of burns of other parts deleted, doubled or swapped: refused by the proof, or clean to the judge.
+
+As test_mutants.py has it for the 27e512: VPP that stands over many words, a blind first pass, a pulse upwards.
+"""
+
+from __future__ import annotations
+
+import zlib
+from dataclasses import replace
+from pathlib import Path
+
+import pytest
+
+from pulsewright.errors import PulsewrightError
+from pulsewright.link.inprocess import InProcess
+from pulsewright.link.results import Block, RunResult
+from pulsewright.link.session import Session
+from pulsewright.sequence import compile as compiler
+from pulsewright.sequence.proof import prove
+from pulsewright.sequence.types import Sequence
+from pulsewright.virtual.bench import Bench
+from pulsewright.wire.tables import Outcome
+from tests.sequence.mutate import mutants
+from tests.sequence.proof_bends import RIG, part_of
+
+DATA = bytes([0x00, 0xFF, 0x55, 0xA1])
+MODELS = Path(__file__).parents[1] / "models"
+PARTS = [("27c256", "ST", ""), ("27c256", "Atmel", ""), ("27c64", "AMD", "m27c64.py"), ("2716", "", "m2716.py")]
+
+
+def seated(folder: Path, name: str, maker: str, model: str) -> Bench:
+    """A blank chip of this kind, the jumper set."""
+    path = folder / "tower.bench"
+    path.unlink(missing_ok=True)
+    if not model:
+        return Bench.new(path, name, maker=maker.lower(), jumper=True)
+    return Bench.new(path, name, model=MODELS / model, jumper=True)
+
+
+def run(bench: Bench, sequence: Sequence) -> RunResult | None:
+    """A burn of a few words; None where the rig refused it."""
+    session = Session(InProcess(bench.rig(1)))
+    try:
+        session.connect()
+        return session.run(sequence, [Block(0, len(DATA), None, DATA)])
+    except PulsewrightError:
+        return None
+
+
+@pytest.mark.parametrize(("name", "maker", "model"), PARTS, ids=["separate VPP", "blind pass", "PGM", "pulse up"])
+def test_no_mutant_of_a_burn_is_accepted_and_dirty(tmp_path: Path, name: str, maker: str, model: str) -> None:
+    """The burn is accepted, clean and right; no mutant is accepted that a data sheet forbids, or that burns wrong."""
+    part = part_of(name, maker)
+    sequence = compiler.compile_burn(part, RIG, 0, len(DATA) - 1, "")
+    assert prove(sequence.code, sequence.permit, part, RIG).findings == ()
+    bench = seated(tmp_path, name, maker, model)
+    result = run(bench, sequence)
+    assert result is not None
+    assert (result.outcome, bytes(bench.chip.cells[: len(DATA)])) == (Outcome.DONE, DATA)
+    assert bench.report()["violations"] == []
+    refused, bad = 0, []
+    for mutant in mutants(sequence.code):
+        permit = replace(sequence.permit, crc32=zlib.crc32(mutant.code))
+        if not prove(mutant.code, permit, part, RIG).accepted:
+            refused += 1
+            continue
+        bench = seated(tmp_path, name, maker, model)
+        result = run(bench, replace(sequence, code=mutant.code, permit=permit))
+        wrong = result is not None and result.outcome is Outcome.DONE and bytes(bench.chip.cells[: len(DATA)]) != DATA
+        if bench.report()["violation_count"] or wrong:
+            bad.append(str(mutant))
+    assert refused > 100
+    assert bad == []
