@@ -53,11 +53,14 @@ def test_faults_mean_what_they_say() -> None:
     faults = parse_faults(
         ["reversed", "wrong-id=C2,7", "stuck=0x1F0,0x81,1", "stuck=5,255,0", "slow=20,3", "rail-sag=20"]
     )
+    more = parse_faults(["dead=0x40", "dead=7", "protected"]).chip
     assert faults.seat == "reversed"
     assert faults.chip.wrong_id == (0xC2, 7)
     assert faults.chip.stuck == ((0x1F0, 0x81, 1), (5, 255, 0))
     assert (faults.chip.slow_percent, faults.chip.slow_pulses) == (20, 3)
     assert faults.raised_limit_ua == 20_000
+    assert (more.dead, more.protected) == ((0x40, 7), True)
+    assert not faults.chip.protected
 
 
 @pytest.mark.parametrize(
@@ -107,7 +110,14 @@ def test_a_chip_sits_in_one_way_only() -> None:
 
 def test_every_fault_has_a_sentence_and_is_known() -> None:
     """The table that the help prints and what is understood are the same list."""
-    arguments = {"HEX,HEX": "=1,2", "ADDR,MASK,BITS": "=1,3,2", "PERCENT,PULSES": "=1,2", "MA": "=1", "": ""}
+    arguments = {
+        "HEX,HEX": "=1,2",
+        "ADDR,MASK,BITS": "=1,3,2",
+        "PERCENT,PULSES": "=1,2",
+        "MA": "=1",
+        "ADDR": "=1",
+        "": "",
+    }
     for name, (form, about) in FAULTS.items():
         assert parse_faults([name + arguments[form]]).texts
         assert about
@@ -126,6 +136,26 @@ def test_a_stuck_address_outside_the_chip_is_refused() -> None:
     """The chip has no such word."""
     with pytest.raises(UsageMistake, match="outside"):
         Bench.fresh("27e512", "blank", faults=["stuck=0x10000,1,1"])
+    with pytest.raises(UsageMistake, match="outside"):
+        Bench.fresh("27e512", "blank", faults=["dead=0x10000"])
+
+
+def test_a_dead_cell_never_changes() -> None:
+    """Neither a program pulse nor an erase moves it, while its neighbour follows both."""
+    bench = Bench.fresh("27e512", b"\x5a\xff", faults=["dead=0", "dead=1"])
+    bus = Bus(chip=bench.chip)
+    bus.up()
+    for at in range(3):
+        bus.program(at, 0x00)
+    assert [bus.read(at, access=US) for at in range(3)] == [0x5A, 0xFF, 0x00]
+    bus.erase()
+    assert [bus.read(at, access=US) for at in range(3)] == [0x5A, 0xFF, 0xFF]
+
+
+def test_protection_is_no_fault_of_a_part_without() -> None:
+    """An EPROM has no software protection that could be on."""
+    with pytest.raises(UsageMistake, match="no software protection"):
+        Bench.fresh("27e512", "blank", faults=["protected"])
 
 
 def test_a_model_that_cannot_be_faulty_says_so(tmp_path: Path) -> None:

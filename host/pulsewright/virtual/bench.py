@@ -122,8 +122,8 @@ class Bench:
         self.boots = self.boots + 1 if boot is None else boot
         limits = self.chip.limits
         seat = self.faults.seat
-        judge = self.judge = Judge(limits, misplaced=bool(seat))
         chip = EmptySeat(self.chip) if seat == "absent" else self.chip
+        judge = self.judge = Judge(limits, misplaced=bool(seat), busy=getattr(chip, "is_busy", None))
         board = Board(button=self.jumper)
         if self.faults.raised_limit_ua is not None:
             board = replace(board, raised_limit_ua=self.faults.raised_limit_ua)
@@ -208,9 +208,9 @@ class Bench:
         if not names:
             return
         words = len(self.chip.cells) * 8 // len(self.chip.outputs)
-        for at, _mask, _bits in faults.stuck:
+        for what, at in (*(("stuck", at) for at, _, _ in faults.stuck), *(("dead", at) for at in faults.dead)):
             if at >= words:
-                raise UsageMistake("a stuck address outside the chip", wanted=f"0..{words - 1:#x}", got=f"{at:#x}")
+                raise UsageMistake(f"a {what} address outside the chip", wanted=f"0..{words - 1:#x}", got=f"{at:#x}")
         take = getattr(self.chip, "take_faults", None)
         if take is None:
             raise UsageMistake(f"the model of {self.chip_name} cannot have the fault {names[0]}")

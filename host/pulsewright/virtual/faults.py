@@ -1,7 +1,7 @@
 """Faults a bench can be given: what each does, how it is written, and its parsed form.
 
 Three kinds: how the chip sits in the socket (absent, reversed, shifted), what is wrong with the chip itself (wrong-id,
-slow, stuck), and what is wrong with the rig around it (rail-sag).
+slow, stuck, dead, protected), and what is wrong with the rig around it (rail-sag).
 """
 
 from __future__ import annotations
@@ -19,7 +19,9 @@ FAULTS: dict[str, tuple[str, str]] = {
     "shifted": ("", "the chip one row of contacts too far from the bottom of the socket"),
     "wrong-id": ("HEX,HEX", "the chip answers these ID bytes: manufacturer, device"),
     "stuck": ("ADDR,MASK,BITS", "at that address the bits under MASK always read BITS and never change"),
-    "slow": ("PERCENT,PULSES", "so many of the cells need so many pulses to program and to erase"),
+    "slow": ("PERCENT,PULSES", "so many of the cells (or pages) need so many pulses (or write cycles' time)"),
+    "dead": ("ADDR", "the word at that address never takes a new value"),
+    "protected": ("", "software protection is on at the start"),
     "rail-sag": ("MA", "the raised rail gives no more than so many milliamperes and sags above"),
 }
 SEATS = ("absent", "reversed", "shifted")
@@ -36,6 +38,8 @@ class ChipFaults:
     # (word address, mask, crossover VCC in mV, slow one): a fading 0 reads 1 above that VCC; with "slow one" true an
     # under-erased 1 reads 0 below it
     weak: tuple[tuple[int, int, int, bool], ...] = ()
+    dead: tuple[int, ...] = ()  # word addresses
+    protected: bool = False
 
     def names(self) -> list[str]:
         """The faults that are set, by their names on the command line."""
@@ -44,6 +48,8 @@ class ChipFaults:
             "stuck": bool(self.stuck),
             "slow": self.slow_percent > 0,
             "weak": bool(self.weak),
+            "dead": bool(self.dead),
+            "protected": self.protected,
         }
         return [name for name, present in is_set.items() if present]
 
@@ -65,6 +71,8 @@ def parse_faults(texts: Iterable[str]) -> Faults:
     wrong_id: tuple[int, int] | None = None
     stuck: list[tuple[int, int, int]] = []
     slow = (0, 1)
+    dead: list[int] = []
+    protected = False
     limit_ua: int | None = None
     for text in given:
         name, numbers = _parse_one(text)
@@ -79,9 +87,14 @@ def parse_faults(texts: Iterable[str]) -> Faults:
             stuck.append((numbers[0], numbers[1], numbers[2]))
         elif name == "slow":
             slow = (numbers[0], numbers[1])
+        elif name == "dead":
+            dead.append(numbers[0])
+        elif name == "protected":
+            protected = True
         else:
             limit_ua = numbers[0] * 1000
-    return Faults(given, seat, ChipFaults(wrong_id, tuple(stuck), *slow), limit_ua)
+    chip = ChipFaults(wrong_id, tuple(stuck), *slow, dead=tuple(dead), protected=protected)
+    return Faults(given, seat, chip, limit_ua)
 
 
 def _parse_one(text: str) -> tuple[str, tuple[int, ...]]:

@@ -50,6 +50,33 @@ class RaisedLimit:
 
 
 @dataclass(frozen=True)
+class BusLimit:
+    """Writes as bus cycles at logic levels: CE and WE low while OE is high.
+
+    The later fall of CE and WE ("the fall") takes the address, the earlier rise ("the rise") the data. Times are ticks;
+    0 is a time that the sheet does not give.
+    """
+
+    ce: int
+    oe: int
+    we: int
+    width_ticks: tuple[int, int]  # fall to rise: least, most
+    setup_ticks: Mapping[str, int]  # "address", "oe" (high) before the fall, "data" before the rise
+    hold_ticks: Mapping[str, int]  # "address" after the fall, "data", "oe" (high) after the rise
+    high_ticks: int = 0  # rise to the next fall, least
+    valid_ticks: int = 0  # fall to data valid, most
+    load_ticks: tuple[int, int] = (0, 0)  # between the loads of one page: rise to fall at least, fall to fall at most
+    busy_ticks: int = 0  # rise of a page's last load to the end of its write cycle, most
+    ready_ticks: int = 0  # a poll that says done to the next fall, least
+    # lists of (address, word) after whose last write `command_ticks` pass before the next fall
+    commands: tuple[tuple[tuple[int, int], ...], ...] = ()
+    command_ticks: int = 0
+    power_up_ticks: int = 0  # VCC in its window to the first fall, least
+    power_up_read_ticks: int = 0  # VCC in its window to the first read, least
+    source: str = ""
+
+
+@dataclass(frozen=True)
 class Limits:
     """What the waveform judge watches for one part; typed by hand from a data sheet, never from a definition."""
 
@@ -76,6 +103,7 @@ class Limits:
     # pin -> (so far below VCC, so far above it) at most while D is read and nothing is raised there (VPP = VCC)
     rest_mv: Mapping[int, tuple[int, int]] = field(default_factory=dict)
     vcc_most_mv: int = 0  # the highest operating VCC of any mode; 0: only its absolute maximum counts
+    bus: BusLimit | None = None  # a part that is written on the bus
     source: str = ""
 
 

@@ -7,10 +7,11 @@ end. Times are ticks of 62.5 ns, levels millivolts.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 
 from pulsewright.units import TICKS_PER_US, show_mv, show_ticks
 from pulsewright.virtual.interface import Levels, Limits, PinHistory, RaisedLimit, Violation
+from pulsewright.virtual.judge_bus import BusWatch
 from pulsewright.virtual.judge_pulse import LONG_AGO, VIL_MV, PulseWatch
 from pulsewright.virtual.judge_raised import RaisedTable, spans, within
 
@@ -34,10 +35,11 @@ class Judge:
     """Watches one chip. `violations` keeps the first of them, `count` counts all, `pins` what each pin has seen.
 
     With `misplaced`, for a chip that sits turned or shifted, only maxima and lowest levels are judged: the pins do not
-    get what the rig means for them, and the seating check is there to find that.
+    get what the rig means for them, and the seating check is there to find that. `busy(t)` tells of a part that is
+    written on the bus whether a write cycle runs in it, which no pin tells in time.
     """
 
-    def __init__(self, limits: Limits, *, misplaced: bool = False) -> None:
+    def __init__(self, limits: Limits, *, misplaced: bool = False, busy: Callable[[int], bool] | None = None) -> None:
         self.limits = limits
         self.violations: list[Violation] = []
         self.count = 0
@@ -54,6 +56,9 @@ class Judge:
         for pin in limits.data_pins:
             self._kind_of[pin] = _DATA
         self._watch = PulseWatch(limits, self._report)
+        self._bus = (
+            None if misplaced or limits.bus is None else BusWatch(limits, limits.bus, self._watch, self._report, busy)
+        )
         pulsed = (pulse.pin for pulse in limits.pulses)
         self._controls = self._watch.controls
         for pin in (*limits.enable_pins, *limits.raised_pins, limits.vcc_pin, *pulsed, *self._controls):
@@ -78,10 +83,9 @@ class Judge:
         self._raised_t: dict[int, int] = dict.fromkeys(limits.raised_pins, LONG_AGO)
         self._gone_t = LONG_AGO  # when the last raised level of all went
         self._recover_t = LONG_AGO  # when the last raised level went from an enable pin
-        self._enabled = False
+        self._enabled = self._active = False  # all enable pins low, and the first
         self._off_t = LONG_AGO  # when the outputs were last switched off
         self._active_t = LONG_AGO  # when the first enable pin last went low
-        self._active = False
         self._valid_t = LONG_AGO  # when D is valid
         self._verifying = False
         if not misplaced:
@@ -130,6 +134,8 @@ class Judge:
             self._control(t, levels, changed)
         if t > watch.due:
             watch.overdue(t)
+        if self._bus is not None:
+            self._bus.edges(t, levels, changed)
         if driven and not (self._enabled or self._misplaced) and t >= self._off_t + self.limits.float_ticks:
             self._fight(t, f"both drove {len(driven)} pins with the outputs off")
 
@@ -147,9 +153,10 @@ class Judge:
         elif t < self._off_t + self.limits.float_ticks:
             wanted = f"at least {show_ticks(self.limits.float_ticks)} after the outputs went off"
             self._report("float time", self.limits.data_pins[0], t, wanted, show_ticks(t - self._off_t))
-
         if t > self._watch.due:
             self._watch.overdue(t)
+        if self._bus is not None:
+            self._bus.sampled(t)
 
     def _raised_read(self, t: int) -> None:
         """D is read with something raised: as the identify mode has it, or as some row has it?"""

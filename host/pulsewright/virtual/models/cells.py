@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from typing import Any
 
+from pulsewright.errors import UsageMistake
 from pulsewright.virtual.faults import ChipFaults
 from pulsewright.virtual.interface import Limits
 
@@ -21,6 +22,8 @@ class CellChip:
     `pulse_ticks` is what a good cell needs; a slow one needs it `slow_pulses` times, shorter pulses with the same data
     add up (invented).
     """
+
+    protects = False  # whether the part has a software protection
 
     def __init__(self, name: str, limits: Limits, size: int, own_id: tuple[int, int], pulse_ticks: int) -> None:
         self.name = name
@@ -36,13 +39,19 @@ class CellChip:
         self._pulse_ticks = pulse_ticks
         self._stuck: dict[int, tuple[int, int]] = {}  # address -> mask, bits
         self._weak: dict[int, list[Weak]] = {}
+        self._dead: frozenset[int] = frozenset()  # cells that never change
         self._slow_percent = 0
         self._slow_pulses = 1
         self._begun: dict[int, tuple[int, int]] = {}  # address -> ticks at the program level so far, with which data
         self._harmless: set[int | None] = {None}  # levels that no pin minds
 
     def take_faults(self, faults: ChipFaults) -> None:
-        """Makes this a faulty chip: another ID, cells that are stuck, slow or weak."""
+        """Makes this a faulty chip: another ID, cells that are stuck, slow, weak or dead; protected at the start.
+
+        UsageMistake for protection that the part does not have.
+        """
+        if faults.protected and not self.protects:
+            raise UsageMistake(f"a {self.name} has no software protection", got="--fault protected")
         if faults.wrong_id is not None:
             self._id = (faults.wrong_id[0] & 0xFF, faults.wrong_id[1] & 0xFF)
         size = len(self.cells)
@@ -50,6 +59,7 @@ class CellChip:
         self._weak = {}
         for at, mask, mv, slow_one in faults.weak:
             self._weak.setdefault(at % size, []).append((mask & 0xFF, mv, slow_one))
+        self._dead = frozenset(at % size for at in faults.dead)
         self._slow_percent, self._slow_pulses = faults.slow_percent, faults.slow_pulses
         self._keep_stuck()
 
@@ -87,6 +97,8 @@ class CellChip:
     def _pulsed(self, at: int, data: int, width: int) -> None:
         """A program pulse of `width` ticks with `data` at D: bits that are 0 in it become 0, given time enough."""
         self.program_pulses += 1
+        if at in self._dead:
+            return
         needed = self._pulse_ticks
         slow = self._is_slow(at)
         if width >= needed and not slow:
@@ -106,12 +118,15 @@ class CellChip:
         """Every cell erased; with `slow_too` false, those that the fault "slow" struck keep what they hold."""
         self._begun.clear()
         cells = self.cells
+        dead = {at: cells[at] for at in self._dead}
         if slow_too or self._slow_percent == 0:
             cells[:] = b"\xff" * len(cells)
         else:
             for at in range(len(cells)):
                 if not self._is_slow(at):
                     cells[at] = 0xFF
+        for at, word in dead.items():
+            cells[at] = word
         self._keep_stuck()
 
     def _is_slow(self, address: int) -> bool:
