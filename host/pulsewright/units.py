@@ -100,7 +100,7 @@ def show_ps(ps: int) -> str:
     for unit, scale in (("s", 10**12), ("ms", 10**9), ("us", 10**6), ("ns", 10**3)):
         if ps >= scale:
             return f"{_plain(Decimal(ps) / scale)} {unit}"
-    return f"{ps} ps"
+    return f"{ps} ps" if ps else "0 ns"
 
 
 def show_ticks(count: int) -> str:

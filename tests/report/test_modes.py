@@ -50,9 +50,30 @@ def test_the_program_algorithm_says_when_a_word_is_done() -> None:
     assert lines[0] == "1  for each word to be written:"
     assert lines[1] == "1.1  at most 25 times, until it reads back:"
     assert lines[2] == "1.1.1  mode program (VCC 5.0 V, OE at 12.0 V), D = the image's word"
-    assert "1.1.8  read D; done with this word when it is the image's word" in lines
+    assert "1.1.8  read D; done when it is the image's word" in lines
 
 
 def test_a_table_keeps_columns_under_their_heads() -> None:
     """Columns are as wide as their widest cell; lines end bare."""
     assert table(["a", "long"], [["wide", "x"], ["y", ""]]) == ["a     long", "----  ----", "wide  x", "y"]
+
+
+def test_the_algorithm_of_a_part_written_on_the_bus_is_told_cycle_by_cycle() -> None:
+    """Loads, polls, cycles with their addresses, what must read back, and what comes in any case."""
+    definition = load("28c256")
+    assert definition.protected is not None
+    text = "\n".join(algorithm(definition, definition.protected))
+    assert "write AA at 5555, 55 at 2AAA, A0 at 5555 (protect_on)" in text
+    assert "load the words of the page, from one to the next (tBLC: at least 1 us, at most 100 us)" in text
+    assert "poll DQ7 in mode read until the part is done, within (tWC: at most 10 ms)" in text
+    assert "read D; it must be the image's word" in text
+    assert text.index("at the end, whatever happened:") < text.rindex("protect_on")
+
+
+def test_a_look_that_decides_shows_both_ways() -> None:
+    """A word that already reads right is left; else it gets its further pulses, numbered below the look."""
+    definition = load("27c256", maker="Atmel")
+    assert definition.program is not None
+    lines = algorithm(definition, definition.program)
+    at = next(index for index, line in enumerate(lines) if "where it is not the image's word" in line)
+    assert "at most 10 times" in lines[at + 1]

@@ -8,7 +8,7 @@ from typing import TYPE_CHECKING
 from pulsewright.cli.desk import HIGH_VOLTAGE, Desk, Parser, add
 
 if TYPE_CHECKING:
-    from pulsewright.chip.model import Definition
+    from pulsewright.chip.model import Definition, Method
 
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
@@ -64,9 +64,10 @@ def _chip(args: argparse.Namespace, desk: Desk) -> int:
         *timing_table(definition),
     ]
     lines += ["", *_identity(definition)]
-    for name, method in (("program", definition.program), ("erase", definition.erase)):
-        if method is not None:
-            lines += ["", f"{name}, by {method.unit}, bits {method.bits}", *algorithm(definition, method)]
+    for name, method in _methods(definition):
+        lines += ["", f"{name}, by {method.unit}, bits {method.bits}", *algorithm(definition, method)]
+    if definition.notes:
+        lines += ["", *(f"note: {note}" for note in definition.notes)]
     marked = memory_marked(definition)
     if marked:
         lines += [
@@ -77,12 +78,36 @@ def _chip(args: argparse.Namespace, desk: Desk) -> int:
     return desk.answer(lines, _facts(definition, marked))
 
 
+def _methods(definition: Definition) -> list[tuple[str, Method]]:
+    """The part's methods by name, those of software protection included."""
+    from pulsewright.chip.model import Method
+
+    protect = definition.protect
+    switched = [Method("both", "chip", steps) for steps in (protect.on, protect.off)] if protect is not None else []
+    named = [
+        ("program", definition.program),
+        ("program while protected", definition.protected),
+        ("erase", definition.erase),
+        *zip(("protection on", "protection off"), switched, strict=False),
+    ]
+    return [(name, method) for name, method in named if method is not None]
+
+
 def _identity(definition: Definition) -> list[str]:
+    from pulsewright.chip.load import maker_needed
     from pulsewright.jobs.translate import wanted_ids
+    from pulsewright.report.algorithm import cycles_text
 
     if definition.identify == "none":
-        return ["no electronic ID: only the print on the chip says what it is"]
-    return ["ID", *(f"  {text}" for text in wanted_ids(definition))]
+        lines = ["no electronic ID: only the print on the chip says what it is"]
+        names = [row.maker for row in definition.makers]
+        if definition.row is None and len(names) > 1:
+            word = "must" if maker_needed(definition) else "may"
+            lines.append(f"makers: {', '.join(names)}; --maker {word} name one, else what suits all of them is used")
+        return lines
+    command = definition.identify_command
+    by = f", asked for by {cycles_text(definition, command.enter)}" if command is not None else ""
+    return [f"ID{by}", *(f"  {text}" for text in wanted_ids(definition))]
 
 
 def _facts(definition: Definition, marked: list[str]) -> dict[str, object]:

@@ -5,18 +5,22 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 from pulsewright.chip.model import (
+    Cycle,
     Definition,
     EachStep,
     EveryWord,
     ExpectStep,
+    LoadStep,
     Method,
     ModeStep,
+    PollStep,
     PulseStep,
     RepeatStep,
     Step,
     WaitStep,
+    WriteStep,
 )
-from pulsewright.units import show_mv, show_ps
+from pulsewright.units import show_address, show_mv, show_ps
 
 
 def _word(definition: Definition, value: str | int) -> str:
@@ -52,7 +56,24 @@ def _until(definition: Definition, until: EveryWord) -> str:
     return f"until every word reads {_word(definition, until.is_)} in mode {until.mode} ({vcc})"
 
 
-def _sentence(definition: Definition, step: Step) -> str:
+def cycles_text(definition: Definition, cycles: Sequence[Cycle]) -> str:
+    """Bus write cycles as "AA at 5555, 55 at 2AAA, the image's word at its address"."""
+    return ", ".join(
+        "the image's word at its address"
+        if cycle.at is None or cycle.word is None
+        else f"{_word(definition, cycle.word)} at {show_address(cycle.at, definition.words)}"
+        for cycle in cycles
+    )
+
+
+def _expect(definition: Definition, step: ExpectStep, *, in_turn: bool) -> str:
+    word = _word(definition, step.value)
+    if step.else_:
+        return f"read D; where it is not {word}:"
+    return f"read D; done when it is {word}" if in_turn else f"read D; it must be {word}"
+
+
+def _sentence(definition: Definition, step: Step, *, in_turn: bool) -> str:
     match step:
         case ModeStep(mode=mode, data=data):
             given = f", D = {_word(definition, data)}" if data is not None else ""
@@ -61,8 +82,16 @@ def _sentence(definition: Definition, step: Step) -> str:
             return f"wait at least {show_ps(ps)}" + (f" ({timing})" if timing else "")
         case PulseStep(pin=pin, to=to, timing=timing):
             return f"pulse {pin} to {to} for {_time(definition, timing)}"
-        case ExpectStep(value=value):
-            return f"read D; done with this word when it is {_word(definition, value)}"
+        case ExpectStep():
+            return _expect(definition, step, in_turn=in_turn)
+        case WriteStep(cycles=cycles, command=command):
+            return f"write {cycles_text(definition, cycles)}" + (f" ({command})" if command else "")
+        case LoadStep():
+            gap = definition.write.gap if definition.write is not None else ""
+            pace = f", from one to the next {_time(definition, gap)}" if gap else ""
+            return f"load the words of the page{pace}"
+        case PollStep(bit=bit, mode=mode, timing=timing):
+            return f"poll {bit} in mode {mode} until the part is done, within {_time(definition, timing)}"
         case RepeatStep(max=most, until=until):
             ends = _until(definition, until) if until is not None else "until it reads back"
             return f"at most {most} times, {ends}:"
@@ -71,12 +100,15 @@ def _sentence(definition: Definition, step: Step) -> str:
     raise AssertionError(step)  # the type checker knows that no other step exists
 
 
-def _numbered(definition: Definition, steps: Sequence[Step], number: str, depth: int) -> Iterator[str]:
+def _numbered(
+    definition: Definition, steps: Sequence[Step], number: str, depth: int, *, in_turn: bool = False
+) -> Iterator[str]:
     for index, step in enumerate(steps, 1):
         own = f"{number}{index}"
-        yield f"{'   ' * depth}{own}  {_sentence(definition, step)}"
-        if isinstance(step, RepeatStep | EachStep):
-            yield from _numbered(definition, step.steps, f"{own}.", depth + 1)
+        yield f"{'   ' * depth}{own}  {_sentence(definition, step, in_turn=in_turn)}"
+        inner = step.steps if isinstance(step, RepeatStep | EachStep) else ()
+        inner = step.else_ if isinstance(step, ExpectStep) else inner
+        yield from _numbered(definition, inner, f"{own}.", depth + 1, in_turn=isinstance(step, RepeatStep))
 
 
 def algorithm(definition: Definition, method: Method) -> list[str]:
