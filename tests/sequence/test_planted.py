@@ -9,17 +9,18 @@ from typing import Any
 import pytest
 
 from pulsewright.chip.load import load
-from pulsewright.chip.model import Definition, ExpectStep
+from pulsewright.chip.model import Definition, EachStep, ExpectStep
 from pulsewright.rig.file import load_rig
 from pulsewright.rig.model import Rig
+from pulsewright.sequence import bus, levels, lower, modes, permits, seating
 from pulsewright.sequence import compile as compiler
-from pulsewright.sequence import levels, lower, modes, permits, seating
 from pulsewright.sequence.build import Builder
 from pulsewright.sequence.proof import prove
 from pulsewright.sequence.types import Sequence
 from pulsewright.units import Rounding, ticks
 from pulsewright.wire.permit import Permit
-from pulsewright.wire.tables import Identity, Op, Range
+from pulsewright.wire.tables import Fail, Identity, Op, Range
+from tests.sequence.proof_bends import part_of
 
 Compile = Callable[[Definition, Rig], Sequence]
 
@@ -168,3 +169,96 @@ def test_lines_kept_driven_into_a_low_vcc_are_caught() -> None:
     faulty = compiler.compile_erase(definition, replace(rig, driven_from_mv=0))
 
     assert "H11" in {finding.rule for finding in prove(faulty.code, faulty.permit, definition, rig).findings}
+
+
+# ---- parts that are burnt otherwise ---------------------------------------------------------------------------------
+
+
+def loads_at_once(patch: pytest.MonkeyPatch) -> None:
+    """H7: after a load nothing waits for the load gap to end."""
+
+    def wrong(b: Builder) -> None:
+        b.state.written = False
+
+    patch.setattr(bus, "end_load", wrong)
+
+
+def holds_forgotten(patch: pytest.MonkeyPatch) -> None:
+    """H7: address, data and pause have no time behind a strobe but the rig's edges."""
+    patch.setattr(bus, "_HOLDS", ("tNONE",))
+
+
+def polls_short(patch: pytest.MonkeyPatch) -> None:
+    """H7: a poll gives up at a quarter of the part's longest time."""
+    right = bus._scaled
+
+    def wrong(limit: int) -> tuple[int, int]:
+        return right(limit // 4)
+
+    patch.setattr(bus, "_scaled", wrong)
+
+
+def end_left_out(patch: pytest.MonkeyPatch) -> None:
+    """H5: a failure leaves out the steps that end a method."""
+
+    def wrong(self: lower.Lowering, why: Fail) -> None:
+        self.b.emit(Op.FAIL, why=why)
+
+    patch.setattr(lower.Lowering, "_leave", wrong)
+
+
+def raised_kept(patch: pytest.MonkeyPatch) -> None:
+    """H4: the raised level stays whatever the next mode wants."""
+    patch.setattr(modes, "open_switches", lambda b, keep: None)
+
+
+def standby_taken_for_safe(patch: pytest.MonkeyPatch) -> None:
+    """H5: the safe pattern is standby on every part."""
+    patch.setattr(permits, "_safe_mode", lambda definition, pins, names: definition.modes["standby"])
+
+
+def self_timed_forgotten(patch: pytest.MonkeyPatch) -> None:
+    """H5: the permit knows of no work that the part does by itself."""
+    patch.setattr(compiler, "_busy", lambda b, method: 0)
+
+
+def second_pass_forgotten(patch: pytest.MonkeyPatch) -> None:
+    """H7: of a blind pass and a look at every word only the first is compiled."""
+    right = lower.Lowering.run
+
+    def wrong(self: lower.Lowering, steps: Any) -> None:
+        passes = [step for step in steps if isinstance(step, EachStep)]
+        right(self, tuple(step for step in steps if step not in passes[1:]))
+
+    patch.setattr(lower.Lowering, "run", wrong)
+
+
+OTHER_PARTS = [
+    ("H7", loads_at_once, "28c256", "Xicor"),
+    ("H7", holds_forgotten, "28c256", "Xicor"),
+    ("H7", polls_short, "28c256", "Atmel"),
+    ("H5", self_timed_forgotten, "28c256", "Catalyst"),
+    ("H5", end_left_out, "28c256", "Xicor"),
+    ("H4", raised_kept, "27c256", "ST"),
+    ("H7", second_pass_forgotten, "27c256", "Atmel"),
+    ("H5", standby_taken_for_safe, "2716", ""),
+]
+
+
+@pytest.mark.parametrize(("rule", "plant", "name", "maker"), OTHER_PARTS, ids=lambda one: getattr(one, "__name__", one))
+def test_a_fault_planted_for_another_part_is_caught(
+    rule: str, plant: Callable[[pytest.MonkeyPatch], None], name: str, maker: str, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Pages, passes, a standing VPP, a pulse upwards: the true burn is accepted, the faulty one refused by its rule."""
+    definition, rig = part_of(name, maker), load_rig()
+    protected = definition.protected is not None
+
+    def compiled() -> Sequence:
+        return compiler.compile_burn(definition, rig, 0, definition.words - 1, "", protected=protected)
+
+    true = compiled()
+    assert prove(true.code, true.permit, definition, rig).findings == ()
+    plant(monkeypatch)
+    faulty = compiled()
+    found = prove(faulty.code, faulty.permit, definition, rig).findings
+    assert rule in {finding.rule for finding in found}

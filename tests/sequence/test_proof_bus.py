@@ -102,6 +102,8 @@ BENT: list[tuple[str, str, str, Bend, str]] = [
     ("outputs stay off", "H7", "burn", set_(Op.POLL, enable=b"", disable=b""), "polled in another mode"),
     ("outputs stay on", "H7", "burn", set_(Op.POLL, disable=b""), "the outputs stay on"),
     ("looks that differ", "H7", "burn", set_(Op.POLL, disable=lines(l22="H", l24="H")), "not alike"),
+    ("WE low between looks", "H7", "burn",
+     set_(Op.POLL, enable=lines(l24="L", l29="H"), disable=lines(l24="H", l29="L")), "stand outside a pulse"),
     ("no pause", "H7", "burn", set_(Op.POLL, gap=3), "pause between two looks"),
     ("polled elsewhere", "H7", "burn", put(Op.POLL, 0, ins(Op.ADDRESS, at=0), ins(Op.WAIT, ticks=1600)),
      "at another address than the word's"),

@@ -9,7 +9,7 @@ from pulsewright.sequence.proof.algorithm import A_POLL, A_WRITE, Arrow, Poll, W
 from pulsewright.sequence.proof.lines import lines
 from pulsewright.sequence.proof.looks import too_soon
 from pulsewright.sequence.proof.modes import Row
-from pulsewright.sequence.proof.power import at_rest, measured_for
+from pulsewright.sequence.proof.power import at_rest, invariants, measured_for, out_of_pulse
 from pulsewright.sequence.proof.state import (
     ACT,
     ADDRESS,
@@ -110,14 +110,10 @@ def _right(t: Tables, state: State) -> list[Arrow]:
         one = t.course.writes[arrow.event.n]
         if own if one.word is None else (one.at == at and one.word == state.data):
             found.append(arrow)
-    shown = (
-        "image"
-        if own
-        else f"{state.data if isinstance(state.data, str) else f'{state.data:02X}'}@"
-        + ("?" if at is None else f"{at:04X}")
-    )
+    word = state.data if isinstance(state.data, str) else f"{state.data:02X}"
+    shown = "image" if own else f"{word}@{'?' if at is None else f'{at:04X}'}"
     t.need(bool(found), "H7", "a bus write that the steps do not have here", t.course.wanted(state.pos), shown)
-    return found
+    return found or arrows  # told once; what follows is judged as if it had been right
 
 
 def _width(t: Tables, state: State, width: int, most: int) -> None:
@@ -151,6 +147,7 @@ def _set_ups(t: Tables, state: State, clocks: Clocks) -> None:
         t.need(since >= need, "H7", f"{text} before the strobe", f"{need} ticks", since)
     supply = t.definition.supplies[row.vcc] if row is not None else None
     need = at_least(max(supply.settle_ps if supply else 0, timing.least("tVCS")))
+    # counted from VCC's command, the rail's own settling inside it: the measurement only tells that it is over
     stood = max(elapsed(clocks, VCC), elapsed(clocks, VCC_MOVED))
     t.need(stood >= need, "H7", "set-up of VCC before the strobe", f"{need} ticks", stood)
 
@@ -237,6 +234,9 @@ def _look(t: Tables, state: State, clocks: Clocks, wanted: Poll, args: Instructi
     off = seen
     if args.args["disable"]:
         off, later = lines(t, seen, later, ins(Op.LINES, lines=args.args["disable"]))
+    for between in (seen, off):
+        invariants(t, between)
+        out_of_pulse(t, between, later)
     t.need(not t.may_drive(off.levels), "H7", "between two looks of a poll the outputs stay on")
     again = lines(t, off, later, ins(Op.LINES, lines=args.args["enable"]))[0] if args.args["enable"] else off
     t.need(again.levels == seen.levels, "H7", "the looks of a poll are not alike")
