@@ -65,7 +65,7 @@ class BusLimit:
     hold_ticks: Mapping[str, int]  # "address" after the fall, "data", "oe" (high) after the rise
     high_ticks: int = 0  # rise to the next fall, least
     valid_ticks: int = 0  # fall to data valid, most
-    load_ticks: tuple[int, int] = (0, 0)  # between the loads of one page: rise to fall at least, fall to fall at most
+    load_ticks: tuple[int, int] = (0, 0)  # fall to fall between the loads of one page: least, most
     busy_ticks: int = 0  # rise of a page's last load to the end of its write cycle, most
     ready_ticks: int = 0  # a poll that says done to the next fall, least
     # lists of (address, word) after whose last write `command_ticks` pass before the next fall

@@ -180,8 +180,9 @@ class BusWatch:
             wanted = f"at most {show_ticks(most)} from load to load"
             self._report("load gap", bus.we, t, wanted, show_ticks(cycle))
             return
-        elif high < least:
-            self._report("load gap", bus.we, t, f"at least {show_ticks(least)} between loads", show_ticks(high))
+        elif cycle < least:
+            wanted = f"at least {show_ticks(least)} from load to load"
+            self._report("load gap", bus.we, t, wanted, show_ticks(cycle))
         if self._is_busy(t):
             self._report("write while busy", bus.we, t, "the chip's write cycle over", "it runs")
 

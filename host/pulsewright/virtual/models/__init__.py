@@ -30,6 +30,12 @@ def _c256(maker: str = "st") -> ChipModel:
     return c256.make_chip(maker)
 
 
+def _ee256(maker: str = "atmel") -> ChipModel:
+    from pulsewright.virtual.models import ee256
+
+    return ee256.make_chip(maker)
+
+
 @dataclass(frozen=True)
 class Makers:
     """Makers whose chips of one part differ; `names[0]` is the one that is made when none is named."""
@@ -39,8 +45,11 @@ class Makers:
 
 
 # part name -> what makes a fresh chip
-MODELS: dict[str, Callable[[], ChipModel]] = {"27e512": _e512, "27c256": _c256}
-MAKERS: dict[str, Makers] = {"27c256": Makers(_c256, ("st", "atmel", "ti", "national", "amd"))}
+MODELS: dict[str, Callable[[], ChipModel]] = {"27e512": _e512, "27c256": _c256, "28c256": _ee256}
+MAKERS: dict[str, Makers] = {
+    "27c256": Makers(_c256, ("st", "atmel", "ti", "national", "amd")),
+    "28c256": Makers(_ee256, ("atmel", "xicor", "catalyst")),
+}
 
 
 def make_model(name: str, maker: str = "") -> ChipModel:
