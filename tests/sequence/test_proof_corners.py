@@ -49,7 +49,7 @@ PULSE = ins(Op.PULSE, line=22, width=100 * US, max=105 * US)  # CE
 CORNERS: list[tuple[str, str, str, Bend, str]] = [
     ("an address outside", "H7", "read", put(Op.READ_RUN, 0, ins(Op.ADDRESS, at=65_536)), "address outside the chip"),
     ("a step from nowhere", "H7", "read", put(Op.ADDRESS, 0, ins(Op.STEP, by=1)), "an address that was never set"),
-    ("an address from nowhere", "H7", "read", put(Op.ADDRESS, 0, ins(Op.ADDRESS_WORD)), "register that was never set"),
+    ("an address from nowhere", "H7", "read", put(Op.ADDRESS, 0, ins(Op.ADDRESS_WORD)), "when none is in hand"),
     ("a word from nowhere", "H7", "burn", put(Op.EACH_BLOCK, 0, ins(Op.DRIVE_WORD)), "when none is in hand"),
     ("a wide word", "H6", "erase", set_(Op.DRIVE, word=0x1FF), "a word wider than the chip's"),
     (

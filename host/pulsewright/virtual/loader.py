@@ -255,6 +255,8 @@ def _may_stand(op: Op, around: list[Op], header: Header) -> bool:
         return header.flow is not Flow.NONE and Op.EACH_BLOCK not in around
     if op is Op.EACH_WORD:
         return Op.EACH_BLOCK in around and Op.EACH_WORD not in around
+    if op is Op.ADDRESS_WORD:
+        return Op.EACH_WORD in around
     if op in _IN_WORD:
         return Op.EACH_WORD in around and header.flow is Flow.WRITE
     if op is Op.REPORT:

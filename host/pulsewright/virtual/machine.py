@@ -80,6 +80,7 @@ class Machine:
         self.blocks: Blocks | None = None
         self.address = 0
         self.word = 0
+        self.at = 0  # address of the word in hand
         self.sample = 0
         self.kept = 0
         self.flag = False

@@ -120,12 +120,13 @@ def step_address(m: Machine, a: Args, after: int) -> Step:
 
 
 def address_word(m: Machine, a: Args, after: int) -> Step:
-    """Address lines from the register."""
+    """Address register and lines to the word in hand's."""
     move = m.socket.set_address
     mask = (1 << len(m.address_lines)) - 1
 
     def step() -> int:
-        at = m.address & mask
+        m.address = m.at
+        at = m.at & mask
         if m.closed_bits & ~at:
             raise Trip(Fault.LINE_AT_RAISED)
         t = m.t

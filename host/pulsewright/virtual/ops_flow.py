@@ -117,7 +117,8 @@ def each_word(m: Machine, blocks: Blocks, to: int, after: int) -> Step:
 
 def _advance(m: Machine, to: int, body: int) -> int:
     for address, word in m.words:
-        m.address, m.word, m.tries, m.wrote = address, word, 0, False
+        m.address = m.at = address
+        m.word, m.tries, m.wrote = word, 0, False
         return body
     return to
 
@@ -128,10 +129,11 @@ def next_word(m: Machine, blocks: Blocks, to: int, body: int, *, writes: bool) -
 
     def step() -> int:
         if count is not None and m.wrote:
-            count(m.address, m.tries)
+            count(m.at, m.tries)
         m.t += 2 * _COST
         for address, word in m.words:
-            m.address, m.word, m.tries, m.wrote = address, word, 0, False
+            m.address = m.at = address
+            m.word, m.tries, m.wrote = word, 0, False
             return body
         return to
 

@@ -16,7 +16,6 @@ from pulsewright.sequence.proof.state import (
     OFF,
     PULSE,
     RELEASED,
-    UNSET,
     WORD,
     Clocks,
     State,
@@ -145,9 +144,10 @@ def step(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
 
 
 def address_word(t: Tables, state: State, clocks: Clocks, ins: Instruction) -> Result:
-    """Address lines from the register."""
-    t.need(state.register != UNSET, "H7", "address lines from a register that was never set")
-    level = WORD if state.register == WORD else EITHER
+    """Address register and lines to the word in hand's."""
+    t.need(state.hand, "H7", "the address of a word when none is in hand")
+    level = WORD if state.hand else EITHER
+    state = state._replace(register=level)
     return _moved(t, state, clocks, _with_address(t, state, [level] * len(_address_lines(t))), "address")
 
 
