@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from intelhex import IntelHex
+
 from tests.end_to_end.bench_kit import Bench, bench
 
 __all__ = ["bench"]
@@ -9,8 +11,10 @@ __all__ = ["bench"]
 
 def protected(bench: Bench) -> bool:
     """Whether the chip takes no page without the command: a burn that keeps its protection tells."""
-    image = bench.image(1, seed=99, name="probe.bin")
-    answer = bench.job("burn", "28c256", str(image), "--origin", "0", "--range", "0x7FC0..0x7FC0", "--fill", "0x5A")
+    probe = IntelHex()
+    probe[0x7FC0] = bench.contents()[0x7FC0] ^ 0xFF
+    probe.write_hex_file(str(bench.folder / "probe.hex"))
+    answer = bench.job("burn", "28c256", str(bench.folder / "probe.hex"))
     assert answer["exit"] == 0, answer
     return answer.get("protection") == "on"
 
