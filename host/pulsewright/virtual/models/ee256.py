@@ -79,7 +79,7 @@ class Ee256(BusWritten):
     def draw_ua(self, t: int, pin: int) -> int:
         if pin != VCC or not self._vcc:
             return 0
-        return self._maker.icc if self._ce_low or self._busy else self._maker.standby
+        return self._maker.icc if self._ce_low or self.is_busy(t) else self._maker.standby
 
     # ---- reads ----
 
