@@ -17,7 +17,7 @@ from pulsewright.virtual.judge_raised import RaisedTable, spans, within
 
 ABOVE_VCC_MV = 300  # H11: no other pin stands more than this above VCC
 POWERED_MV = 500  # below, a chip drives nothing
-# every rule by the name a violation gives it
+# every rule by the name a violation gives it; those of writes on the bus are in judge_bus
 RULES = (
     *("absolute maximum", "lowest level", "above VCC", "supply order", "rise time", "raised window", "recovery"),
     *("unknown pulse", "pulse width", "pulse vcc", "pulse data", "pulse address", "data not driven", "floating input"),

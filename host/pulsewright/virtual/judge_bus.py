@@ -149,7 +149,8 @@ class BusWatch:
             ("address", "address setup", self._watch.address_t),
             ("oe", "control setup", self._oe_t),
         ):
-            seen.add(f"write {what} setup", t - since)
+            if since > LONG_AGO:
+                seen.add(f"write {what} setup", t - since)
             if t - since < self._setup[what]:
                 pin = bus.oe if what == "oe" else self._limits.address_pins[0]
                 self._report(name, pin, t, f"at least {show_ticks(self._setup[what])}", show_ticks(t - since))
@@ -206,7 +207,8 @@ class BusWatch:
             wanted = f"at least {show_ticks(least)}" + (f", at most {show_ticks(most)}" if most else "")
             self._report("write width", bus.we, t, wanted, show_ticks(width))
         stood = t - watch.data_t
-        watch.seen.add("write data setup", stood)
+        if watch.data_t > LONG_AGO:
+            watch.seen.add("write data setup", stood)
         if stood < self._setup["data"]:
             wanted = f"at least {show_ticks(self._setup['data'])}"
             self._report("data setup", self._limits.data_pins[0], t, wanted, show_ticks(stood))
