@@ -48,9 +48,9 @@ def test_every_sequence_of_these_parts_is_accepted(name: str, maker: str) -> Non
         assert bent(part, kind) == (), kind
 
 
-@pytest.mark.parametrize("kind", ["identify", "read", "blank", "erase"])
+@pytest.mark.parametrize("kind", ["identify", "read", "blank", "burn", "erase"])
 def test_a_flash_that_tells_its_id_by_command_is_accepted(kind: str) -> None:
-    """Commands before and behind the gate, and an erase of the whole chip: nothing is found."""
+    """Commands before and behind the gate and before each word, and an erase of the whole chip: nothing is found."""
     assert bent(FLASH, kind) == ()
 
 
