@@ -10,8 +10,9 @@ from hypothesis import strategies as st
 
 from pulsewright.errors import FileMistake, ImageMistake, UsageMistake
 from pulsewright.image.intel_hex import write_intel_hex
-from pulsewright.image.load import INTEL_HEX, RAW, load, save, tell_format
+from pulsewright.image.load import INTEL_HEX, RAW, S_RECORD, load, save, tell_format
 from pulsewright.image.memory import Segment, image_of
+from pulsewright.image.several import load_files
 
 RECORDS = b":04003000902BB4FD60\n:00000001FF\n"
 
@@ -26,12 +27,13 @@ RECORDS = b":04003000902BB4FD60\n:00000001FF\n"
         (b":04zz3000902BB4FD60\n", "a.bin", INTEL_HEX),
         (b":04\xb03000902BB4FD60\n" + RECORDS * 3, "a.bin", INTEL_HEX),
         (b"04003000902BB4FD60\n", "a.HEX", INTEL_HEX),
-        (b"04003000902BB4FD60\n", "a.bin", RAW),
         (b":\x00\x01\x02", "a.bin", RAW),
         (b"\x3a0400\xff\x00", "a.bin", RAW),
         (b"\x55\xaa\x01", "a.hex", RAW),
         (b"\x00", "a.bin", RAW),
-        (b"S1 is not a record\n", "a.bin", RAW),
+        (b"S0030000FC\r\nS1090100010203040506E0\r\nS9030000FC\r\n", "a.bin", S_RECORD),
+        (b"S1090100010203zz0506E0\nS9030000FC\n", "a.srec", S_RECORD),
+        (b"S1 is not a record", "a.bin", RAW),
     ],
 )
 def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) -> None:
@@ -39,10 +41,17 @@ def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) ->
     assert tell_format(content, name) == wanted
 
 
-def test_s_records_are_not_burnt_as_text() -> None:
-    """A file of S-records is refused by that name (the record is a published one), not taken for raw bytes."""
-    with pytest.raises(ImageMistake, match="S-records"):
-        tell_format(b"S0030000FC\r\nS1090100010203040506E0\r\nS9030000FC\r\n", "a.s19")
+@pytest.mark.parametrize(
+    "content", [b"04003000902BB4FD60\n", b"S1 is not a record\n", b"[chip]\nname = 'x'\n", "\u00fc\n".encode()]
+)
+def test_readable_text_is_not_burnt_as_its_letters(content: bytes, tmp_path: Path) -> None:
+    """Lines of text that are no records are refused, with the way to insist; `raw:` takes the letters."""
+    with pytest.raises(ImageMistake, match="readable text") as refused:
+        tell_format(content, "a.bin")
+    assert "raw:a.bin" in refused.value.hint
+    (tmp_path / "a.txt").write_bytes(content)
+    image, (file,) = load_files([f"raw:{tmp_path / 'a.txt'}"])
+    assert (image.segments, file.format) == ((Segment(0, content),), RAW)
 
 
 def test_a_hex_file_loads(tmp_path: Path) -> None:

@@ -6,6 +6,7 @@ import argparse
 import os
 from collections.abc import Callable
 from contextlib import ExitStack
+from dataclasses import replace
 from typing import TYPE_CHECKING
 
 from pulsewright.cli.desk import (
@@ -51,7 +52,13 @@ def _common(parser: Parser) -> None:
 
 
 def _image_options(parser: Parser) -> None:
-    parser.add_argument("image", metavar="IMAGE", help="Intel HEX or raw binary")
+    parser.add_argument(
+        "image",
+        metavar="IMAGE",
+        nargs="+",
+        help="Intel HEX, S-records or raw binary, told apart by their content; several are one image. FILE@ADDR: its "
+        "address 0 lands at image address ADDR; raw:FILE: its bytes as they are",
+    )
     parser.add_argument(
         "--origin",
         metavar="ADDR",
@@ -102,7 +109,11 @@ def add_commands(commands: Commands[Parser]) -> None:
     one("identify", _identify, "seating check and ID bytes", "identify 27e512 --rig virtual")
     reading = one("read", _read, "read a chip into a file", "read 27e512 --rig virtual --passes 2 -o saved.bin")
     reading.add_argument(
-        "-o", metavar="FILE", dest="out", required=True, help="the file: .hex or .ihx, else raw binary"
+        "-o",
+        metavar="FILE",
+        dest="out",
+        required=True,
+        help="the file: .hex .ihx Intel HEX; .s19 .s28 .s37 .srec .mot S-records; else raw binary",
     )
     reading.add_argument("--passes", metavar="N", type=count, default=1, help="read so often, and compare (default 1)")
     reading.add_argument("--margins", action="store_true", help="read at the margins of VCC too, and compare")
@@ -158,12 +169,13 @@ def add_commands(commands: Commands[Parser]) -> None:
 
 
 def _fitted(args: argparse.Namespace, definition: Definition) -> Fitted:
-    from pulsewright.image.load import load as load_image
     from pulsewright.image.memory import fit
+    from pulsewright.image.several import load_files
 
     first, last = args.range or (0, None)
-    return fit(
-        load_image(args.image),
+    image, files = load_files(args.image)
+    fitted = fit(
+        image,
         definition.words,
         origin=args.origin,
         fill=args.fill,
@@ -172,6 +184,7 @@ def _fitted(args: argparse.Namespace, definition: Definition) -> Fitted:
         blank=definition.blank,
         name=definition.name,
     )
+    return replace(fitted, files=files)
 
 
 def _run(
@@ -229,8 +242,6 @@ def _identify(args: argparse.Namespace, desk: Desk) -> int:
 
 
 def _read(args: argparse.Namespace, desk: Desk) -> int:
-    from dataclasses import replace
-
     from pulsewright.image.load import RAW, format_for, save
     from pulsewright.jobs.read import read
     from pulsewright.units import show_address

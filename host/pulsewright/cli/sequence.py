@@ -25,7 +25,7 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     )
     parser.add_argument("chip", metavar="CHIP", help="a shipped part (see `chips`) or the path of a definition")
     parser.add_argument("job", metavar="JOB", choices=JOBS, help=", ".join(JOBS))
-    parser.add_argument("image", metavar="IMAGE", nargs="?", help="for burn and verify: names the data by its hash")
+    parser.add_argument("image", metavar="IMAGE", nargs="*", help="for burn and verify: names the data by its hash")
     parser.add_argument("--maker", metavar="NAME", help="the maker row")
     parser.add_argument("--range", metavar="FIRST..LAST", type=address_range, help="the words to work on")
     parser.add_argument("--origin", metavar="ADDR", type=address, default=0, help="as in `burn`")
@@ -62,15 +62,15 @@ def _sequence(args: argparse.Namespace, desk: Desk) -> int:
 
 
 def _hash(args: argparse.Namespace, definition: Definition) -> str:
-    from pulsewright.image.load import load as load_image
     from pulsewright.image.memory import fit
+    from pulsewright.image.several import load_files
     from pulsewright.jobs.plan import sha256
 
-    if args.image is None:
+    if not args.image:
         return ""
     first, last = args.range or (0, None)
     fitted = fit(
-        load_image(args.image),
+        load_files(args.image)[0],
         definition.words,
         origin=args.origin,
         fill=args.fill,

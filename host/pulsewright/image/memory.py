@@ -42,13 +42,14 @@ class Piece:
 class Image:
     """Bytes at addresses: `segments` are sorted, hold at least one byte each, and neither touch nor overlap.
 
-    `name` (of the file) and `marks` (first address and line of each record, sorted) only serve to say where a byte
-    came from; two images with the same bytes are equal.
+    `name` (of the file), `marks` (first address and line of each record, sorted) and `parts` (the images of several
+    files) only serve to say where a byte came from; two images with the same bytes are equal.
     """
 
     segments: tuple[Segment, ...]
     name: str = field(default="", compare=False)
     marks: tuple[tuple[int, int], ...] = field(default=(), compare=False, repr=False)
+    parts: tuple[Image, ...] = field(default=(), compare=False, repr=False)
 
     def __post_init__(self) -> None:
         """Hold the promise on `segments`; ValueError where the caller broke it."""
@@ -83,6 +84,9 @@ class Image:
 
     def where(self, address: int) -> Where:
         """The file and line that gave the byte at `address`; the file alone where it has no lines."""
+        for part in self.parts:
+            if any(segment.start <= address < segment.end for segment in part.segments):
+                return part.where(address)
         at = bisect_right(self.marks, address, key=lambda mark: mark[0]) - 1
         return Where(self.name, self.marks[at][1] if at >= 0 else 0)
 
@@ -123,17 +127,42 @@ def _overlap(before: Piece, after: Piece, name: str) -> ImageMistake:
 
 
 @dataclass(frozen=True)
+class ImageFile:
+    """One file of an image: where its bytes lie (image addresses, `last` included), how many, their CRC-32."""
+
+    name: str
+    format: str
+    first: int
+    last: int
+    size: int
+    crc32: str
+
+    def facts(self) -> dict[str, object]:
+        """As JSON values."""
+        return {
+            "file": self.name,
+            "format": self.format,
+            "first": self.first,
+            "last": self.last,
+            "bytes": self.size,
+            "crc32": self.crc32,
+        }
+
+
+@dataclass(frozen=True)
 class Fitted:
     """An image laid on a chip: `data` has one byte a cell; `used` has 1 for each byte to write or compare, else 0.
 
     `given` bytes came from the image, the other used ones from the fill. `cut` bytes of the image were left out by the
-    range. A byte that is not used holds the blank value in `data` and is to be left alone.
+    range. A byte that is not used holds the blank value in `data` and is to be left alone. `files`: where it all came
+    from.
     """
 
     data: bytes
     used: bytes
     given: int
     cut: int = 0
+    files: tuple[ImageFile, ...] = ()
 
     def ranges(self) -> Iterator[tuple[int, int]]:
         """First and last chip address of each run of used bytes."""
@@ -191,9 +220,12 @@ def _check_bounds(words: int, first: int, top: int, fill: int | None, name: str)
             f"the range does not lie in the chip{' ' + name if name else ''}",
             wanted=f"FIRST..LAST within 0000..{show_address(words - 1, words)}, FIRST not above LAST",
             got=f"{first:04X}..{top:04X}",
+            hint="--range 0x0000..LAST within the chip, or leave it away for the whole chip",
         )
     if fill is not None and not 0 <= fill <= 0xFF:
-        raise UsageMistake("the fill is not a byte", wanted="00 to FF", got=str(fill))
+        raise UsageMistake(
+            "the fill is not a byte", wanted="00 to FF", got=str(fill), hint="0xFF is the erased state of most parts"
+        )
 
 
 def _check_inside(image: Image, words: int, origin: int, name: str) -> None:

@@ -114,7 +114,8 @@ def _work(ctx: JobContext, fitted: Fitted) -> JobResult:
     verified, more = verify_passes(ctx, fitted, ctx.first, ctx.last, _chip_fault, proven=True)
     return JobResult(
         (burnt, *verified, *lines, *maker, *tail),
-        {**facts, **more, "words": needed.used, "burnt_words": needed.differing},
+        {**facts, **more, "words": needed.used, "burnt_words": needed.differing}
+        | {"images": [file.facts() for file in fitted.files]},
     )
 
 
@@ -139,6 +140,7 @@ def burn(ctx: JobContext, fitted: Fitted) -> JobResult:
         if context.record is not None:
             crc = crc_text(fitted.data[context.first : context.last + 1])
             context.record.content |= {"image_crc32": crc, "image_sha256": sha256(fitted.data)}
+            context.record.content["images"] = [file.facts() for file in fitted.files]
         return _work(context, fitted)
 
     return job(ctx, "burn", work)
