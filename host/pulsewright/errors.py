@@ -16,7 +16,13 @@ PulsewrightError
 │   └── ShortfallRefused           a pass that only raises confidence cannot be made
 ├── ChipFault             exit 4   the chip will not erase or program
 ├── RigFault              exit 5   link or rig
-│   ├── LinkFault                  no answer, damage past repair, port missing or busy
+│   ├── LinkFault                  the link was lost, or damaged past repair
+│   │   ├── PortMissing            no such port, or nothing behind it
+│   │   ├── PortUnusable           what is named is no serial port, or works as none
+│   │   ├── PortNotPermitted       the system does not let this user open it
+│   │   ├── PortBusy               another program, or a second Pulsewright, holds it
+│   │   ├── RigSilent              it was opened, and nothing came
+│   │   └── RigNoise               bytes came, but no greeting
 │   ├── OtherFirmware              the rig speaks another wire table
 │   ├── RigRestarted               the boot number changed under a job
 │   ├── Tripped                    the rig made itself safe, with a reason and numbers
@@ -74,6 +80,7 @@ class PulsewrightError(Exception):
     """Base of all: `what` happened, `where`, numbers `wanted` and `got`, what the rig `did`, one thing to `hint`."""
 
     exit_code = 5
+    stage = ""  # of reaching a rig: where it ended, for `--json`; "" for all that is no matter of the way to a rig
 
     def __init__(
         self,
@@ -113,6 +120,8 @@ class PulsewrightError(Exception):
     def facts_json(self) -> dict[str, object]:
         """The same facts for `--json`: only the keys that have a value."""
         facts: dict[str, object] = {"error": type(self).__name__, "what": self.what}
+        if self.stage:
+            facts["stage"] = self.stage
         if self.where is not None:
             facts["where"] = str(self.where)
         for name in ("step", "wanted", "got", "did", "hint"):
@@ -203,15 +212,57 @@ class RigFault(PulsewrightError):
 
 
 class LinkFault(RigFault):
-    """No answer, a port that is missing or busy, or damage past repair."""
+    """The link was lost, or is damaged past repair; the classes below: there never was one."""
+
+    stage = "lost"
+
+
+class PortMissing(LinkFault):
+    """There is no such port, or nothing behind it."""
+
+    stage = "missing"
+
+
+class PortUnusable(LinkFault):
+    """What is named is something else than a serial port, no URL of one, or cannot be used as one."""
+
+    stage = "unusable"
+
+
+class PortNotPermitted(LinkFault):
+    """The system does not let this user open the port."""
+
+    stage = "not_permitted"
+
+
+class PortBusy(LinkFault):
+    """Another program, or a second Pulsewright, holds the port."""
+
+    stage = "busy"
+
+
+class RigSilent(LinkFault):
+    """The port was opened, and nothing came at the rate of greetings."""
+
+    stage = "silent"
+
+
+class RigNoise(LinkFault):
+    """Bytes came, but no greeting."""
+
+    stage = "noise"
 
 
 class OtherFirmware(RigFault):
     """The rig's wire table is another than this program's."""
 
+    stage = "other_fingerprint"
+
 
 class RigRestarted(RigFault):
-    """The rig's boot number changed under a job: nothing resumes, look again."""
+    """The rig's boot number changed under a session: nothing resumes, look again."""
+
+    stage = "restarted"
 
 
 class Tripped(RigFault):

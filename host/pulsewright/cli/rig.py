@@ -1,4 +1,4 @@
-"""rig show: what the rig is and can make, and with --rig what the board itself tells."""
+"""rig show: what the rig is and can make; with --rig what the board tells, with --ports what answers on each port."""
 
 from __future__ import annotations
 
@@ -10,6 +10,11 @@ from pulsewright.cli.desk import HIGH_VOLTAGE, RIG_HELP, Desk, Parser, Stop, add
 if TYPE_CHECKING:
     from pulsewright.link.results import RigFacts
 
+_PORTS = """\
+Without an option no port is opened. Opening a port may reset the board behind it, and --ports opens each port of
+this machine and sends a question of six bytes to whatever is there: unplug first what must not be disturbed. A port
+that another program has open, and the console of the system, are left alone."""
+
 
 def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
     """The commands of this group."""
@@ -18,15 +23,23 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
         inner,
         "show",
         _show,
-        what="show the rig file: site, rails, steps, switches; with --rig also what the board tells",
+        what="show the rig file and the serial ports; with --rig what the board tells",
         example="pulsewright rig show --rig virtual",
+        more=_PORTS,
         cautions=[HIGH_VOLTAGE],
     )
-    show.add_argument("--rig", metavar="RIG", help=RIG_HELP)
+    where = show.add_mutually_exclusive_group()
+    where.add_argument("--rig", metavar="RIG", help=RIG_HELP)
+    where.add_argument(
+        "--ports", action="store_true", help="instead of the rig file: open each serial port, and tell what answers"
+    )
 
 
 def _show(args: argparse.Namespace, desk: Desk) -> int:
-    from pulsewright.report.rig import rig_facts, rig_lines
+    if args.ports:
+        return _ports(desk)
+    from pulsewright.link.machine import ports_here
+    from pulsewright.report.rig import port_facts, port_lines, rig_facts, rig_lines
     from pulsewright.rig.file import load_rig
 
     rig = load_rig()
@@ -43,7 +56,24 @@ def _show(args: argparse.Namespace, desk: Desk) -> int:
             "program_bytes": board.program_bytes,
             "earlier_fault": board.earlier.name if board.earlier is not None else None,
         }
+    else:
+        ports = ports_here()
+        lines += ["", *port_lines(ports)]
+        facts["ports"] = port_facts(ports)
     return desk.answer(lines, facts)
+
+
+def _ports(desk: Desk) -> int:
+    """Asks every port in turn; Ctrl-C ends it between two reads, and nothing has to be made safe."""
+    from pulsewright.link.machine import ports_here
+    from pulsewright.link.ports import ask_port
+    from pulsewright.report.rig import answer_facts, answer_lines
+
+    answers = []
+    for port in ports_here():
+        desk.say(f"asking {port}")
+        answers.append(ask_port(port))
+    return desk.answer(answer_lines(answers), {"ports": answer_facts(answers)})
 
 
 def _board(name: str, desk: Desk) -> RigFacts:

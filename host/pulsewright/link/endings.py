@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from pulsewright.errors import Interrupted, LinkFault, RigFault, RigRestarted
+from pulsewright.link import diagnosis
 from pulsewright.link.blocks import Window
 from pulsewright.link.results import Counters, RunResult, Trouble
 from pulsewright.wire.fields import WireMistake, unpack_from
@@ -54,8 +55,10 @@ def interrupted(result: RunResult, kind: str) -> Interrupted:
     return Interrupted("stopped by the operator", did=did, facts=facts, hint="the job can be run again")
 
 
-def restarted(boot: int, now: int, counters: Counters) -> RigRestarted:
-    """The boot number changed under a session."""
+def restarted(boot: int, now: int, counters: Counters, *, running: bool = True) -> RigRestarted:
+    """The boot number changed under a session; `running`: perhaps under a sequence."""
+    if not running:
+        return diagnosis.restarted_early(boot, now, counters.facts())
     return RigRestarted(
         "the rig was reset while it worked",
         wanted=f"boot number {boot}",

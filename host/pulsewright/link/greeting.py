@@ -6,10 +6,11 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 from pulsewright.errors import LinkFault, OtherFirmware, RigFault
+from pulsewright.link import diagnosis
 from pulsewright.link.exactly_once import Commands, Silent
 from pulsewright.link.line import Line
 from pulsewright.link.results import RigFacts, Trouble
-from pulsewright.wire.fields import WireMistake, unpack
+from pulsewright.wire.fields import WireMistake, unpack, unpack_from
 from pulsewright.wire.frames import Hello, Message, decode_hello
 from pulsewright.wire.tables import (
     BLOBS,
@@ -26,6 +27,7 @@ from pulsewright.wire.tables import (
 
 _TRY_US = 400_000  # one greeting; a board that was reset by opening the port is still asleep for some of them
 _RATE_TRY_US = 450_000
+_KEPT = 1_024
 _SETTLE_US = 2_000  # between the answer to a change of rate and the first byte at the new one
 _RATE_STEPS = (1_000_000, 500_000, 250_000)  # exact at 16 MHz (ATmega2560 data sheet 2549, table of baud rates)
 _PATTERN = bytes([0x00, 0xFF, 0x55, 0xAA, 0x01, 0x80, 0x7F, 0xFE]) + bytes(range(0, 256, 5))  # long and short edges
@@ -39,9 +41,9 @@ class Heard:
     first: bytes = b""
 
     def note(self, data: bytes) -> None:
-        """Counts bytes; keeps the first sixteen."""
+        """Counts bytes; keeps the first of them, enough to tell what they look like."""
         self.bytes_seen += len(data)
-        self.first = (self.first + data)[:16]
+        self.first = (self.first + data)[:_KEPT]
 
 
 def find_hello(stream: bytearray) -> Hello | None:
@@ -57,17 +59,20 @@ def find_hello(stream: bytearray) -> Hello | None:
     return None
 
 
-def greet(line: Line, for_us: int, heard: Heard, look: Callable[[], None] = lambda: None) -> Hello | None:
+def greet(
+    line: Line, for_us: int, heard: Heard, look: Callable[[], None] = lambda: None, *, breaks: bool = True
+) -> Hello | None:
     """Asks for a greeting at the line's rate until one comes or the time is over.
 
     A break goes before each question but the first: a rig that an earlier session left at a higher rate hears it at
-    any rate, ends what it was doing, and is back at the rate of greetings.
+    any rate, ends what it was doing, and is back at the rate of greetings. Without `breaks` none is sent: a port that
+    nobody named may lead to a machine that stops at one.
     """
     end_us = line.transport.now_us() + for_us
     stream = bytearray()
     first = True
     while line.transport.now_us() < end_us:
-        if not first:
+        if breaks and not first:
             line.transport.send_break()
         first = False
         line.write(HELLO_REQUEST)
@@ -82,16 +87,18 @@ def greet(line: Line, for_us: int, heard: Heard, look: Callable[[], None] = lamb
     return None
 
 
-def hello_of(line: Line, look: Callable[[], None]) -> Hello:
-    """The rig's greeting, checked against this program's wire table; LinkFault or OtherFirmware otherwise."""
+def hello_of(line: Line, look: Callable[[], None] = lambda: None, *, breaks: bool = True) -> Hello:
+    """The rig's greeting, checked against this program's wire table; RigSilent, RigNoise or OtherFirmware otherwise."""
     heard = Heard()
     line.set_baud(HELLO_BAUD)
-    hello = greet(line, line.timing.hello_us, heard, look)
+    hello = greet(line, line.timing.hello_us, heard, look, breaks=breaks)
+    name = line.transport.name
     if hello is None:
-        raise _no_hello(line, heard)
+        waited_us = line.timing.hello_us
+        raise diagnosis.no_hello(name, waited_us=waited_us, seen=heard.bytes_seen, first=heard.first)
     if hello.layout != LAYOUT or hello.fingerprint != FINGERPRINT:
         raise OtherFirmware(
-            f"the rig on {line.transport.name} speaks another wire table than this program",
+            f"the rig on {name} speaks another wire table than this program",
             wanted=f"layout {LAYOUT}, fingerprint {FINGERPRINT:08X}",
             got=f"layout {hello.layout}, fingerprint {hello.fingerprint:08X}",
             did="nothing: only its greeting was read",
@@ -100,29 +107,21 @@ def hello_of(line: Line, look: Callable[[], None]) -> Hello:
     return hello
 
 
-def _no_hello(line: Line, heard: Heard) -> LinkFault:
-    name, seconds = line.transport.name, line.timing.hello_us / 1_000_000
-    did = "nothing that is known: no command was sent"
-    if heard.bytes_seen:
-        return LinkFault(
-            f"something talks on {name}, but it is no rig",
-            wanted=f"a greeting of {HELLO_LENGTH} bytes at {HELLO_BAUD} baud",
-            got=f"{heard.bytes_seen} other bytes, first {heard.first.hex(' ')}",
-            did=did,
-            hint="check that this is the rig's port and that the board runs the firmware",
-        )
-    return LinkFault(
-        f"no answer on {name}",
-        wanted=f"a greeting within {seconds:g} s at {HELLO_BAUD} baud",
-        got="silence",
-        did=did,
-        hint="check the cable, the rig's supply, and that this is the rig's port",
-    )
+def same_boot(commands: Commands, hello: Hello) -> None:
+    """RigRestarted when the rig is no longer in the boot that it greeted with; Silent if it does not answer.
+
+    A rig that was reset meanwhile answers questions for its tables all the same: only its boot number tells.
+    """
+    answer = commands.ask(Frame.STATUS)
+    if answer.fields["outcome"] != Outcome.DONE:
+        raise RigFault("the rig does not tell its state", did="nothing", hint="flash the rig's firmware anew")
+    boot = int(unpack_from(BLOBS["status"], answer.fields["data"])[0]["boot"])
+    if boot != hello.boot:
+        raise diagnosis.restarted_early(hello.boot, boot)
 
 
 def trouble_of(data: bytes) -> tuple[Trouble | None, bytes]:
     """The fault blob at the start of `data` (None when its code is 0 or there is none) and what stands behind it."""
-    from pulsewright.wire.fields import unpack_from
     from pulsewright.wire.tables import Fault
 
     try:

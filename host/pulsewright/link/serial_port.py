@@ -3,11 +3,10 @@
 from __future__ import annotations
 
 import contextlib
-import errno
 import time
 from typing import TYPE_CHECKING
 
-from pulsewright.errors import LinkFault
+from pulsewright.link.diagnosis import cannot_open, line_gone
 from pulsewright.link.transport import Timing
 from pulsewright.wire.tables import HELLO_BAUD
 
@@ -19,22 +18,6 @@ _SLICE_S = 0.02  # a read returns at least so often, so that deadlines hold
 _WRITE_S = 5.0
 _BREAK_S = 0.01  # longer than a byte at the rate of greetings
 _DRIVER_US = 50_000  # what a USB adapter and the scheduler may add to an answer's time (common practice)
-_CABLE = "look at the cable, then plug it in again"
-_GROUP = "add yourself to the group that owns it (on Debian: dialout) and log in again"
-_NAME = "name a serial port or a pySerial URL"
-_CLOSE = "close the program that has it open"
-_REASONS = {
-    errno.ENOENT: ("does not exist", "look at the cable, and at the port's name"),
-    errno.ENXIO: ("has no device behind it", _CABLE),
-    errno.ENODEV: ("has no device behind it", _CABLE),
-    errno.EACCES: ("may not be opened by you", _GROUP),
-    errno.EPERM: ("may not be opened by you", _GROUP),
-    errno.EBUSY: ("is in use by another program", _CLOSE),
-    errno.EAGAIN: ("is in use by another program", _CLOSE),
-    errno.ENOTTY: ("is no serial port", _NAME),
-    errno.EISDIR: ("is a folder, not a serial port", _NAME),
-    errno.ECONNREFUSED: ("is not listened at", "start what serves it, or check the number of the port"),
-}
 
 
 class SerialPort:
@@ -42,7 +25,10 @@ class SerialPort:
     whose own clock only goes on as the host talks."""
 
     def __init__(self, name: str, *, patience_us: int = PATIENCE_US) -> None:
-        """Opens it at the rate of greetings; LinkFault in words if that does not work."""
+        """Opens it at the rate of greetings; PortMissing, PortUnusable, PortNotPermitted or PortBusy where it cannot.
+
+        A board may be reset by it: many are wired so that an opened port pulls their reset.
+        """
         self.name = name
         self._patience_us = patience_us
         self._port = _open(name)
@@ -63,7 +49,7 @@ class SerialPort:
         try:
             self._port.write(data)
         except OSError as error:  # SerialException is one
-            raise self._gone("sending", error) from error
+            raise line_gone(self.name, "sending", error) from error
 
     def read(self, until_us: int) -> bytes:
         """What has come, at least one byte, or b"" at the deadline."""
@@ -73,7 +59,7 @@ class SerialPort:
                 if data or self.now_us() >= until_us:
                     return data
         except OSError as error:
-            raise self._gone("receiving", error) from error
+            raise line_gone(self.name, "receiving", error) from error
 
     def set_baud(self, baud: int) -> None:
         """The rate from now on, once what was sent has left. LinkFault if this port cannot make it."""
@@ -82,7 +68,7 @@ class SerialPort:
                 self._port.flush()
                 self._port.baudrate = baud
         except (OSError, ValueError) as error:
-            raise self._gone(f"going to {baud} baud", error) from error
+            raise line_gone(self.name, f"going to {baud} baud", error) from error
 
     def send_break(self) -> None:
         """A break, where the port can make one."""
@@ -94,13 +80,6 @@ class SerialPort:
         with contextlib.suppress(OSError):
             self._port.close()
 
-    def _gone(self, doing: str, error: Exception) -> LinkFault:
-        return LinkFault(
-            f"{self.name} failed while {doing}",
-            got=str(error),
-            hint="look at the cable and the rig's supply, then run it again",
-        )
-
 
 def _open(name: str) -> Serial:
     import serial
@@ -110,17 +89,7 @@ def _open(name: str) -> Serial:
             name, baudrate=HELLO_BAUD, timeout=_SLICE_S, write_timeout=_WRITE_S, exclusive=True
         )
     except (OSError, ValueError) as error:
-        raise _cannot_open(name, error) from error
+        raise cannot_open(name, error) from error
     with contextlib.suppress(OSError):
         port.reset_input_buffer()
     return port
-
-
-def _cannot_open(name: str, error: OSError | ValueError) -> LinkFault:
-    number = error.errno if isinstance(error, OSError) else None
-    if number is None and isinstance(error.__context__, OSError):
-        number = error.__context__.errno
-    if number is None and "configure port" in str(error):  # a file: it opens, and is no port
-        number = errno.ENOTTY
-    reason, hint = _REASONS.get(number or 0, ("cannot be opened", _NAME))
-    return LinkFault(f"{name} {reason}", got=str(error), did="nothing: the port was not opened", hint=hint)

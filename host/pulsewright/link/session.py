@@ -77,6 +77,7 @@ class Session:
             self._line.timing = self._transport.timing(facts.board)
             earlier = self._clear_latched() if hello.fault else None
             baud = greeting.step_up(self._line, self._commands, facts.top_baud)
+            greeting.same_boot(self._commands, hello)
         except Silent:
             raise self._lost("reading the rig's tables", hello.boot, running=False) from None
         self._facts = replace(facts, baud=baud, earlier=earlier)
@@ -287,5 +288,5 @@ class Session:
         except LinkFault:
             pass  # the line itself is gone, which is what is about to be said
         if hello is not None and hello.boot != boot:
-            return endings.restarted(boot, hello.boot, self._counters())
+            return endings.restarted(boot, hello.boot, self._counters(), running=running)
         return endings.lost(stage, running, hello, self._counters(), self._line.timing.give_up_us)
