@@ -272,6 +272,33 @@ def low_supply(bus: EeBus) -> None:
     bus.load(0x100, 0x33)
 
 
+def load_stalls_after_a_look(bus: EeBus) -> None:
+    """A look before the page does not excuse what comes in it."""
+    bus.look(0x100)
+    bus.wait(US)
+    load_stalls(bus)
+
+
+def blind_sample(bus: EeBus) -> None:
+    """A sample with the outputs off is no look at the chip."""
+    bus.load(0x100, 0x33)
+    bus.wait(MS)
+    bus.sample()
+    bus.load(0x101, 0x33)
+
+
+def ready_too_soon_after_all(bus: EeBus) -> None:
+    """The first look came before the window closed: the poll that counts is the last, 159 ticks before the write."""
+    bus.loads([(0x100, 0x33)])
+    bus.look(0x100)
+    bus.wait(MS)
+    bus.look(0x100)
+    bus.wait(20 * MS)
+    bus.look(0x100)
+    bus.wait(159 - 3 - bus.setup)
+    bus.load(0x140, 0x33)
+
+
 def raised_pin(bus: EeBus) -> None:
     """A9 at 12 V, which the part stands and no job uses."""
     bus.set({A9: 12_000})
@@ -306,10 +333,13 @@ BUS_WAVES: list[tuple[str, Wave, set[str]]] = [
     ("xicor", load_stalls, {"load gap"}),
     ("catalyst", load_stalls, {"load gap"}),
     ("atmel", load_stalls_long, {"load gap"}),
+    ("xicor", load_stalls_after_a_look, {"load gap"}),
+    ("atmel", blind_sample, {"load gap"}),
     ("xicor", after_the_command, {"command gap"}),
     ("xicor", after_the_other_command, {"command gap"}),
     ("atmel", busy_all_the_same, {"write while busy"}),
     ("xicor", ready_too_soon, {"ready time"}),
+    ("xicor", ready_too_soon_after_all, {"ready time"}),
     ("atmel", early_write, {"power-up"}),
     ("xicor", early_write, {"power-up"}),
     ("catalyst", early_write, {"power-up"}),

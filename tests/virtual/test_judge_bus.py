@@ -98,6 +98,36 @@ def both_ends_of_vcc(bus: EeBus) -> None:
         bus.load(0x100, 0x33)
 
 
+def just_after_the_command(bus: EeBus) -> None:
+    """WE high for 1 us, Xicor's time, after the last byte of the command."""
+    bus.pause = 16 - bus.setup
+    bus.loads((*ENABLE, (0x100, 0x33)))
+
+
+def oe_high_a_tick_before(bus: EeBus) -> None:
+    """OE high 62.5 ns before WE falls: 10 ns are wanted."""
+    bus.set({CE: 0, OE: 0})
+    bus.address(0x100)
+    bus.wait(6)
+    bus.set({OE: HIGH})
+    bus.wait(1)
+    bus.set({WE: 0})
+    bus.drive(0x33)
+    bus.wait(3)
+    bus.set({WE: HIGH})
+
+
+def power_lost_in_a_page(bus: EeBus) -> None:
+    """A load, VCC off and on within a write cycle's time: the next load is a first one."""
+    bus.load(0x100, 0x33)
+    bus.release()
+    bus.down()
+    bus.power()
+    bus.standby()
+    bus.wait(5 * MS)
+    bus.load(0x101, 0x33)
+
+
 def strobe_without_select(bus: EeBus) -> None:
     """WE pulsed with CE high, addresses moving and nothing driven: no write, no rule."""
     bus.set({WE: 0})
@@ -124,6 +154,8 @@ def at_rest_with_vcc(bus: EeBus) -> None:
         slowest_loads,
         at_once_after_power_up,
         both_ends_of_vcc,
+        just_after_the_command,
+        oe_high_a_tick_before,
         strobe_without_select,
     ],
 )
@@ -131,6 +163,13 @@ def test_what_the_sheets_allow_is_clean(maker: str, wave: Wave) -> None:
     """The ends of every window are inside it."""
     judge, bus = watched(maker)
     wave(bus)
+    assert judge.violations == []
+
+
+def test_nothing_is_remembered_over_a_power_down() -> None:
+    """What was written before VCC went binds nothing after it."""
+    judge, bus = watched()
+    power_lost_in_a_page(bus)
     assert judge.violations == []
 
 

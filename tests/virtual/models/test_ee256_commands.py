@@ -156,6 +156,7 @@ def test_a_flash_probe_writes_an_unprotected_chip(probe: tuple[tuple[int, int], 
     at = probe[0][0]
     assert chip.cells[at] == 0x90
     assert chip.probe_wrote[0] == f"{at:04X}: 22 is now 90"
+    assert chip.stressed == []  # told once, as what it is
     assert chip.state()["probe_wrote"] == chip.probe_wrote
 
 

@@ -101,10 +101,8 @@ class Ee256(BusWritten):
         return self._busy or (self._maker.polls_at_once and bool(self._loads))
 
     def _opens_user(self, at: int) -> bool:
-        if not self._maker.high_voltage or not USER[0] <= at < USER[0] + USER[1]:
-            return False
-        a9 = self._raised.get(A9)
-        return a9 is not None and VH[0] <= a9 <= VH[1]
+        """A maker whose A9 stands no such level has no such bytes: there it is not raised but past its maximum."""
+        return VH[0] <= self._raised.get(A9, 0) <= VH[1] and USER[0] <= at < USER[0] + USER[1]
 
     # ---- loads, and what they come to ----
 

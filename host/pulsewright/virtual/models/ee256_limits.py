@@ -40,9 +40,8 @@ class Maker:
     name: str
     most: int  # plain pins, absolute maximum
     most_vcc: int
-    most_raised: int  # A9 and OE
+    most_raised: int  # A9 and OE; above `most`: user bytes and hardware erase
     least: int
-    high_voltage: bool  # user bytes, hardware erase
     cycle: int  # tWC, most
     load: tuple[int, int]  # tBLC, fall to fall: from memory, the table does not say between which edges
     oe_setup: int
@@ -73,7 +72,6 @@ MAKERS = {
             most_vcc=6_250,  # [S3b]
             most_raised=13_500,  # OE and A9 [S3b]
             least=-600,  # [S3b]
-            high_voltage=True,
             cycle=10 * MS,  # [S1, S74]
             load=(0, 150 * US),  # [S1, S74]
             oe_setup=0,  # [S74]
@@ -100,7 +98,6 @@ MAKERS = {
             most_vcc=7_000,  # [S78b]
             most_raised=7_000,  # no pin takes 12 V [S78b]
             least=-1_000,  # [S78b]
-            high_voltage=False,  # [S78b]
             cycle=10 * MS,  # 5 ms typical, 10 ms at most [S78b]
             load=(16, 100 * US),  # 1 us, 100 us [S78b]
             oe_setup=1,  # 10 ns [S78b]
@@ -127,7 +124,6 @@ MAKERS = {
             most_vcc=7_000,  # [S79]
             most_raised=6_500,  # no pin takes more [S79]
             least=-2_000,  # [S79]
-            high_voltage=False,  # [S79]
             cycle=5 * MS,  # [S10, S79]
             load=(2, 100 * US),  # 0.1 us, 100 us [S10, S79]
             oe_setup=0,  # [S79]
