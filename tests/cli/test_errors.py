@@ -91,7 +91,7 @@ def test_h9_the_word_alone_does_not_open_the_gate(capsys: pytest.CaptureFixture[
 
 def test_h9_word_and_button_burn_the_part(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> None:
     """With both, the part is burnt, and the record keeps the words."""
-    monkeypatch.setattr("pulsewright.virtual.bench.Board", lambda: dataclasses.replace(Board(), button=True))
+    monkeypatch.setattr("pulsewright.virtual.bench.Board", lambda **_: dataclasses.replace(Board(), button=True))
     path = nameless(Path("mine.toml"))
     Path("image.bin").write_bytes(bytes(16))
     main(["bench", "new", "b.bench", "--chip", "27e512"])
@@ -141,7 +141,8 @@ def test_a_range_outside_the_chip_is_wrong_usage(capsys: pytest.CaptureFixture[s
 
 def test_a_rail_that_stands_too_high_trips(capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch) -> None:
     """0.6 V above its step the raised rail is measured before any switch closes: exit 5, volts wanted and got."""
-    monkeypatch.setattr("pulsewright.virtual.bench.Board", lambda: dataclasses.replace(Board(), raised_offset_mv=600))
+    high = dataclasses.replace(Board(), raised_offset_mv=600)
+    monkeypatch.setattr("pulsewright.virtual.bench.Board", lambda **_: high)
     main(["bench", "new", "b.bench", "--chip", "27e512"])
     capsys.readouterr()
     facts = answer(capsys, "identify", "27e512", "--rig", "virtual:b.bench")

@@ -34,8 +34,8 @@ COMMANDS = list(leaves(make_parser()))
 def test_all_commands_of_this_stage_are_there() -> None:
     """The commands that the README's task table names."""
     assert {" ".join(words) for words, _ in COMMANDS} == {
-        "chips", "chip", "identify", "read", "blank-check", "erase", "burn", "verify", "protect", "define check", "sequence",
-        "rig show", "bench new", "bench show", "bench serve", "record list", "record show",
+        "chips", "chip", "identify", "read", "blank-check", "erase", "burn", "verify", "protect", "define check",
+        "sequence", "rig show", "bench new", "bench show", "bench serve", "record list", "record show",
     }  # fmt: skip
 
 

@@ -69,6 +69,15 @@ def test_a_block_with_too_little_or_too_much_to_write_trips(data: bytes) -> None
     assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.BAD_BLOCK)
 
 
+@pytest.mark.parametrize(("first", "data"), [(0, b"\x00\1\2\3\4"), (254, b"\x0f\1\2\3\4")])
+def test_a_block_with_nothing_to_write_or_over_a_pages_end_trips(first: int, data: bytes) -> None:
+    """A load without a word would poll for a word of before; one over a page's end would write another page's bytes."""
+    loop: list[Item] = [ins(Op.EACH_BLOCK, to="end"), ins(Op.EACH_WORD, to="block"), ins(Op.NEXT_WORD), Label("block")]
+    code = build([*past_gate(), *loop, ins(Op.NEXT_BLOCK), Label("end"), END], Flow.WRITE)
+    end = Host().run(code, permit_for(code), blocks=[(first, 4, data)])
+    assert (end.outcome, end.fault["code"]) == (Outcome.TRIPPED, Fault.BAD_BLOCK)
+
+
 def test_vcc_above_every_window_trips_before_it_has_settled() -> None:
     """Nothing in the permit is as high: the monitor does not wait for the settling time to be over."""
     narrow = (VccStep(VCC_5V, vcc(4_750), vcc(5_000), 200 * MS),)

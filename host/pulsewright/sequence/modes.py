@@ -34,7 +34,7 @@ def move_vcc(b: Builder, step: SupplyStep, rail_step: RailStep | None = None) ->
         b.edge(b.line_settle_ps)
         b.wait(0)
     b.emit(Op.RAIL, rail=Rail.VCC, step=target.number)
-    b.edge(max(b.rig.vcc.settle_ps, step.settle_ps))
+    b.edge(b.rig.vcc.settle_ps + step.settle_ps)  # the part's own wait begins when the supply is good
     b.wait(0)
     socket = b.rig.socket_vcc
     low, high = socket.count_at_least(step.min_mv), socket.count_at_most(step.max_mv)

@@ -25,6 +25,8 @@ from pulsewright.units import Rounding, ticks
 from pulsewright.wire.permit import NO_SWITCH, Permit, VccStep
 from pulsewright.wire.tables import Identity, Level
 
+_RAISED_VCC_MV = 5_500  # VCC above this is a raised level
+
 
 def _ceilings(b: Builder, modes: Iterable[str]) -> dict[int, int]:
     """Raised switch -> highest count any of these modes allows there."""
@@ -91,10 +93,11 @@ def make_permit(
 
     `self_timed`: ticks for which the part may be at work by itself when the program ends.
     """
-    modes = list(modes)
+    modes, vcc_used = list(modes), list(vcc_used)
     definition, rig = b.definition, b.rig
     switch, step, ceiling = NO_SWITCH, 0, 0
-    identity = Identity.VOUCHED_NONE if modes else Identity.NONE
+    over_vcc = any(definition.supplies[name].max_mv > _RAISED_VCC_MV for name, _ in vcc_used)
+    identity = Identity.VOUCHED_NONE if modes or over_vcc else Identity.NONE
     if definition.identify == "command":
         identity = Identity.WANTED
     elif definition.identify == "mode":

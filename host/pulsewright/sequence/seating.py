@@ -100,7 +100,7 @@ def full_vcc(b: Builder) -> None:
     step = b.definition.supplies[standby(b).vcc]
     with b.about(f"{step.name} to the socket, measured", where=step.where):
         b.emit(Op.RANGE, which=Range.FULL)
-        b.edge(max(b.rig.vcc.settle_ps, step.settle_ps))
+        b.edge(b.rig.vcc.settle_ps + step.settle_ps)  # the part's own wait begins when the supply is good
         b.wait(0)
         socket = b.rig.socket_vcc
         low, high = socket.count_at_least(step.min_mv), socket.count_at_most(step.max_mv)

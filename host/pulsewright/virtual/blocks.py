@@ -97,6 +97,9 @@ class Blocks:
         if len(mask) != mask_bytes or len(words) != count:
             raise BadBlock(Fault.BAD_BLOCK)
         chosen = [(first + at, words[at]) for at in range(count) if mask[at >> 3] >> (at & 7) & 1]
+        over_the_end = first % header.block_words + count > header.block_words  # of a page
+        if not chosen or over_the_end:
+            raise BadBlock(Fault.BAD_BLOCK)
         return Block(message.index, first, count, chosen)
 
     # ---- to the program -------------------------------------------------------------------------------------------

@@ -24,7 +24,6 @@ from pulsewright.sequence.proof.state import (
     PULSE,
     RELEASED,
     STROBE,
-    VCC,
     VCC_MOVED,
     WORD,
     WRITING,
@@ -147,8 +146,7 @@ def _set_ups(t: Tables, state: State, clocks: Clocks) -> None:
         t.need(since >= need, "H7", f"{text} before the strobe", f"{need} ticks", since)
     supply = t.definition.supplies[row.vcc] if row is not None else None
     need = at_least(max(supply.settle_ps if supply else 0, timing.least("tVCS")))
-    # counted from VCC's command, the rail's own settling inside it: the measurement only tells that it is over
-    stood = max(elapsed(clocks, VCC), elapsed(clocks, VCC_MOVED))
+    stood = elapsed(clocks, VCC_MOVED) - at_least(t.rig.vcc.settle_ps)  # counts from when the supply is good
     t.need(stood >= need, "H7", "set-up of VCC before the strobe", f"{need} ticks", stood)
 
 
