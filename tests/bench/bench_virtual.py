@@ -1,6 +1,7 @@
 """What a call costs: chip models and judge under the edges of a burn and of a read, in nanoseconds of processor time.
 
-A part with a shared OE/VPP raises it for each word, one with a VPP pin of its own once for all.
+A part with a shared OE/VPP raises it for each word, one with a VPP pin of its own once for all; one that is written on
+the bus takes pages, each polled until its write cycle is over and read back.
 Run from the top folder: `python -m tests.bench.bench_virtual`. It asserts nothing; the machine decides the numbers.
 """
 
@@ -13,6 +14,7 @@ from collections.abc import Callable, Sequence
 from pulsewright.virtual.interface import ChipModel, Levels
 from pulsewright.virtual.judge import Judge
 from pulsewright.virtual.models import make_model
+from tests.virtual.bus_wave import EeBus
 from tests.virtual.uv_wave import UvBus
 from tests.virtual.waveform import CE, OE, US, Bus
 
@@ -55,6 +57,18 @@ def burn_under_vpp(bus: UvBus) -> None:
         bus.word(at, at & 0xFF)
         bus.verify(at)
     bus.leave()
+
+
+def burn_pages(bus: EeBus) -> None:
+    """Pages of 64 bytes, polled and read back."""
+    for first in range(0, WORDS, 64):
+        bus.page(first, bytes(range(first & 0xFF, (first & 0xFF) + 64)))
+        bus.wait(150 * US)
+        bus.poll(first + 63, (first & 0xFF) + 63, 20_000 * US)
+        for at in range(first, first + 64):
+            bus.look(at)
+        bus.standby()
+        bus.wait(10 * US)
 
 
 def read(bus: Bus) -> None:
@@ -103,12 +117,13 @@ def _timed(calls: list[Call]) -> int:
 
 def main() -> None:
     """Prints a line for each job and each listener: the best of five runs."""
-    shared, own, shared_read, own_read = Bus(), UvBus(), Bus(), UvBus()
+    shared, own, shared_read, own_read, paged = Bus(), UvBus(), Bus(), UvBus(), EeBus(chip=make_model("28c256"))
     jobs: list[tuple[str, str, Bus, Callable[[], None]]] = [
         ("27e512", "burn", shared, lambda: burn(shared)),
         ("27e512", "read", shared_read, lambda: read(shared_read)),
         ("27c256", "burn", own, lambda: burn_under_vpp(own)),
         ("27c256", "read", own_read, lambda: read(own_read)),
+        ("28c256", "burn", paged, lambda: burn_pages(paged)),
     ]
     for name, job, bus, work in jobs:
         tape = Tape()

@@ -136,26 +136,6 @@ def test_a_stuck_address_outside_the_chip_is_refused() -> None:
     """The chip has no such word."""
     with pytest.raises(UsageMistake, match="outside"):
         Bench.fresh("27e512", "blank", faults=["stuck=0x10000,1,1"])
-    with pytest.raises(UsageMistake, match="outside"):
-        Bench.fresh("27e512", "blank", faults=["dead=0x10000"])
-
-
-def test_a_dead_cell_never_changes() -> None:
-    """Neither a program pulse nor an erase moves it, while its neighbour follows both."""
-    bench = Bench.fresh("27e512", b"\x5a\xff", faults=["dead=0", "dead=1"])
-    bus = Bus(chip=bench.chip)
-    bus.up()
-    for at in range(3):
-        bus.program(at, 0x00)
-    assert [bus.read(at, access=US) for at in range(3)] == [0x5A, 0xFF, 0x00]
-    bus.erase()
-    assert [bus.read(at, access=US) for at in range(3)] == [0x5A, 0xFF, 0xFF]
-
-
-def test_protection_is_no_fault_of_a_part_without() -> None:
-    """An EPROM has no software protection that could be on."""
-    with pytest.raises(UsageMistake, match="no software protection"):
-        Bench.fresh("27e512", "blank", faults=["protected"])
 
 
 def test_a_model_that_cannot_be_faulty_says_so(tmp_path: Path) -> None:
