@@ -80,23 +80,20 @@ def access_to(name: str) -> Access | None:
         import pwd
 
         status = Path(name).stat()
-        user = pwd.getpwuid(os.getuid())
-    except (ImportError, KeyError, OSError):
+    except (ImportError, OSError):
         return None
-    owner, group, members = str(status.st_uid), str(status.st_gid), list[str]()
-    with suppress(KeyError):
+    owner, group, user = str(status.st_uid), str(status.st_gid), str(os.getuid())
+    listed = False
+    with suppress(KeyError):  # a number without a name
         owner = pwd.getpwuid(status.st_uid).pw_name
     with suppress(KeyError):
-        entry = grp.getgrgid(status.st_gid)
-        group, members = entry.gr_name, entry.gr_mem
-    return Access(
-        owner=owner,
-        group=group,
-        mode=status.st_mode,
-        user=user.pw_name,
-        listed=user.pw_name in members or user.pw_gid == status.st_gid,
-        joined=status.st_gid in {os.getegid(), *os.getgroups()},
-    )
+        entry = pwd.getpwuid(os.getuid())
+        user, listed = entry.pw_name, entry.pw_gid == status.st_gid
+    with suppress(KeyError):
+        of_group = grp.getgrgid(status.st_gid)
+        group, listed = of_group.gr_name, listed or user in of_group.gr_mem
+    joined = status.st_gid in {os.getegid(), *os.getgroups()}
+    return Access(owner, group, status.st_mode, user, listed=listed, joined=joined)
 
 
 def holders_of(name: str, *, others: bool = False) -> tuple[Holder, ...]:
