@@ -15,8 +15,8 @@ from pulsewright.sequence.fuse import fuse
 from pulsewright.sequence.identity import pass_gate
 from pulsewright.sequence.levels import choose_vcc
 from pulsewright.sequence.lower import Lowering, modes_of, writes_bus
-from pulsewright.sequence.modes import enter, move_vcc, prove_level
-from pulsewright.sequence.permits import make_permit
+from pulsewright.sequence.modes import enter, move_vcc, narrow_vcc, prove_level
+from pulsewright.sequence.permits import make_permit, vcc_windows
 from pulsewright.sequence.seating import power_up
 from pulsewright.sequence.types import Sequence
 from pulsewright.units import Rounding, show_address, show_mv, ticks
@@ -63,6 +63,8 @@ def _finish(
     vcc_mv = b.state.vcc.mv if b.state.vcc else 0
     with b.about("end: everything down in order", part="power"):
         b.emit(Op.END)
+    used = [*_vcc_used(definition, b.rig, modes), *extra_vcc]
+    narrow_vcc(b, vcc_windows(definition, b.rig, used))
     b.items = fuse(b.items)
     passes = passes if flow is not Flow.NONE else 0
     words = (last - first + 1) * passes
@@ -77,8 +79,7 @@ def _finish(
             where=biggest.where,
         )
     raised = [name for name in modes if b.pins.raised_levels(definition.modes[name])]
-    used = _vcc_used(definition, b.rig, modes)
-    permit = make_permit(b, raised, [*used, *extra_vcc], code, busy)
+    permit = make_permit(b, raised, used, code, busy)
     return Sequence(
         kind=kind,
         title=title,

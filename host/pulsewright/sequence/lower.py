@@ -106,6 +106,7 @@ class Lowering:
             raise CannotMake(f"{step.timing} has no window: a pulse needs min and max", where=step.where)
         typ_ps = window.typ_ps if window.typ_ps is not None else (window.min_ps + window.max_ps) // 2
         level = Level.LOW if step.to == "L" else Level.HIGH
+        b.wait(0)
         b.emit(
             Op.PULSE,
             line=line_byte(b.pins.line(step.pin), level),
@@ -113,6 +114,7 @@ class Lowering:
             max=ticks(window.max_ps, Rounding.AT_MOST),
         )
         b.edge(b.line_settle_ps)
+        b.wait(0)
 
     # ---- looks, and what comes of them ------------------------------------------------------------
 

@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 from pulsewright.chip.model import Mode, SupplyStep
 from pulsewright.rig.model import RailStep
 from pulsewright.sequence.build import US, Builder
 from pulsewright.sequence.levels import choose_raised, choose_vcc, top_mv
 from pulsewright.units import Rounding, ticks
+from pulsewright.wire.ops import Instruction
+from pulsewright.wire.permit import VccStep
 from pulsewright.wire.tables import Channel, Level, Op, Rail
 
 _MEASURE_LIMIT_PS = 2_000 * US
@@ -36,15 +40,32 @@ def move_vcc(b: Builder, step: SupplyStep, rail_step: RailStep | None = None) ->
     b.emit(Op.RAIL, rail=Rail.VCC, step=target.number)
     b.edge(b.rig.vcc.settle_ps + step.settle_ps)  # the part's own wait begins when the supply is good
     b.wait(0)
-    socket = b.rig.socket_vcc
-    low, high = socket.count_at_least(step.min_mv), socket.count_at_most(step.max_mv)
-    limit = ticks(_MEASURE_LIMIT_PS, Rounding.AT_LEAST)
-    b.emit(Op.MEASURE, channel=Channel.SOCKET_VCC, low=low, high=high, limit=limit)
+    measure_vcc(b, step, target)
     b.state.vcc = target
     if target.mv >= floor and not b.state.high_driven:
         b.emit(Op.HIGH, how=1)
         b.state.high_driven = True
         b.edge(b.line_settle_ps)
+
+
+def measure_vcc(b: Builder, step: SupplyStep, rail_step: RailStep) -> None:
+    """Full VCC measured in its window; `narrow_vcc` makes it the window of all that the rail step serves."""
+    socket = b.rig.socket_vcc
+    low, high = socket.count_at_least(step.min_mv), socket.count_at_most(step.max_mv)
+    limit = ticks(_MEASURE_LIMIT_PS, Rounding.AT_LEAST)
+    b.vcc_looks.append((len(b.items), rail_step.number))
+    b.emit(Op.MEASURE, channel=Channel.SOCKET_VCC, low=low, high=high, limit=limit)
+
+
+def narrow_vcc(b: Builder, windows: Iterable[VccStep]) -> None:
+    """A rail step that serves several supplies is measured in the permit's window: VCC need not move between them."""
+    by_step = {one.step: one for one in windows}
+    for index, number in b.vcc_looks:
+        instruction, origin = b.items[index]
+        window = by_step.get(number)
+        if window is not None and isinstance(instruction, Instruction):
+            args = {**instruction.args, "low": window.low, "high": window.high}
+            b.items[index] = (Instruction(instruction.op, args), origin)
 
 
 def move_raised_rail(b: Builder, wanted: dict[str, SupplyStep]) -> None:

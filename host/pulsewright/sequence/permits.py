@@ -39,7 +39,7 @@ def _ceilings(b: Builder, modes: Iterable[str]) -> dict[int, int]:
     return ceilings
 
 
-def _vcc_steps(definition: Definition, rig: Rig, used: Iterable[tuple[str, RailStep]]) -> tuple[VccStep, ...]:
+def vcc_windows(definition: Definition, rig: Rig, used: Iterable[tuple[str, RailStep]]) -> tuple[VccStep, ...]:
     """Each VCC rail step in use with the tightest window of the supply steps that use it."""
     windows: dict[int, tuple[int, int]] = {}
     for name, rail_step in used:
@@ -114,7 +114,7 @@ def make_permit(
         identify_step=step,
         identify_ceiling=ceiling,
         raised=tuple(sorted(_ceilings(b, modes).items())),
-        vcc=_vcc_steps(definition, rig, vcc_used),
+        vcc=vcc_windows(definition, rig, vcc_used),
         vcc_to=b.pins.vcc_mask,
         drives=_drives(definition, b.pins),
         safe=b.pins.pattern(_safe_mode(definition, b.pins, modes)),

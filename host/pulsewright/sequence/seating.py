@@ -5,6 +5,7 @@ from __future__ import annotations
 from pulsewright.chip.model import Mode
 from pulsewright.sequence.build import US, Builder
 from pulsewright.sequence.levels import choose_vcc
+from pulsewright.sequence.modes import measure_vcc
 from pulsewright.units import Rounding, ticks
 from pulsewright.wire.ops import line_byte
 from pulsewright.wire.tables import Bias, Channel, Fail, Group, Level, Op, Rail, Range
@@ -102,12 +103,11 @@ def full_vcc(b: Builder) -> None:
         b.emit(Op.RANGE, which=Range.FULL)
         b.edge(b.rig.vcc.settle_ps + step.settle_ps)  # the part's own wait begins when the supply is good
         b.wait(0)
-        socket = b.rig.socket_vcc
-        low, high = socket.count_at_least(step.min_mv), socket.count_at_most(step.max_mv)
-        b.emit(Op.MEASURE, channel=Channel.SOCKET_VCC, low=low, high=high, limit=_measure_limit_ticks())
-        if b.state.vcc is not None and b.state.vcc.mv >= b.rig.driven_from_mv:
-            b.emit(Op.HIGH, how=1)
-            b.state.high_driven = True
+        if b.state.vcc is not None:
+            measure_vcc(b, step, b.state.vcc)
+            if b.state.vcc.mv >= b.rig.driven_from_mv:
+                b.emit(Op.HIGH, how=1)
+                b.state.high_driven = True
 
 
 def bias_looks(b: Builder) -> None:
