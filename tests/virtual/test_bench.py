@@ -10,7 +10,6 @@ import pytest
 
 from pulsewright.errors import FileMistake, RigFileMistake, UsageMistake
 from pulsewright.virtual.bench import Bench
-from pulsewright.virtual.faults import FAULTS, parse_faults
 from pulsewright.virtual.judge import KEPT, Judge
 from pulsewright.virtual.seat import wiring
 from tests.virtual.test_models import example
@@ -46,81 +45,6 @@ def test_other_contents_are_refused(contents: str | bytes) -> None:
 
 
 # ---- faults ----
-
-
-def test_faults_mean_what_they_say() -> None:
-    """Each fault's arguments arrive, with their units and bases."""
-    faults = parse_faults(
-        ["reversed", "wrong-id=C2,7", "stuck=0x1F0,0x81,1", "stuck=5,255,0", "slow=20,3", "rail-sag=20"]
-    )
-    more = parse_faults(["dead=0x40", "dead=7", "protected"]).chip
-    assert faults.seat == "reversed"
-    assert faults.chip.wrong_id == (0xC2, 7)
-    assert faults.chip.stuck == ((0x1F0, 0x81, 1), (5, 255, 0))
-    assert (faults.chip.slow_percent, faults.chip.slow_pulses) == (20, 3)
-    assert faults.raised_limit_ua == 20_000
-    assert (more.dead, more.protected) == ((0x40, 7), True)
-    assert not faults.chip.protected
-
-
-@pytest.mark.parametrize(
-    ("text", "word"),
-    [
-        ("reverse", "did you mean reversed?"),
-        ("wrongid=1,2", "did you mean wrong-id?"),
-        ("xyzzy", "bench new --help"),
-    ],
-)
-def test_an_unknown_fault_gets_the_nearest_name(text: str, word: str) -> None:
-    """A slip is answered with the right word, anything else with where the list is."""
-    with pytest.raises(UsageMistake) as caught:
-        parse_faults([text])
-    assert word in caught.value.hint
-
-
-@pytest.mark.parametrize(
-    "text",
-    [
-        *(
-            "absent=1",
-            "absent=",
-            "wrong-id=DA",
-            "wrong-id=DA,8,1",
-            "wrong-id=GG,1",
-            "slow=0,3",
-            "slow=101,3",
-            "slow=5,0",
-        ),
-        *("slow=5", "stuck=1,2", "stuck=1,2,4", "stuck=-1,1,1", "rail-sag=x", "rail-sag", "rail-sag=-5"),
-    ],
-)
-def test_wrong_arguments_are_refused_with_the_form(text: str) -> None:
-    """Too few, too many, not a number, out of range: the answer shows what stands there and what is wanted."""
-    with pytest.raises(UsageMistake) as caught:
-        parse_faults([text])
-    assert caught.value.got == text
-    assert caught.value.wanted
-
-
-def test_a_chip_sits_in_one_way_only() -> None:
-    """Two ways to sit contradict each other."""
-    with pytest.raises(UsageMistake, match="one way"):
-        parse_faults(["reversed", "absent"])
-
-
-def test_every_fault_has_a_sentence_and_is_known() -> None:
-    """The table that the help prints and what is understood are the same list."""
-    arguments = {
-        "HEX,HEX": "=1,2",
-        "ADDR,MASK,BITS": "=1,3,2",
-        "PERCENT,PULSES": "=1,2",
-        "MA": "=1",
-        "ADDR": "=1",
-        "": "",
-    }
-    for name, (form, about) in FAULTS.items():
-        assert parse_faults([name + arguments[form]]).texts
-        assert about
 
 
 def test_the_chips_own_faults_reach_the_chip() -> None:

@@ -17,6 +17,7 @@ from typing import Any
 
 from pulsewright.errors import FileMistake, Problem, RigFileMistake, UsageMistake, Where
 from pulsewright.files import read_whole, write_whole
+from pulsewright.virtual.bad_contacts import BadContacts
 from pulsewright.virtual.board import Board
 from pulsewright.virtual.faults import Faults, parse_faults
 from pulsewright.virtual.interface import ChipModel, PinHistory, Violation
@@ -48,6 +49,7 @@ class Bench:
         self.faults: Faults = parse_faults(faults)
         self.chip = self._make()
         wiring(self.chip.limits.package, self.faults.seat)  # a package that cannot sit so is a mistake now
+        self._check_pins()
         self.boots = 0
         self.judge: Judge | None = None
         self._pins: dict[int, PinHistory] = {}
@@ -123,11 +125,21 @@ class Bench:
         limits = self.chip.limits
         seat = self.faults.seat
         chip = EmptySeat(self.chip) if seat == "absent" else self.chip
-        judge = self.judge = Judge(limits, misplaced=bool(seat), busy=getattr(chip, "is_busy", None))
-        board = Board(button=self.jumper)
-        if self.faults.raised_limit_ua is not None:
-            board = replace(board, raised_limit_ua=self.faults.raised_limit_ua)
+        misplaced = bool(seat or self.faults.lifted or self.faults.touching)
+        judge = self.judge = Judge(limits, misplaced=misplaced, busy=getattr(chip, "is_busy", None))
+        board = replace(Board(button=self.jumper), **self.faults.board)
+        if self.faults.lifted or self.faults.touching:
+            chip = BadContacts(chip, self.faults.lifted, self.faults.touching)
         return VirtualRig(Socket(chip, wiring(limits.package, seat), (judge,)), boot=self.boots, board=board)
+
+    def _check_pins(self) -> None:
+        """UsageMistake for a fault of a pin that the chip does not have."""
+        for pin in (*self.faults.lifted, *(pin for pair in self.faults.touching for pin in pair)):
+            if pin > self.chip.pins:
+                raise UsageMistake(
+                    f"{self.chip_name} has no pin {pin}", wanted=f"1..{self.chip.pins}", got=str(pin),
+                    hint="faults count the pins of the chip, not the socket's positions",
+                )  # fmt: skip
 
     def _make(self) -> ChipModel:
         if self.model is None:

@@ -58,7 +58,9 @@ class Board:
     diode_mv: int = 800  # VCC over a chip's diodes through the probe: from memory
     raised_settle_ticks: int = 22 * TICKS_PER_MS  # 99 % with 470 nF, up; down with 12 k about 18 ms [sim, calc]
     raised_limit_ua: int = 50_000  # the fault "rail-sag" lowers it
-    raised_offset_mv: int = 0  # what the rail stands above its nominal step
+    raised_offset_mv: int = 0  # what the rail stands above its nominal step; the fault "rail-offset"
+    vcc_offset_mv: int = 0  # the same of VCC; the fault "vcc-offset"
+    fall_more_ticks: int = 0  # the fault "slow-fall"
     raised_ohm_tenths: int = 5  # a raised switch: 28 mV at 50 mA [sim]
     limiter_position: int = 26  # A9: mirror with limiter
     limiter_drop_mv: int = 91  # at no current [sim]
@@ -72,8 +74,8 @@ class Board:
     def fall_ticks(self, position: int, mv: int) -> int:
         """Switch-off to 0.8 V: 6.3 us up to 14 V, 10 us above, 12 us at A9 [sim]."""
         if position == self.limiter_position:
-            return 192
-        return 101 if mv <= 14_500 else 160
+            return 192 + self.fall_more_ticks
+        return (101 if mv <= 14_500 else 160) + self.fall_more_ticks
 
     def drop_mv(self, position: int, load_ua: int) -> int:
         """What a closed raised switch loses at a load."""

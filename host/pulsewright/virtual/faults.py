@@ -1,14 +1,16 @@
 """Faults a bench can be given: what each does, how it is written, and its parsed form.
 
-Three kinds: how the chip sits in the socket (absent, reversed, shifted), what is wrong with the chip itself (wrong-id,
-slow, stuck, dead, protected), and what is wrong with the rig around it (rail-sag).
+Three kinds: how the chip sits in the socket (absent, reversed, shifted, lifted, short), what is wrong with the chip
+itself (wrong-id, slow, stuck, dead, weak, under-erased, protected), and what is wrong with the rig around it (rail-sag,
+rail-offset, vcc-offset, slow-fall).
 """
 
 from __future__ import annotations
 
 import difflib
-from collections.abc import Iterable
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
 from pulsewright.errors import UsageMistake
 
@@ -17,12 +19,19 @@ FAULTS: dict[str, tuple[str, str]] = {
     "absent": ("", "no chip in the socket"),
     "reversed": ("", "the chip turned round: pin 1 where the last pin belongs"),
     "shifted": ("", "the chip one row of contacts too far from the bottom of the socket"),
+    "lifted": ("PIN", "that pin of the chip has no contact"),
+    "short": ("PIN,PIN", "those two pins of the chip touch"),
     "wrong-id": ("HEX,HEX", "the chip answers these ID bytes: manufacturer, device"),
     "stuck": ("ADDR,MASK,BITS", "at that address the bits under MASK always read BITS and never change"),
     "slow": ("PERCENT,PULSES", "so many of the cells (or pages) need so many pulses (or write cycles' time)"),
     "dead": ("ADDR", "the word at that address never takes a new value"),
+    "weak": ("ADDR,MASK,MV", "fading: the bits under MASK read 1 at a VCC above so many millivolts"),
+    "under-erased": ("ADDR,MASK,MV", "the bits under MASK read 0 at a VCC below so many millivolts"),
     "protected": ("", "software protection is on at the start"),
     "rail-sag": ("MA", "the raised rail gives no more than so many milliamperes and sags above"),
+    "rail-offset": ("MV", "the raised rail stands so many millivolts off its step (-300: below)"),
+    "vcc-offset": ("MV", "VCC stands so many millivolts off its step (-300: below)"),
+    "slow-fall": ("US", "raised positions take so many microseconds more to fall"),
 }
 SEATS = ("absent", "reversed", "shifted")
 
@@ -61,40 +70,51 @@ class Faults:
     texts: tuple[str, ...] = ()
     seat: str = ""  # one of SEATS, or "" for a chip that sits as it should
     chip: ChipFaults = field(default_factory=ChipFaults)
-    raised_limit_ua: int | None = None
+    board: Mapping[str, Any] = field(default_factory=dict)  # what of the Board is other, by its fields
+    lifted: tuple[int, ...] = ()  # chip pins
+    touching: tuple[tuple[int, int], ...] = ()  # pairs of chip pins
+
+
+# faults of the rig: field of the Board, and how many of its units one of the argument's is
+_OF_BOARD = {
+    "rail-sag": ("raised_limit_ua", 1_000),
+    "rail-offset": ("raised_offset_mv", 1),
+    "vcc-offset": ("vcc_offset_mv", 1),
+    "slow-fall": ("fall_more_ticks", 16),
+}
 
 
 def parse_faults(texts: Iterable[str]) -> Faults:
     """The meaning of texts such as "reversed" or "slow=5,3"; UsageMistake for an unknown name or wrong arguments."""
     given = tuple(texts)
-    seat = ""
-    wrong_id: tuple[int, int] | None = None
-    stuck: list[tuple[int, int, int]] = []
-    slow = (0, 1)
-    dead: list[int] = []
-    protected = False
-    limit_ua: int | None = None
-    for text in given:
-        name, numbers = _parse_one(text)
-        if name in SEATS:
-            if seat and seat != name:
-                wanted = f"one of {', '.join(SEATS)}"
-                raise UsageMistake("a chip sits in one way only", wanted=wanted, got=f"{seat}, {name}")
-            seat = name
-        elif name == "wrong-id":
-            wrong_id = (numbers[0], numbers[1])
-        elif name == "stuck":
-            stuck.append((numbers[0], numbers[1], numbers[2]))
-        elif name == "slow":
-            slow = (numbers[0], numbers[1])
-        elif name == "dead":
-            dead.append(numbers[0])
-        elif name == "protected":
-            protected = True
-        else:
-            limit_ua = numbers[0] * 1000
-    chip = ChipFaults(wrong_id, tuple(stuck), *slow, dead=tuple(dead), protected=protected)
-    return Faults(given, seat, chip, limit_ua)
+    parsed = [_parse_one(text) for text in given]
+
+    def of(name: str) -> list[tuple[int, ...]]:
+        return [numbers for one, numbers in parsed if one == name]
+
+    seats = list(dict.fromkeys(name for name, _ in parsed if name in SEATS))
+    if len(seats) > 1:
+        raise UsageMistake(
+            "a chip sits in one way only",
+            wanted=f"one of {', '.join(SEATS)}",
+            got=", ".join(seats),
+            hint="leave all but one out",
+        )
+    weak = [(at, mask, mv, False) for at, mask, mv in of("weak")]
+    weak += [(at, mask, mv, True) for at, mask, mv in of("under-erased")]
+    slow, wrong = of("slow"), of("wrong-id")
+    chip = ChipFaults(
+        wrong_id=(wrong[-1][0], wrong[-1][1]) if wrong else None,
+        stuck=tuple((at, mask, bits) for at, mask, bits in of("stuck")),
+        slow_percent=slow[-1][0] if slow else 0,
+        slow_pulses=slow[-1][1] if slow else 1,
+        weak=tuple(weak),
+        dead=tuple(at for (at,) in of("dead")),
+        protected=bool(of("protected")),
+    )
+    board = {field: numbers[0] * unit for name, (field, unit) in _OF_BOARD.items() for numbers in of(name)}
+    touching = tuple((a, b) for a, b in of("short"))
+    return Faults(given, seats[0] if seats else "", chip, board, tuple(pin for (pin,) in of("lifted")), touching)
 
 
 def _parse_one(text: str) -> tuple[str, tuple[int, ...]]:
@@ -114,6 +134,8 @@ def _parse_one(text: str) -> tuple[str, tuple[int, ...]]:
     if len(parts) != len(wanted) or ("=" in text and not wanted):
         raise UsageMistake(f"the fault {name} has other arguments", wanted=wish, got=text)
     numbers = tuple(_number(part, kind, wish, text) for part, kind in zip(parts, wanted, strict=True))
+    if name == "short" and numbers[0] == numbers[1]:
+        raise UsageMistake("a pin always touches itself", wanted="two pins", got=text, hint="short=1,2")
     if name == "stuck" and numbers[2] & ~numbers[1]:
         raise UsageMistake("stuck bits outside their mask", wanted="BITS within MASK", got=text)
     return name, numbers
@@ -128,6 +150,9 @@ _ARGUMENTS = {
     "PERCENT": (10, 1, 100),
     "PULSES": (10, 1, 10_000),
     "MA": (10, 0, 1_000),
+    "MV": (10, -20_000, 20_000),
+    "US": (10, 0, 1_000_000),
+    "PIN": (10, 1, 40),
 }
 
 

@@ -38,6 +38,7 @@ class Supplied(Contacts):
 
     def set_rail(self, t: int, mv: int) -> None:
         """The VCC rail to another level; the socket follows when it is connected."""
+        mv += self.board.vcc_offset_mv if mv else 0
         self.rail.move(t, mv, self.board.vcc_settle_ticks)
         if self.range != Range.OFF:
             self._ramp_vcc(t, mv, self.board.vcc_settle_ticks)
@@ -110,6 +111,8 @@ class Supplied(Contacts):
         rail = self.raised_rail.level(t)
         if self._sag:
             rail = self._sagged(t, rail)
+        if position == self.board.limiter_position and self._asked_ua(t, position) > self.board.limiter_ua * 10:
+            return self._plain(position) or 0  # a short behind the limiter: nothing is left of the level
         drop = self.board.drop_mv(position, self.load_ua(t, position))
         return max(rail - drop, self._plain(position) or 0)
 
@@ -204,12 +207,13 @@ class Supplied(Contacts):
             level = level * self.board.vcc_limit_ua // load
         return max(0, level - load * self.board.probe_ohm // 1_000) if self.range == Range.PROBE else level
 
+    def _asked_ua(self, t: int, position: int) -> int:
+        pin = self._pin_at[position]
+        return 0 if not pin or self.chip is None or self._miswired else self.chip.draw_ua(t, pin)
+
     def load_ua(self, t: int, position: int) -> int:
         """What the chip takes at a position, microamperes; the limiter's share at most where there is one."""
-        pin = self._pin_at[position]
-        if not pin or self.chip is None or self._miswired:
-            return 0
-        load = self.chip.draw_ua(t, pin)
+        load = self._asked_ua(t, position)
         return min(load, self.board.limiter_ua) if position == self.board.limiter_position else load
 
 
