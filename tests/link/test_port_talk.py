@@ -8,6 +8,8 @@ import subprocess
 import pytest
 
 from pulsewright.errors import LinkFault, OtherFirmware, RigNoise, RigRestarted, RigSilent
+from pulsewright.link.machine import PortHere
+from pulsewright.link.ports import ask_port
 from pulsewright.link.serial_port import SerialPort
 from pulsewright.link.session import Session
 from pulsewright.link.transport import Timing
@@ -151,6 +153,32 @@ def test_a_session_never_believes_in_a_boot_that_is_over() -> None:
         assert boot in {None, rig.boot}
         told += boot is None
     assert told > 30
+
+
+def test_a_reset_of_an_idle_rig_at_a_high_rate_is_told_as_such() -> None:
+    """The rig has fallen back to the rate of greetings and is not heard; it greets again, and nothing was running."""
+    desk = Desk()
+    desk.session.connect()
+    reset(desk.rig)
+    with pytest.raises(RigRestarted, match="while no sequence was running") as caught:
+        desk.session.run(sequence(Flow.READ))
+    assert caught.value.got == "boot number 8"
+
+
+def test_a_port_is_given_back_whatever_was_on_it(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Asking ends with the port closed, after silence and after a greeting."""
+    closed = []
+    close = SerialPort.close
+
+    def counted(port: SerialPort) -> None:
+        closed.append(port.name)
+        close(port)
+
+    monkeypatch.setattr(SerialPort, "close", counted)
+    with pty() as port, board(FakeRig()) as name:
+        stop_the_clock(monkeypatch, {port.name: 0})
+        stages = [ask_port(PortHere(one)).stage for one in (port.name, name)]
+        assert (stages, closed) == (["silent", "rig"], [port.name, name])
 
 
 def test_a_port_that_goes_while_it_is_used_is_lost() -> None:
