@@ -361,10 +361,10 @@ def test_h10_at_a_terminal_asks_and_takes_yes_only(desk: Desk) -> None:
             assert child.exitstatus == exit_code
 
 
-def test_a_missing_port_is_a_link_fault(desk: Desk) -> None:
+def test_a_missing_port_is_told_as_such(desk: Desk) -> None:
     """Exit 5, named."""
     answer = desk("identify", "27e512", "--rig", "/dev/does-not-exist")
-    assert (answer["exit"], answer["error"]) == (5, "LinkFault")
+    assert (answer["exit"], answer["error"], answer["stage"]) == (5, "PortMissing", "missing")
     assert "/dev/does-not-exist" in json.dumps(answer)
 
 
