@@ -58,7 +58,7 @@ def test_page_and_way_of_writing_are_the_tables() -> None:
     loaded = load(str(GOOD))
     assert loaded.page == 64
     assert loaded.write is not None
-    assert loaded.write == BusWrite("write", "WE", "L", "tWP", "tBLC", "tSCE", loaded.write.where)
+    assert loaded.write == BusWrite("write", "WE", "L", "tWP", "tBLC", "tSCE", loaded.write.where, begin_ps=120_000_000)
 
 
 def test_identify_by_command_has_both_commands_and_waits_for_the_chip() -> None:

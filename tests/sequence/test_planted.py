@@ -209,7 +209,7 @@ def end_left_out(patch: pytest.MonkeyPatch) -> None:
 
 def raised_kept(patch: pytest.MonkeyPatch) -> None:
     """H4: the raised level stays whatever the next mode wants."""
-    patch.setattr(modes, "open_switches", lambda b, keep: None)
+    patch.setattr(modes, "open_switches", lambda b, keep, **_: None)
 
 
 def standby_taken_for_safe(patch: pytest.MonkeyPatch) -> None:

@@ -244,7 +244,14 @@ def _write(tree: Tree) -> BusWrite | None:
         gap=table.get("gap", ""),
         busy=table.get("busy", ""),
         where=tree.places.where(("write",)),
+        begin_ps=_longest(tree, table.get("gap", "")),
     )
+
+
+def _longest(tree: Tree, name: str) -> int:
+    """The maximum of a timing parameter, 0 where it has none."""
+    window = windows(tree).get(name)
+    return window.max_ps or 0 if window is not None else 0
 
 
 def _identify_command(builder: StepBuilder) -> CommandIdentify | None:

@@ -237,6 +237,7 @@ class BusWrite:
     gap: str = ""
     busy: str = ""
     where: Where = field(default_factory=Where)
+    begin_ps: int = 0  # so long after the last load the part has surely begun: the gap's longest maximum over all rows
 
 
 @dataclass(frozen=True)

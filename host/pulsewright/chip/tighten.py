@@ -51,6 +51,9 @@ def tightest(rows: Sequence[Definition], base: Definition | None = None) -> Tigh
     if merged.identify_command is not None:
         settles = [row.identify_command.settle_ps for row in rows if row.identify_command is not None]
         merged = replace(merged, identify_command=replace(merged.identify_command, settle_ps=max(settles)))
+    if merged.write is not None:
+        begins = [row.write.begin_ps for row in rows if row.write is not None]
+        merged = replace(merged, write=replace(merged.write, begin_ps=max(begins)))
     return Tightest(_with_steps(merged, rows[0] if base is None else base), tuple(problems))
 
 
@@ -91,7 +94,7 @@ _BY_KEY = {
     "verify": "verify",
     **{f"chip.{name}" if name != "pins" else name: name for name in _IN_COMMON},
 }
-_NO_MATTER = ("where", "source", "settle_ps", "current_ua", "limits_known")  # or tightened
+_NO_MATTER = ("where", "source", "settle_ps", "current_ua", "limits_known", "begin_ps")  # or tightened
 
 
 def apart(rows: Sequence[Definition]) -> tuple[str, ...]:

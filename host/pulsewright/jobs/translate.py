@@ -299,7 +299,7 @@ def _poll(story: Story) -> PulsewrightError:
         step=story.step(),
         got=story.word(story.fault.sample),
         did=MADE_SAFE,
-        hint="is the chip write-protected?",
+        hint="the part took longer than its sheet allows: is it another part, or another maker's? else it is worn",
     )
 
 

@@ -20,6 +20,7 @@ _SET_UPS = ("tAS", "tDS", "tOES", "tCS")
 _HOLDS = ("tAH", "tDH", "tOEH", "tCH", "tWPH")
 _KINDS = {"DQ7": PollKind.DATA_BIT_7, "DQ6": PollKind.TOGGLE_6}
 _MOST_MANTISSA = 255
+_LOOKS = 128  # so many looks in the longest time at most: the end is seen within 1 % of it
 
 
 @dataclass(frozen=True)
@@ -123,7 +124,7 @@ def end_load(b: Builder) -> None:
     """The part takes no more loads: it begins its own work at the latest when the load gap is over."""
     if b.state.written:
         write = bus_of(b)
-        b.wait(b.timing_max_ps(write.gap))
+        b.wait(write.begin_ps)
         b.state.written = False
 
 
@@ -139,8 +140,10 @@ def poll(b: Builder, step: PollStep) -> None:
         raise CannotMake(f"a poll in mode {step.mode} would move a supply", where=step.where)
     b.wait(0)
     access_ps = b.line_settle_ps + b.access_ps(step.mode)
+    most_ps = b.timing_max_ps(step.timing)
     gap_ps = b.line_settle_ps + max(b.timing_max_ps("tDF"), b.timing_min_ps("tOEHP"), b.timing_min_ps("tOEH"))
-    limit = ticks(b.timing_max_ps(step.timing) + access_ps + gap_ps, Rounding.AT_LEAST)
+    gap_ps = max(gap_ps, most_ps // _LOOKS)
+    limit = ticks(most_ps + access_ps + gap_ps, Rounding.AT_LEAST)
     mantissa, exponent = _scaled(limit)
     b.emit(
         Op.POLL,

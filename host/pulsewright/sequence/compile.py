@@ -253,4 +253,4 @@ def _busy(b: Builder, method: Method) -> int:
     write = b.definition.write
     if write is None or not writes_bus((*method.steps, *method.finally_)):
         return 0
-    return ticks(b.timing_max_ps(write.busy) + b.timing_max_ps(write.gap), Rounding.AT_LEAST)
+    return ticks(b.timing_max_ps(write.busy) + write.begin_ps, Rounding.AT_LEAST)

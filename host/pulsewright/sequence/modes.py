@@ -14,6 +14,7 @@ from pulsewright.wire.permit import VccStep
 from pulsewright.wire.tables import Channel, Level, Op, Rail
 
 _MEASURE_LIMIT_PS = 2_000 * US
+_CLEAR_ABOVE_VCC_MV = 300  # a position that is no more than this above VCC is no longer raised (H5)
 
 
 def raised_steps(b: Builder, mode: Mode) -> dict[str, SupplyStep]:
@@ -96,8 +97,12 @@ def measure_raised(b: Builder, wanted: dict[str, SupplyStep]) -> None:
         b.emit(Op.MEASURE, channel=Channel.POSITION + switch.number, low=low, high=high, limit=limit)
 
 
-def open_switches(b: Builder, keep: dict[str, SupplyStep]) -> None:
-    """Opens raised switches but those of the pins of `keep`; the longest fall passes before anything else."""
+def open_switches(b: Builder, keep: dict[str, SupplyStep], *, look: bool = False) -> None:
+    """Opens raised switches but those of the pins of `keep`; the longest fall passes before anything else.
+
+    `look`: each is then measured to be gone, and waited for as long as the rig file allows. A word read under a level
+    that falls too slowly would be an ID byte, or nothing.
+    """
     stay = switch_mask(b, keep)
     going = b.state.switches & ~stay
     if not going:
@@ -106,6 +111,12 @@ def open_switches(b: Builder, keep: dict[str, SupplyStep]) -> None:
     b.edge(max(s.fall_ps for s in b.rig.switches if going >> s.number & 1))
     b.wait(0)
     b.state.switches &= stay
+    if look and b.state.vcc is not None:
+        gone_mv = b.state.vcc.mv + b.state.vcc.error_mv + _CLEAR_ABOVE_VCC_MV
+        limit = ticks(b.rig.fall_limit_ps, Rounding.AT_LEAST)
+        for switch in (one for one in b.rig.switches if going >> one.number & 1):
+            high = switch.scaling.count_at_most(gone_mv)
+            b.emit(Op.MEASURE, channel=Channel.POSITION + switch.number, low=0, high=high, limit=limit)
     b.state.levels = {pin: level for pin, level in b.state.levels.items() if pin in keep}
 
 
@@ -175,7 +186,7 @@ def enter(
     if not drive:
         drives = None
     wanted = raised_steps(b, mode)
-    open_switches(b, _kept(b, mode, wanted))
+    open_switches(b, _kept(b, mode, wanted), look=not word)
     if drives is None:
         b.release()
     rising = {role: level for role, level in levels.items() if level is Level.HIGH}
