@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import dataclasses
+import random
 
 from hypothesis import given
 from hypothesis import strategies as st
 
 from pulsewright.chip.load import load
-from pulsewright.jobs.plan import BLOCK_WORDS, change, unchanging_lines, verify_steps, write_blocks
+from pulsewright.jobs.plan import BLOCK_WORDS, change, joined_lines, unchanging_lines, verify_steps, write_blocks
 from pulsewright.jobs.pulses import tries_of
 from pulsewright.rig.file import load_rig
 
@@ -79,3 +80,15 @@ def test_an_address_line_that_changes_nothing_is_named() -> None:
     assert unchanging_lines(mixed + mixed) == [10]
     assert unchanging_lines(mixed) == []
     assert unchanging_lines(bytes(1024)) == []
+
+
+def test_address_lines_that_touch_are_told_as_a_pair() -> None:
+    """Whichever level wins where they differ; a chip with a line that changes nothing, or a plain one, has no pair."""
+    data = random.Random(4).randbytes(1024)
+    low_wins = bytes(data[at & ~0x60] if (at >> 5 & 1) != (at >> 6 & 1) else data[at] for at in range(1024))
+    high_wins = bytes(data[at | 0x60] if (at >> 5 & 1) != (at >> 6 & 1) else data[at] for at in range(1024))
+    assert joined_lines(low_wins) == [(5, 6)]
+    assert joined_lines(high_wins) == [(5, 6)]
+    assert joined_lines(data) == []
+    assert joined_lines(data[:256] * 4) == []
+    assert joined_lines(bytes(1024)) == []

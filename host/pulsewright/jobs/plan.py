@@ -140,3 +140,28 @@ def unchanging_lines(data: bytes) -> list[int]:
         if all(data[at : at + half] == data[at + half : at + 2 * half] for at in range(0, size, 2 * half)):
             found.append(bit)
     return found
+
+
+def joined_lines(data: bytes) -> list[tuple[int, int]]:
+    """Pairs of address bits that act as one: where they differ, the data is that of both low, or that of both high.
+
+    Two address pins that touch look so, whichever level wins. Only for a whole chip, a power of two of words, and only
+    bits that change the data at all; [] for uniform data.
+    """
+    size = len(data)
+    if size < 4 or size & (size - 1) or len(set(data)) == 1:
+        return []
+    still = unchanging_lines(data)
+    bits = [bit for bit in range(size.bit_length() - 1) if bit not in still]
+    return [(low, high) for low in bits for high in bits if low < high and _act_as_one(data, low, high)]
+
+
+def _act_as_one(data: bytes, low: int, high: int) -> bool:
+    a, b = 1 << low, 1 << high
+    step = max(1, len(data) // 256 | 1)  # an odd stride meets every value of every bit: most pairs fall here at once
+    for at in (*range(0, len(data), step), *range(len(data))):
+        if not at & (a | b) and not data[at | a] == data[at | b] == data[at]:
+            return all(
+                data[one | a] == data[one | b] == data[one | a | b] for one in range(len(data)) if not one & (a | b)
+            )
+    return True

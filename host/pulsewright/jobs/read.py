@@ -7,7 +7,7 @@ from pulsewright.image.compare import compare
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.margins import verdicts
-from pulsewright.jobs.plan import BLOCK_WORDS, unchanging_lines, verify_steps
+from pulsewright.jobs.plan import BLOCK_WORDS, joined_lines, unchanging_lines, verify_steps
 from pulsewright.jobs.record import crc_text
 from pulsewright.link.blocks import requests
 from pulsewright.link.results import RunResult
@@ -93,6 +93,10 @@ def _work(ctx: JobContext) -> JobResult:
     if still:
         names = ", ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in still)
         lines.append(f"the data never changes with {names}: open pin or repeated image")
+    pairs = joined_lines(data) if ctx.words == definition.words else []
+    for pair in pairs:
+        pins = " and ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in pair)
+        lines.append(f"{pins} act as one: do the pins touch?")
     facts: dict[str, object] = {
         **id_facts(definition, result),
         "words": len(data),
@@ -100,6 +104,7 @@ def _work(ctx: JobContext) -> JobResult:
         "crc32": crc_text(data),
         "blank_words": blank,
         "unchanging_lines": [f"A{bit}" for bit in still],
+        "joined_lines": [[f"A{bit}" for bit in pair] for pair in pairs],
         "vcc_mv": step,
         "margins": margins,
     }
