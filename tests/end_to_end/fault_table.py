@@ -92,6 +92,8 @@ def _shown(answer: Mapping[str, Any], job: str) -> str:
         return f"read: {', '.join(answer['unchanging_lines'])} changes nothing"
     if job == "read" and answer.get("joined_lines"):
         return f"read: {' and '.join(answer['joined_lines'][0])} act as one"
+    if job == "read" and answer.get("alike_data_lines"):
+        return f"read: {' and '.join(answer['alike_data_lines'][0])} read alike"
     if answer.get("pulses", {}).get("worst_tries", 1) > 1:
         return "burn: takes more pulses"
     if answer.get("protection"):

@@ -9,7 +9,15 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from pulsewright.chip.load import load
-from pulsewright.jobs.plan import BLOCK_WORDS, change, joined_lines, unchanging_lines, verify_steps, write_blocks
+from pulsewright.jobs.plan import (
+    BLOCK_WORDS,
+    alike_data_lines,
+    change,
+    joined_lines,
+    unchanging_lines,
+    verify_steps,
+    write_blocks,
+)
 from pulsewright.jobs.pulses import tries_of
 from pulsewright.rig.file import load_rig
 
@@ -92,3 +100,13 @@ def test_address_lines_that_touch_are_told_as_a_pair() -> None:
     assert joined_lines(data) == []
     assert joined_lines(data[:256] * 4) == []
     assert joined_lines(bytes(1024)) == []
+
+
+def test_data_lines_that_always_read_alike_are_told() -> None:
+    """Two data pins that touch give their lower level to both; a line that never changes is none of it."""
+    data = random.Random(4).randbytes(200)
+    touching = bytes(word if (word >> 2 & 1) == (word >> 5 & 1) else word & ~0x24 for word in data)
+    assert alike_data_lines(touching) == [(2, 5)]
+    assert alike_data_lines(data) == []
+    assert alike_data_lines(bytes(200)) == []
+    assert alike_data_lines(touching[:40]) == []

@@ -7,8 +7,9 @@ from pulsewright.errors import FileMistake, UsageMistake, Where
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.maker import check_maker, resolve_maker
+from pulsewright.jobs.plan import alike_data_lines
 from pulsewright.jobs.pulses import tries_of
-from pulsewright.jobs.read import read_agreed
+from pulsewright.jobs.read import alike_text, read_agreed
 from pulsewright.jobs.record import crc_text, save_dump
 from pulsewright.jobs.writing import KEEP, check_protect, write_sequences, write_words
 from pulsewright.link.results import RunResult
@@ -49,8 +50,11 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
     """
     result = read_agreed(ctx, "save" if ctx.options.save else "look", 2, first, last)
     facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
+    doubts = alike_text(ctx.definition, alike_data_lines(result.data, ctx.definition.width))
+    for doubt in doubts:
+        ctx.progress.fact(doubt)
     if not ctx.options.save:
-        return result, facts, []
+        return result, facts, doubts
     try:
         path = save_dump(ctx.definition, result.data, first)
     except FileMistake as mistake:
@@ -60,7 +64,7 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
     facts["saved"] = str(path)
     if ctx.record is not None:
         ctx.record.content.update(facts)
-    return result, facts, [f"what the chip held (CRC-32 {crc_text(result.data)}) is saved in {path}"]
+    return result, facts, [f"what the chip held (CRC-32 {crc_text(result.data)}) is saved in {path}", *doubts]
 
 
 def erase_whole(ctx: JobContext) -> tuple[str, dict[str, object]]:

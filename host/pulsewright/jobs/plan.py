@@ -165,3 +165,19 @@ def _act_as_one(data: bytes, low: int, high: int) -> bool:
                 data[one | a] == data[one | b] == data[one | a | b] for one in range(len(data)) if not one & (a | b)
             )
     return True
+
+
+_ENOUGH_WORDS = 64  # fewer words can read alike by chance
+
+
+def alike_data_lines(data: bytes, width: int = 8) -> list[tuple[int, int]]:
+    """Pairs of data bits that read alike in every word, though each is both 0 and 1 somewhere: pins that touch?
+
+    [] for less than 64 words.
+    """
+    if len(data) < _ENOUGH_WORDS:
+        return []
+    words = set(data)
+    changing = [bit for bit in range(width) if len({word >> bit & 1 for word in words}) == 2]
+    pairs = [(low, high) for low in changing for high in changing if low < high]
+    return [(a, b) for a, b in pairs if all((word >> a ^ word >> b) & 1 == 0 for word in words)]

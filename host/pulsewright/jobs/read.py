@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from pulsewright.chip.model import Definition
 from pulsewright.errors import Difference
 from pulsewright.image.compare import compare
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.margins import verdicts
-from pulsewright.jobs.plan import BLOCK_WORDS, joined_lines, unchanging_lines, verify_steps
+from pulsewright.jobs.plan import BLOCK_WORDS, alike_data_lines, joined_lines, unchanging_lines, verify_steps
 from pulsewright.jobs.record import crc_text
 from pulsewright.link.blocks import requests
 from pulsewright.link.results import RunResult
@@ -76,6 +77,14 @@ def _read_margins(ctx: JobContext, data: bytes) -> list[str]:
     return lines
 
 
+def alike_text(definition: Definition, pairs: list[tuple[int, int]]) -> list[str]:
+    """Data lines that always read alike, as lines of text."""
+    pins = definition.pins["D"]
+    return [
+        f"D{a} (pin {pins[a]}) and D{b} (pin {pins[b]}) read alike in every word: do the pins touch?" for a, b in pairs
+    ]
+
+
 def _work(ctx: JobContext) -> JobResult:
     definition = ctx.definition
     result = read_agreed(ctx, "read", ctx.options.passes, ctx.first, ctx.last)
@@ -97,6 +106,8 @@ def _work(ctx: JobContext) -> JobResult:
     for pair in pairs:
         pins = " and ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in pair)
         lines.append(f"{pins} act as one: do the pins touch?")
+    alike = alike_data_lines(data, definition.width)
+    lines += alike_text(definition, alike)
     facts: dict[str, object] = {
         **id_facts(definition, result),
         "words": len(data),
@@ -104,6 +115,7 @@ def _work(ctx: JobContext) -> JobResult:
         "crc32": crc_text(data),
         "blank_words": blank,
         "unchanging_lines": [f"A{bit}" for bit in still],
+        "alike_data_lines": [[f"D{bit}" for bit in pair] for pair in alike],
         "joined_lines": [[f"A{bit}" for bit in pair] for pair in pairs],
         "vcc_mv": step,
         "margins": margins,
