@@ -38,22 +38,52 @@ def labelled(program: Program) -> list[Item]:
     return items
 
 
-def mutants(code: bytes) -> Iterator[Mutant]:
-    """Every single-op mutant of a program, the equal ones (a swap of equal ops) left out."""
-    program = decode_program(code)
+KINDS = ("deleted", "doubled", "swapped")
+
+
+def places(items: list[Item]) -> list[int]:
+    """Indexes of the ops among labels."""
+    return [index for index, item in enumerate(items) if isinstance(item, Instruction)]
+
+
+def mutant(program: Program, number: int, kind: str) -> Mutant | None:
+    """One mutant of op `number` of a program; None for a swap behind the last op."""
     items = labelled(program)
-    places = [index for index, item in enumerate(items) if isinstance(item, Instruction)]
-    for number, index in enumerate(places):
-        offset, instruction = program.code[number]
-        name = str(instruction)
-        deleted = items[:index] + items[index + 1 :]
-        doubled = [*items[: index + 1], items[index], *items[index + 1 :]]
-        yield Mutant("deleted", offset, name, assemble(program.header, deleted)[0])
-        yield Mutant("doubled", offset, name, assemble(program.header, doubled)[0])
-        if number + 1 < len(places):
-            other = places[number + 1]
-            swapped = list(items)
-            swapped[index], swapped[other] = items[other], items[index]
-            mutant = assemble(program.header, swapped)[0]
-            if mutant != code:
-                yield Mutant("swapped", offset, name, mutant)
+    where = places(items)
+    index = where[number]
+    offset, instruction = program.code[number]
+    if kind == "deleted":
+        changed = items[:index] + items[index + 1 :]
+    elif kind == "doubled":
+        changed = [*items[: index + 1], items[index], *items[index + 1 :]]
+    elif number + 1 < len(where):
+        other = where[number + 1]
+        changed = list(items)
+        changed[index], changed[other] = items[other], items[index]
+    else:
+        return None
+    return Mutant(kind, offset, str(instruction), assemble(program.header, changed)[0])
+
+
+def rewaited(program: Program, number: int, ticks: int) -> Mutant:
+    """A program with another time in one of its waits, counted from 0; it has one."""
+    items = labelled(program)
+    waits = [index for index in places(items) if getattr(items[index], "op", None) is Op.WAIT]
+    index = waits[number % len(waits)]
+    offset, instruction = program.code[places(items).index(index)]
+    items[index] = Instruction(Op.WAIT, {"ticks": ticks})
+    return Mutant(f"waits {ticks}", offset, str(instruction), assemble(program.header, items)[0])
+
+
+def mutants(code: bytes, *, every: int = 1, phase: int = 0) -> Iterator[Mutant]:
+    """Every single-op mutant of a program, the equal ones (a swap of equal ops) left out; or one of `every` so many."""
+    program = decode_program(code)
+    turn = phase
+    for number in range(len(program.code)):
+        for kind in KINDS:
+            one = mutant(program, number, kind)
+            if one is None or one.code == code:
+                continue
+            turn += 1
+            if turn % every == 0:
+                yield one

@@ -51,7 +51,7 @@ class Builder:
         self.state = PinState()
         self.items: list[tuple[Instruction | Label, Origin]] = []
         self.depth = 0
-        self.vcc_looks: list[tuple[int, int]] = []  # index in `items` of each measurement of full VCC, and its rail step
+        self.vcc_looks: list[tuple[int, int]] = []  # index in `items` of each look at full VCC, its rail step
         self._part = "seating"
         self._text = ""
         self._where = Where()
