@@ -91,7 +91,8 @@ BENT: list[tuple[str, str, str, Bend, str]] = [
     ("read while it writes", "H7", "protect on", put_after(Op.BUS_WRITES, 0, *SAMPLE_AT_ONCE), "may still be writing"),
     ("VCC moved while it writes", "H7", "protect on", put_after(Op.BUS_WRITES, 0, ins(Op.RAIL, rail=0, step=3)),
      "VCC is moved while the chip may still be writing"),
-    ("no wait behind the poll", "H7", "burn", wait_after(Op.POLL, 0, 100), "sooner than the steps want it"),
+    ("no wait behind the poll", "H7", "burn", both(set_(Op.POLL, gap=60), wait_after(Op.POLL, 0, 100)),
+     "sooner than the steps want it"),
     # polls
     ("not polled", "H7", "burn", drop(Op.POLL), "while the chip may still be writing"),
     ("poll not heeded", "H7", "burn", set_(Op.BRANCH, -2, when=2), "out of its turn"),

@@ -78,12 +78,12 @@ def blind_twice(items: Items) -> Items:
 
 BENT: list[tuple[str, str, Definition, str, Bend, str]] = [
     # VPP that stands
-    ("VPP unmeasured", "H8", ST, "burn", drop(Op.MEASURE, -2), "never measured at its position"),
+    ("VPP unmeasured", "H8", ST, "burn", drop(Op.MEASURE, -3), "never measured at its position"),
     ("VPP before VCC", "H3", ST, "burn", drop(Op.RAIL, 2), "no mode wants at these lines"),
     ("VCC down under VPP", "H4", ST, "burn", drop(Op.SWITCHES, -1), "with raised switches closed"),
     ("VCC down as VPP falls", "H4", ST, "burn", wait_after(Op.SWITCHES, -1, 9), "while a raised level falls"),
     ("6.25 V before the gate", "H2", ST, "burn", set_(Op.RAIL, 0, step=6), "another step than the one to read at"),
-    ("VCC unmeasured", "H8", ST, "burn", drop(Op.MEASURE, -4), "before VCC was measured"),
+    ("VCC unmeasured", "H8", ST, "burn", drop(Op.MEASURE, -5), "before VCC was measured"),
     ("the VPP line low", "H3", ST, "burn", both(OPEN, put(Op.PULSE, 0, VPP_LOW)), "raised position"),
     ("CE and OE low", "H3", ST, "burn", both(OPEN, put(Op.PULSE, 0, LOW)), "no mode wants at these lines"),
     ("CE low under VPP", "H7", ST, "burn", both(OPEN, put(Op.PULSE, 0, LOW)), "stand outside a pulse"),
