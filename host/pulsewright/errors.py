@@ -32,7 +32,7 @@ PulsewrightError
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 
 
@@ -93,8 +93,10 @@ class PulsewrightError(Exception):
         did: str = "",
         hint: str = "",
         facts: Sequence[str] = (),
+        more: Mapping[str, object] | None = None,
     ) -> None:
         super().__init__(what)
+        self.more = dict(more or {})  # values that only `--json` and the record carry
         self.what = what
         self.where = where
         self.step = step
@@ -128,6 +130,7 @@ class PulsewrightError(Exception):
             value = getattr(self, name)
             if value:
                 facts[name] = value
+        facts |= self.more
         if self.facts:
             facts["facts"] = list(self.facts)
         return facts

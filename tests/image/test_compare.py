@@ -70,6 +70,12 @@ def address_exchanged(low: int, high: int) -> bytes:
     return bytes(WANT[at & rest | (at >> low & 1) << high | (at >> high & 1) << low] for at in range(1024))
 
 
+def address_joined(low: int, high: int, *, up: bool) -> bytes:
+    """WANT as read with two address pins that touch."""
+    both = 1 << low | 1 << high
+    return bytes(WANT[at if at & both in (0, both) else at | both if up else at & ~both] for at in range(1024))
+
+
 @pytest.mark.parametrize(
     ("got", "hint"),
     [
@@ -87,6 +93,14 @@ def address_exchanged(low: int, high: int) -> bytes:
         (read_through({"low": 0x10}), "A4 reads as if always low: an open or stuck address line"),
         (read_through({"high": 0x200}), "A9 reads as if always high: an open or stuck address line"),
         (address_exchanged(1, 7), "A1 and A7 look exchanged"),
+        (address_joined(3, 8, up=False), "A3 and A8 read as if both low where one is: shorted together"),
+        (address_joined(3, 8, up=True), "A3 and A8 read as if both high where one is: shorted together"),
+        (
+            bytes(WANT[at ^ 1] for at in range(1024)),
+            "bytes look exchanged in pairs: the image may be for the other byte order",
+        ),
+        (b"\x00" * 5 + WANT[:-5], "the chip holds the image 5 bytes too high: check --origin"),
+        (WANT[256:] + b"\x00" * 256, "the chip holds the image 256 bytes too low: check --origin"),
         (b"\xff" * 1024, "every byte reads FF: a blank chip, or outputs that never drive"),
         (b"\x00" * 1024, "every byte reads 00: no data reaches the rig"),
     ],

@@ -12,6 +12,7 @@ from pulsewright.units import show_address
 LISTED = 16
 # A line fault shows in many bytes; below this many differences a pattern may be chance.
 _EVIDENCE = 8
+_PIECE = 16  # bytes by which a moved image is known again
 
 
 @dataclass(frozen=True)
@@ -92,8 +93,8 @@ def _hints(want: bytes, got: bytes, mask: bytes, differing: list[int]) -> Iterat
         why = "a blank chip, or outputs that never drive" if value == 0xFF else "no data reaches the rig"
         yield f"every byte reads {value:02X}: {why}"
         return
-    yield from _data_line_hints(wanted, gotten)
-    yield from _address_line_hints(want, got, mask, differing)
+    found = [*_data_line_hints(wanted, gotten), *_address_line_hints(want, got, mask, differing)]
+    yield from found or _shift_hint(want, got, mask, differing)
 
 
 def _data_line_hints(wanted: bytes, gotten: bytes) -> Iterator[str]:
@@ -125,6 +126,27 @@ def _table(low: int, high: int, change: Callable[[int, int], tuple[int, int]]) -
 
 def _address_line_hints(want: bytes, got: bytes, mask: bytes, differing: list[int]) -> Iterator[str]:
     lines = (len(want) - 1).bit_length()
+    explains = _explainer(want, got, mask, differing)
+    for line in range(lines):
+        if explains(partial(_forced_low, bit=1 << line)):
+            yield f"A{line} reads as if always low: an open or stuck address line"
+        elif explains(partial(_forced_high, bit=1 << line)):
+            yield f"A{line} reads as if always high: an open or stuck address line"
+    for low, high in combinations(range(lines), 2):
+        if explains(partial(_exchanged, low=low, high=high)):
+            yield f"A{low} and A{high} look exchanged"
+        elif explains(partial(_joined_low, low=low, high=high)):
+            yield f"A{low} and A{high} read as if both low where one is: shorted together"
+        elif explains(partial(_joined_high, low=low, high=high)):
+            yield f"A{low} and A{high} read as if both high where one is: shorted together"
+    if explains(_neighbour):
+        yield "bytes look exchanged in pairs: the image may be for the other byte order"
+
+
+def _explainer(
+    want: bytes, got: bytes, mask: bytes, differing: list[int]
+) -> Callable[[Callable[[int], int]], bool]:
+    """A question: is what stands at each address the byte wanted at another one?"""
     compared = [at for at in range(len(want)) if mask[at]]
 
     def explains(source: Callable[[int], int]) -> bool:
@@ -144,14 +166,39 @@ def _address_line_hints(want: bytes, got: bytes, mask: bytes, differing: list[in
             and sum(1 for at in differing if known(at)) >= _EVIDENCE
         )
 
-    for line in range(lines):
-        if explains(partial(_forced_low, bit=1 << line)):
-            yield f"A{line} reads as if always low: an open or stuck address line"
-        elif explains(partial(_forced_high, bit=1 << line)):
-            yield f"A{line} reads as if always high: an open or stuck address line"
-    for low, high in combinations(range(lines), 2):
-        if explains(partial(_exchanged, low=low, high=high)):
-            yield f"A{low} and A{high} look exchanged"
+    return explains
+
+
+def _shift_hint(want: bytes, got: bytes, mask: bytes, differing: list[int]) -> Iterator[str]:
+    """The chip holds the image, but moved: tried for the places at which a piece of what was read stands in it."""
+    explains = _explainer(want, got, mask, differing)
+    at = differing[len(differing) // 2]
+    piece = got[at : at + _PIECE]
+    if len(set(piece)) < _PIECE // 4:
+        return  # too uniform to know it again
+    found = want.find(piece)
+    while found >= 0:
+        by = at - found
+        if by and explains(partial(_moved, by=by)):
+            yield f"the chip holds the image {abs(by)} bytes too {'high' if by > 0 else 'low'}: check --origin"
+            return
+        found = want.find(piece, found + 1)
+
+
+def _neighbour(at: int) -> int:
+    return at ^ 1
+
+
+def _moved(at: int, *, by: int) -> int:
+    return at - by if at >= by else 1 << 40  # before the image: not known
+
+
+def _joined_low(at: int, *, low: int, high: int) -> int:
+    return at & ~(1 << low | 1 << high) if (at >> low ^ at >> high) & 1 else at
+
+
+def _joined_high(at: int, *, low: int, high: int) -> int:
+    return at | 1 << low | 1 << high if (at >> low ^ at >> high) & 1 else at
 
 
 def _forced_low(at: int, *, bit: int) -> int:

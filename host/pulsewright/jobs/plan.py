@@ -116,6 +116,13 @@ def verify_steps(definition: Definition, rig: Rig) -> tuple[VerifyStep, ...]:
     return tuple(VerifyStep("read", step, f"VCC {show_mv(step.mv)} (±{show_mv(step.error_mv)})") for step in chosen)
 
 
+def vcc_of(definition: Definition, rig: Rig, step: VerifyStep) -> int:
+    """The VCC of a pass, millivolts, as the rig makes it."""
+    if step.rail_step is not None:
+        return step.rail_step.mv
+    return choose_vcc(definition, rig, definition.supplies[definition.modes[step.mode].vcc]).mv
+
+
 def _inside_read(definition: Definition, rig: Rig) -> list[RailStep]:
     window = definition.supplies["VCC.read"]
     steps = [

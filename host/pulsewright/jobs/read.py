@@ -4,19 +4,26 @@ from __future__ import annotations
 
 from pulsewright.chip.model import Definition
 from pulsewright.errors import Difference
-from pulsewright.image.compare import compare
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
-from pulsewright.jobs.margins import verdicts
-from pulsewright.jobs.plan import BLOCK_WORDS, alike_data_lines, joined_lines, unchanging_lines, verify_steps
+from pulsewright.jobs.maker import resolve_maker
+from pulsewright.jobs.margins import Look, as_facts, told, unsteady
+from pulsewright.jobs.plan import (
+    BLOCK_WORDS,
+    VerifyStep,
+    alike_data_lines,
+    joined_lines,
+    unchanging_lines,
+    vcc_of,
+    verify_steps,
+)
 from pulsewright.jobs.record import crc_text
 from pulsewright.link.blocks import requests
 from pulsewright.link.results import RunResult
 from pulsewright.rig.model import RailStep
 from pulsewright.sequence.compile import compile_read
-from pulsewright.units import show_address, show_count
-
-LISTED = 16
+from pulsewright.sequence.levels import choose_vcc
+from pulsewright.units import show_count
 
 
 def read_once(
@@ -28,52 +35,62 @@ def read_once(
     return ctx.run(sequence, requests(first, last, BLOCK_WORDS))
 
 
-def disagreement(passes: list[bytes], first: int, words: int) -> list[str]:
-    """The bytes that the passes disagree about, as lines of text, at most LISTED and then how many more."""
-    places = [at for at, values in enumerate(zip(*passes, strict=True)) if len(set(values)) > 1]
-    lines = [
-        f"{show_address(first + at, words)}: " + ", ".join(f"{data[at]:02X}" for data in passes)
-        for at in places[:LISTED]
-    ]
-    if len(places) > LISTED:
-        lines.append(f"and {len(places) - LISTED} more")
-    return lines
+def _passes(ctx: JobContext, why: str, passes: int, first: int, last: int, step: VerifyStep | None) -> list[RunResult]:
+    """A range read so often at one VCC."""
+    results = []
+    for number in range(passes):
+        title = f"{why}, pass {number + 1} of {passes}" if passes > 1 else why
+        if step is None:
+            results.append(read_once(ctx, title, first, last))
+        else:
+            results.append(read_once(ctx, title, first, last, mode=step.mode, rail_step=step.rail_step))
+    return results
+
+
+def usual_mv(ctx: JobContext) -> int:
+    """The VCC at which a plain read happens on this rig."""
+    return choose_vcc(ctx.definition, ctx.rig, ctx.definition.supplies["VCC.read"]).mv
 
 
 def read_agreed(ctx: JobContext, why: str, passes: int, first: int, last: int) -> RunResult:
     """A range read in so many passes that all agree; Difference lists the bytes where they do not."""
-    results = [
-        read_once(ctx, f"{why}, pass {number + 1} of {passes}" if passes > 1 else why, first, last)
-        for number in range(passes)
-    ]
-    lines = disagreement([result.data for result in results], first, ctx.definition.words)
-    if lines:
-        raise Difference(
-            f"{passes} passes do not agree",
-            wanted="the same bytes in every pass",
-            facts=lines,
-            did="VCC off; nothing was written",
-            hint="clean the contacts and read again; a chip whose bits fade reads differently at other VCC steps",
-        )
+    results = _passes(ctx, why, passes, first, last, None)
+    _all_agree(ctx, [Look(usual_mv(ctx), tuple(result.data for result in results))], first)
     return results[-1]
+
+
+def _all_agree(ctx: JobContext, looks: list[Look], first: int) -> None:
+    """Difference with every byte that is not the same in every pass at every VCC."""
+    found = unsteady(looks, first)
+    if not found:
+        return
+    passes = len(looks[0].passes)
+    where = "at every VCC" if len(looks) > 1 else "in every pass"
+    what = f"{passes} passes do not agree" if len(looks) == 1 else "the chip does not read the same at every VCC"
+    if ctx.record is not None:
+        ctx.record.content.update(as_facts(found))
+    steady = all(one.kind != "unsteady" for one in found)
+    raise Difference(
+        f"{what}: {show_count(len(found), 'byte')}",
+        wanted=f"the same bytes {where}",
+        facts=told(found, ctx.definition.words),
+        did="VCC off; no file was written",
+        hint="bytes that turn with VCC: read only the VCC at which they are right (--range helps to find them)"
+        if steady
+        else "clean the contacts, seat the chip again, and read again",
+        more=as_facts(found),
+    )
 
 
 def _read_margins(ctx: JobContext, data: bytes) -> list[str]:
     """The range read again at each margin of VCC; Difference lists the bytes that change, and what that says."""
-    lines = []
+    usual = Look(usual_mv(ctx), (data,))
+    looks, lines = [usual], []
     for step in verify_steps(ctx.definition, ctx.rig):
-        title = f"read at {step.text}"
-        other = read_once(ctx, title, ctx.first, ctx.last, mode=step.mode, rail_step=step.rail_step).data
-        if other != data:
-            comparison = compare(bytes(ctx.first) + data, bytes(ctx.first) + other)
-            raise Difference(
-                f"{show_count(comparison.differing, 'byte')} read otherwise at {step.text}",
-                wanted="the same bytes at every VCC inside the window",
-                facts=[*comparison.lines()[3:], *verdicts(comparison)],
-                did="VCC off; nothing was written",
-                hint="a chip that changes with VCC is fading or under-erased: save it again and again, then compare",
-            )
+        results = _passes(ctx, f"read at {step.text}", ctx.options.passes, ctx.first, ctx.last, step)
+        looks.append(Look(vcc_of(ctx.definition, ctx.rig, step), tuple(result.data for result in results)))
         lines.append(f"the same at {step.text}")
+    _all_agree(ctx, looks, ctx.first)
     return lines
 
 
@@ -86,6 +103,7 @@ def alike_text(definition: Definition, pairs: list[tuple[int, int]]) -> list[str
 
 
 def _work(ctx: JobContext) -> JobResult:
+    maker = resolve_maker(ctx) if ctx.options.margins else ()  # a maker's own margins
     definition = ctx.definition
     result = read_agreed(ctx, "read", ctx.options.passes, ctx.first, ctx.last)
     data = result.data
@@ -120,7 +138,7 @@ def _work(ctx: JobContext) -> JobResult:
         "vcc_mv": step,
         "margins": margins,
     }
-    return JobResult(tuple(lines), facts, data)
+    return JobResult((*lines, *maker), facts, data)
 
 
 def read(ctx: JobContext) -> JobResult:
