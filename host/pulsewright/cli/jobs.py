@@ -216,7 +216,7 @@ def _run(
     )
     progress = LiveProgress(sys.stderr) if sys.stderr.isatty() else PlainProgress(sys.stderr)
     with ExitStack() as stack:
-        rig_file, rig = stack.enter_context(opened(args.rig, definition.name, desk))
+        rig_file, rig = stack.enter_context(opened(args.rig, definition.name, desk, maker=args.maker or ""))
         stop = stack.enter_context(Stop(desk))
         session = Session(rig.transport, interrupted=stop, on_progress=progress.link)
         stack.callback(session.close)

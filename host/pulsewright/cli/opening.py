@@ -15,8 +15,13 @@ if TYPE_CHECKING:
 
 
 @contextmanager
-def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tuple[Rig, OpenRig]]:
-    """The rig file and the open rig of a `--rig` name; UsageMistake when none is given."""
+def opened(
+    name: str | None, chip_name: str | None, desk: Desk, *, maker: str = ""
+) -> Iterator[tuple[Rig, OpenRig]]:
+    """The rig file and the open rig of a `--rig` name; UsageMistake when none is given.
+
+    `maker`: whose chip a fresh virtual bench has, where its makers' chips differ.
+    """
     if name is None:
         raise UsageMistake(
             "no rig is named, and none is configured",
@@ -28,7 +33,7 @@ def opened(name: str | None, chip_name: str | None, desk: Desk) -> Iterator[tupl
 
     _look_for_a_slip(name)
     rig_file = load_rig()
-    rig = open_rig(name, chip_name)
+    rig = open_rig(name, chip_name, maker=maker)
     try:
         if rig.banner:
             desk.say(rig.banner)

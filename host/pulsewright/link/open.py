@@ -39,10 +39,10 @@ class OpenRig:
                 self.bench.save()
 
 
-def open_rig(name: str | None, chip_name: str | None = None) -> OpenRig:
+def open_rig(name: str | None, chip_name: str | None = None, *, maker: str = "") -> OpenRig:
     """The rig called `name`.
 
-    "virtual": a fresh bench with the chip `chip_name`, used before, kept nowhere. "virtual:BENCH": the bench kept in
+    "virtual": a fresh bench with the chip `chip_name` of that maker, used before, kept nowhere. "virtual:BENCH": the bench kept in
     that file. All else: a serial port or pySerial URL. UsageMistake without a name; FileMistake or RigFileMistake for
     a bench, LinkFault for a port.
     """
@@ -61,13 +61,21 @@ def open_rig(name: str | None, chip_name: str | None = None) -> OpenRig:
     from pulsewright.virtual.bench import Bench
 
     if not colon:
-        bench = Bench.fresh(chip_name) if chip_name else Bench.fresh(_any_chip())
+        bench = Bench.fresh(chip_name, maker=_known(chip_name, maker)) if chip_name else Bench.fresh(_any_chip())
     elif bench_file:
         bench = Bench.load(bench_file)
     else:
         raise UsageMistake("virtual: without a bench", wanted="virtual:BENCH", got=name,
                            hint="bench new BENCH --chip CHIP makes one")
     return OpenRig(InProcess(bench.rig(), name), bench)
+
+
+def _known(chip_name: str, maker: str) -> str:
+    """The maker, where the chip's models know it; else "" for the chip that is usual here."""
+    from pulsewright.virtual.models import MAKERS
+
+    makers = MAKERS.get(chip_name.lower())
+    return maker.lower() if makers is not None and maker.lower() in makers.names else ""
 
 
 def _any_chip() -> str:
