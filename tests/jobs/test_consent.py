@@ -143,3 +143,19 @@ def test_a_word_never_covers_an_id() -> None:
     for raises in (True, False):
         with pytest.raises(UsageMistake):
             check_vouch(load("27e512"), raises, "27E512")
+
+
+def test_a_makers_row_needs_a_consent_of_its_own() -> None:
+    """Rows differ in voltages: the file's hash agrees to the look at the ID, the row's to its levels; each once."""
+    whole, row = load("27c256"), load("27c256", maker="Atmel")
+    assert whole.digest != row.digest
+    with pytest.raises(UsageMistake, match="another definition"):
+        check_consent(whole, in_process=False, accepted=row.digest)  # nobody agreed to the look yet
+    assert check_consent(whole, in_process=False, accepted=whole.digest) == "given by --accept-voltages"
+    with pytest.raises(ConsentNeeded) as refused:
+        check_consent(row, in_process=False)
+    assert row.digest in refused.value.hint
+    assert "VPP.program 13.0 V" in "\n".join(refused.value.facts)
+    assert check_consent(whole, in_process=False, accepted=row.digest) == "remembered"  # meant for the row
+    assert check_consent(row, in_process=False, accepted=row.digest) == "given by --accept-voltages"
+    assert check_consent(row, in_process=False) == "remembered"

@@ -43,8 +43,8 @@ def open_rig(name: str | None, chip_name: str | None = None, *, maker: str = "")
     """The rig called `name`.
 
     "virtual": a fresh bench with the chip `chip_name` of that maker, used before, kept nowhere. "virtual:BENCH": the
-    bench kept in that file. All else: a serial port or pySerial URL. UsageMistake without a name; FileMistake or RigFileMistake for
-    a bench, LinkFault for a port.
+    bench kept in that file. All else: a serial port or pySerial URL. UsageMistake without a name; FileMistake or
+    RigFileMistake for a bench, LinkFault for a port.
     """
     if not name:
         raise UsageMistake(
