@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import pytest
 
-from tests.end_to_end.bench_kit import MODELS, PARTS, Bench, bench
+from tests.end_to_end.bench_kit import MODELS, PARTS, ROOT, Bench, bench
 
 __all__ = ["bench"]
 
@@ -109,3 +109,23 @@ def test_a_2716_wants_the_word_and_the_jumper(bench: Bench) -> None:
     assert (answer["exit"], answer["error"]) == (3, "VouchNeeded")
     assert "jumper" in answer["result"]
     assert bench.seen()["pins"]["21"]["max_mv"] < 6_000
+
+
+def test_a_page_is_waited_for_by_its_toggle_bit_too(bench: Bench) -> None:
+    """The same part polled by bit 6 instead of bit 7: written, and clean to the judge."""
+    definition = (ROOT / "chipdefs" / "28c256.toml").read_text(encoding="utf-8").replace('"DQ7"', '"DQ6"')
+    (bench.folder / "28c256.toml").write_text(definition, encoding="utf-8")
+    bench.new("28c256", contents="noise")
+    image = bench.image(130)
+    answer = bench.job("burn", str(bench.folder / "28c256.toml"), str(image))
+    assert (answer["exit"], answer["pages"]) == (0, 3)
+    assert bench.contents()[:130] == image.read_bytes()
+    assert bench.clean()
+
+
+def test_a_page_that_never_ends_runs_into_its_limit(bench: Bench) -> None:
+    """A chip that is busy for longer than its sheet allows: exit 4, with the page's word and what to try."""
+    bench.new("28c256", contents="noise", options=("--fault", "slow=100,9"))
+    answer = bench.job("burn", "28c256", str(bench.image(64)))
+    assert (answer["exit"], answer["error"]) == (4, "ChipFault")
+    assert "003F in time" in answer["result"]
