@@ -208,7 +208,7 @@ def _may_poll(t: Tables, state: State, clocks: Clocks, wanted: Poll, ins: Instru
     kind = _KINDS.get(wanted.bit)
     t.need(ins.args["kind"] == kind, "H7", f"another poll than of {wanted.bit}", kind, ins.args["kind"])
     t.need(state.data == RELEASED, "H7", "the chip is polled while the rig drives D", "released", state.data)
-    need, since = at_least(t.timing.gap_ps()), elapsed(clocks, PULSE)
+    need, since = at_least(t.timing.begun_ps()), elapsed(clocks, PULSE)
     t.need(since >= need, "H7", "the chip is polled before its load gap is over", f"{need} ticks", since)
     if kind is PollKind.DATA_BIT_7 and state.busy != IDLE:
         own = all(state.levels[line] == WORD for line in t.pins.address)

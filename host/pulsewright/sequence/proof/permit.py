@@ -256,7 +256,7 @@ def _self_timed(t: Tables) -> None:
     busy = t.timing.busy_ps()
     if busy is None:
         polls = [one.max_ps for one in t.course.polls]
-        busy = max([*polls, t.timing.most("tWC")], default=0) + t.timing.gap_ps()
+        busy = max([*polls, t.timing.most("tWC")], default=0) + t.timing.begun_ps()
     longest = at_least(busy)
     got = t.permit.self_timed
     t.need(got >= longest or not t.used_busy, "H5", "self-timed wait", f"at least {longest} ticks", got)

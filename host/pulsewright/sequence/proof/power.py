@@ -60,7 +60,7 @@ def at_rest(t: Tables, state: State, clocks: Clocks, what: str) -> None:
         text = f"{what} while the chip may still be writing"
     else:
         command = t.definition.identify_command
-        longest = t.timing.gap_ps() + (command.settle_ps if command else 0)
+        longest = t.timing.begun_ps() + (command.settle_ps if command else 0)
         text = f"{what} before the identify command has settled"
     if longest is None:
         t.find("H7", text, "a poll")

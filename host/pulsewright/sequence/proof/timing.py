@@ -54,11 +54,16 @@ class Timing:
         write = self.definition.write
         if write is None or not write.busy or not self.most(write.busy):
             return None
-        return self.most(write.busy) + self.gap_ps()
+        return self.most(write.busy) + self.begun_ps()
 
     def gap_ps(self) -> int:
         """Longest time between two loads of a page; 0: the definition states none."""
         return self.most(self.definition.write.gap) if self.definition.write is not None else 0
+
+    def begun_ps(self) -> int:
+        """Time after the last load by which the part has surely begun to write, whichever row it is of."""
+        write = self.definition.write
+        return 0 if write is None else max(self.gap_ps(), write.begin_ps)
 
     def line_ps(self, state: State) -> int:
         """How long an edge of a line may take, either way."""
