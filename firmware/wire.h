@@ -2,7 +2,7 @@
 #ifndef PW_WIRE_H
 #define PW_WIRE_H
 
-#define PW_FINGERPRINT 0xA7FC9CC0ul
+#define PW_FINGERPRINT 0xE564AC5Ful
 #define PW_LAYOUT 1u
 #define PW_ABORT_RUN 4u
 #define PW_HELLO_BAUD 38400ul
@@ -88,7 +88,7 @@
 #define PW_OP_PAGE_LOAD 69u
 
 #define PW_SEMANTICS_END 1u
-#define PW_SEMANTICS_FAIL 2u
+#define PW_SEMANTICS_FAIL 3u
 #define PW_SEMANTICS_FAILING 1u
 #define PW_SEMANTICS_HIGH 1u
 #define PW_SEMANTICS_LINES 1u

@@ -115,6 +115,7 @@ class Machine:
         self.raised_reading = 0
         self.raised_low = 0  # low end of the window the raised rail was measured in: the monitor holds it there
         self.raised_strikes = 0  # looks that found it lower since it was set
+        self.strike = (0, 0, 0)  # reading, low and high of the last of them
         self.closed = 0  # raised switches, one bit each
         self.closed_lines = 0
         self.closed_bits = 0  # address bits whose line sits at a closed switch

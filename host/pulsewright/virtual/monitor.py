@@ -48,6 +48,7 @@ def _look_at_raised(m: Machine) -> Trip | None:
     if low <= reading <= high:
         return None
     m.raised_strikes += 1
+    m.strike = (reading, low, high)
     if half_of(m.raised_step) <= reading < low and m.raised_strikes < _STRIKES:
         # Once may be a dip at a load step. Between pulses a sagging rail looks well, so a good look clears nothing.
         return None

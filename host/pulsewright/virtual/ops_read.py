@@ -148,9 +148,11 @@ def _poll_on(m: Machine, look: _Look, kind: PollKind, limit: int, after: int) ->
 
 
 def fail(m: Machine, a: Args, after: int) -> Step:
-    """The sequence ends: failed, here or where `failing` noted it."""
+    """The sequence ends: failed, here or where `failing` noted it; a rail that was seen low is blamed before a chip."""
 
     def step() -> int:
+        if m.raised_strikes:
+            raise Trip(Fault.RAISED_OUTSIDE, *m.strike)
         noted = m.noted
         if noted is not None:
             m.address, m.sample, m.kept = noted.address, noted.sample, noted.kept

@@ -227,7 +227,7 @@ class PollKind(IntEnum):
     TOGGLE_6_LIMIT_5 = 3
 
 
-FINGERPRINT: Final = 0xA7FC9CC0
+FINGERPRINT: Final = 0xE564AC5F
 LAYOUT: Final = 1
 ABORT_RUN: Final = 4
 HELLO_BAUD: Final = 38400
