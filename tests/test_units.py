@@ -41,7 +41,7 @@ REFUSED = [
 ]
 REFUSED += [(units.parse_ua, text) for text in ("30", "30 ms", "0.1 uA", "30 MA")]
 REFUSED += [(units.parse_ps, text) for text in ("100", "100 V", "0.5 ps", "100 Us", "1 min")]
-REFUSED += [(units.parse_address, text) for text in ("", "-1", "0x", "1F0", "32k", "1.5K", "0x1G")]
+REFUSED += [(units.parse_address, text) for text in ("", "-1", "0x", "1F0", "32k", "1.5K", "0x1G", "0100", "00x1")]
 
 
 @pytest.mark.parametrize(("parse", "text", "value"), PARSED)

@@ -115,7 +115,8 @@ def show_count(count: int, noun: str) -> str:
 
 def parse_address(text: str) -> int:
     """An address or size: decimal, 0x1F0, or with K or M (x 1024, x 1024 x 1024); UnitMistake otherwise."""
-    match = re.fullmatch(r"\s*(0[xX][0-9A-Fa-f]+|\d+)\s*([KM]?)\s*", text)
+    # 0100 is refused: it may be meant as hex, and counts as 100 or, in some tools, as 64.
+    match = re.fullmatch(r"\s*(0[xX][0-9A-Fa-f]+|0+|[1-9][0-9]*)\s*([KM]?)\s*", text)
     if match is None:
         raise UnitMistake('an address such as "0x1F0", "496" or "32K"')
     return int(match[1], 0) * {"": 1, "K": 1024, "M": 1024 * 1024}[match[2]]

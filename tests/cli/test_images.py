@@ -4,9 +4,17 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import pytest
+
+from pulsewright.cli.main import main
 from tests.end_to_end.bench_kit import Bench, bench
 
 __all__ = ["bench"]
+
+
+def seen_nothing(bench: Bench) -> bool:
+    """No pin has been above 0 V."""
+    return all(pin["max_mv"] == 0 for pin in bench.seen()["pins"].values())
 
 
 def files(folder: Path) -> list[str]:
@@ -32,7 +40,9 @@ def test_several_files_are_burnt_and_verified_as_one_image(bench: Bench) -> None
     )  # fmt: skip
     assert held.count(0xFF) == 65_536 - 13
     assert bench.call("record", "show", "last")["record"]["images"] == answer["images"]
-    assert bench.job("verify", "27e512", *names)["exit"] == 0
+    verified = bench.job("verify", "27e512", *names)
+    assert (verified["exit"], verified["images"]) == (0, answer["images"])
+    assert bench.call("record", "show", "last")["record"]["images"] == answer["images"]
 
 
 def test_files_that_overlap_are_refused_before_the_rig_is_touched(bench: Bench) -> None:
@@ -43,7 +53,51 @@ def test_files_that_overlap_are_refused_before_the_rig_is_touched(bench: Bench) 
     assert answer["exit"] == 2
     assert "bell.s19" in answer["result"]
     assert "strike.bin" in answer["result"]
-    assert all(pin["max_mv"] == 0 for pin in bench.seen()["pins"].values())
+    assert seen_nothing(bench)
+
+
+@pytest.mark.parametrize(
+    ("name", "content", "what"),
+    [
+        ("keep.toml", "[chip]\nname = 'x'\n", "readable text"),
+        ("broken.bin", ":04003000902BB4FD61\n:00000001FF\n", "checksum is wrong"),
+        ("broken.hex", ":040030009\n:00000001FF\n", "odd number"),
+        ("cut.s19", "S1090100010203040506E0\n", "end record is missing"),
+        ("empty.bin", "", "empty"),
+        ("far.hex", ":020000040001F9\n:0100000001FE\n:00000001FF\n", "outside the chip"),
+    ],
+)
+def test_what_is_no_image_is_refused_before_the_rig_is_touched(
+    bench: Bench, name: str, content: str, what: str
+) -> None:
+    """Exit 2, the file's name, something to try, and no pin has seen a level."""
+    bench.new("27e512")
+    (bench.folder / name).write_text(content)
+    answer = bench.job("burn", "27e512", str(bench.folder / name))
+    assert (answer["exit"], what in answer["result"]) == (2, True), answer
+    assert f"/{name}" in answer["where"]
+    assert answer["hint"]
+    assert seen_nothing(bench)
+
+
+def test_the_letters_of_a_text_are_burnt_for_who_insists(bench: Bench) -> None:
+    """As the refusal says: raw:FILE, for a bench's contents as well."""
+    text = bench.folder / "words.txt"
+    text.write_text("chimes at noon\nand at six\n")
+    bench.new("27e512", contents=f"raw:{text}@0x10")
+    assert bench.contents()[0x10:0x1E] == b"chimes at noon"
+    answer = bench.job("verify", "27e512", f"raw:{text}@0x10")
+    assert (answer["exit"], answer["images"][0]["format"]) == (0, "raw")
+
+
+def test_the_screen_tells_what_each_file_was_taken_for(bench: Bench, capsys: pytest.CaptureFixture[str]) -> None:
+    """A line for each file beside the answer, so that a wrong guess is seen before the job begins."""
+    names = files(bench.folder)
+    assert main(["verify", "27e512", *names, "--rig", "virtual"]) == 1
+    said = capsys.readouterr().err.splitlines()
+    assert "no hardware" in said[0]
+    assert said[1].endswith("tune.hex: intel-hex, 4 bytes at 0030 to 0033, CRC-32 EBB972A4")
+    assert said[3].endswith("strike.bin: raw, 3 bytes at 0200 to 0202, CRC-32 503A6E6C")  # zlib.crc32 of 10 20 30
 
 
 def test_a_dump_is_saved_as_s_records_by_its_name(bench: Bench) -> None:

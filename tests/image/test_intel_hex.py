@@ -46,12 +46,13 @@ def test_each_damaged_file_gives_the_error_noted_in_it(path: Path) -> None:
     assert error.where is not None
     assert (error.where.file, error.where.line, error.where.key) == ("chime.hex", line, key)
     assert (error.what, error.wanted, error.got) == (what, wanted, got)
+    assert error.hint
     assert error.exit_code == 2
 
 
 def test_there_is_a_damaged_file_for_every_kind() -> None:
     """The fixtures are found: fewer than the kinds of damage would mean that the test above saw none."""
-    assert len(list(BAD.glob("*.txt"))) == 19
+    assert len(list(BAD.glob("*.txt"))) == 20
 
 
 # Records from outside, with what they mean by the specification; sources beside them. The checksums were recomputed.
@@ -102,6 +103,8 @@ def test_worked_records_give_their_bytes(records: str, wanted: dict[int, str]) -
     "text",
     [
         ":04003000902BB4FD60\r\n:00000001FF\r\n",
+        ":04003000902BB4FD60\r:00000001FF\r",
+        ":04003000902BB4FD60\r\r\n:00000001FF\r\r\n",
         ":04003000902bb4fd60\n:00000001ff",
         "\n:04003000902BB4FD60\n\n  :00000001FF  \n\n\n",
         ":04003000902BB4FD60\n:00000001FF\n\x1a\x1a\x1a",
@@ -110,6 +113,8 @@ def test_worked_records_give_their_bytes(records: str, wanted: dict[int, str]) -
     ],
     ids=[
         "crlf",
+        "cr alone",
+        "crcrlf",
         "lower case",
         "blank lines",
         "end-of-text padding",
@@ -135,6 +140,19 @@ def test_a_type_04_offset_runs_on_past_64k() -> None:
 def test_a_type_04_address_wraps_at_4g() -> None:
     """The byte after address FFFFFFFF is the one at 0."""
     assert segments(":02000004FFFFFC\n:04FFFE000102030AEF\n" + END) == {0: "030A", 0xFFFFFFFE: "0102"}
+
+
+def test_a_base_of_0_may_change_its_kind() -> None:
+    """As objcopy writes an image below and above 1M: 02 set to 0000 before the first 04, and so the other way."""
+    below = ":020000021000EC\n:0100000001FE\n:020000020000FC\n:02000004001FDB\n:0100000002FD\n"
+    assert segments(below + END) == {0x1_0000: "01", 0x1F_0000: "02"}
+    above = ":02000004001FDB\n:0100000002FD\n:020000040000FA\n:020000021000EC\n:0100000001FE\n"
+    assert segments(above + END) == {0x1_0000: "01", 0x1F_0000: "02"}
+
+
+def test_a_record_past_64k_is_right_in_a_file_of_linear_bases() -> None:
+    """As bincopy writes it: the record that crosses stands before the first base, which is a linear one."""
+    assert segments(":03FFFE00010203FA\n:020000040001F9\n:0100010004FA\n" + END) == {0xFFFE: "01020304"}
 
 
 def test_a_base_stays_in_force_until_the_next() -> None:

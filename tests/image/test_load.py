@@ -33,7 +33,16 @@ RECORDS = b":04003000902BB4FD60\n:00000001FF\n"
         (b"\x00", "a.bin", RAW),
         (b"S0030000FC\r\nS1090100010203040506E0\r\nS9030000FC\r\n", "a.bin", S_RECORD),
         (b"S1090100010203zz0506E0\nS9030000FC\n", "a.srec", S_RECORD),
-        (b"S1 is not a record", "a.bin", RAW),
+        (b"S\xb2090100010203zz0506E0\nS9030000FC\n", "a.srec", S_RECORD),
+        (b"S1 is no record", "a.mot", S_RECORD),
+        (b"1090100010203040506E0\n", "a.S19", S_RECORD),
+        (b"\x53\x31\x00\x01\xff\xfe", "a.bin", RAW),
+        (b"S1 is a patch", "a.bin", RAW),
+        (b"U" * 4096, "a.bin", RAW),
+        (b"U3" * 4096, "a.bin", RAW),
+        (b"\xff" * 4096, "a.bin", RAW),
+        (b"\xff\xfe" * 4096, "a.bin", RAW),
+        (b"CHIME CONTROLLER V2\x00\x3e\x01", "a.bin", RAW),
     ],
 )
 def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) -> None:
@@ -42,11 +51,29 @@ def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) ->
 
 
 @pytest.mark.parametrize(
-    "content", [b"04003000902BB4FD60\n", b"S1 is not a record\n", b"[chip]\nname = 'x'\n", "\u00fc\n".encode()]
+    ("content", "what"),
+    [
+        (b"04003000902BB4FD60\n", "readable text"),
+        (b"S1 is not a record\n", "readable text"),
+        (b"S1 is not a record", "readable text"),
+        (b"[chip]\nname = 'x'\n", "readable text"),
+        (b"[chip]\rname = 'x'\r", "readable text"),
+        (b"[chip]\r\nname = 'x'\r\n\x1a\x1a", "readable text"),
+        (b'{"format": 1, "chip": "27e512"}', "readable text"),
+        (b"0000 3E 01\tLD A,1\n\x0c0002 C9\tRET\n", "readable text"),
+        ("\u00fc\n".encode(), "readable text"),
+        ("\u0437\u0432\u043e\u043d = 3\n".encode(), "readable text"),
+        ("die Gr\u00f6\u00dfe der Glocke\n".encode("latin-1"), "readable text"),
+        (b"\xef\xbb\xbfname = 1\n", "readable text"),
+        (RECORDS.decode().encode("utf-16"), "text in UTF-16"),
+        (b"\x7fELF\x01\x01\x01" + bytes(64), "an ELF object file"),
+        (b"PK\x03\x04\x14" + bytes(64), "a ZIP archive"),
+        (b"\x1f\x8b\x08" + bytes(64), "a gzip archive"),
+    ],
 )
-def test_readable_text_is_not_burnt_as_its_letters(content: bytes, tmp_path: Path) -> None:
-    """Lines of text that are no records are refused, with the way to insist; `raw:` takes the letters."""
-    with pytest.raises(ImageMistake, match="readable text") as refused:
+def test_what_is_no_image_is_not_burnt_as_its_bytes(content: bytes, what: str, tmp_path: Path) -> None:
+    """Text that is no records, object files and archives are refused, and `raw:` takes them all the same."""
+    with pytest.raises(ImageMistake, match=what) as refused:
         tell_format(content, "a.bin")
     assert "raw:a.bin" in refused.value.hint
     (tmp_path / "a.txt").write_bytes(content)
@@ -81,8 +108,21 @@ def test_a_named_format_wins(tmp_path: Path) -> None:
 def test_an_empty_file_is_an_error(tmp_path: Path, name: str, content: bytes) -> None:
     """An empty file is refused by that name, in either format."""
     (tmp_path / name).write_bytes(content)
-    with pytest.raises(ImageMistake, match="image file is empty"):
+    with pytest.raises(ImageMistake, match="image file is empty") as refused:
         load(tmp_path / name)
+    assert refused.value.hint
+
+
+def test_blanks_are_bytes_for_who_insists(tmp_path: Path) -> None:
+    """A chip full of 20 or 0A can be burnt, by raw:FILE, as the refusal says; a file of no bytes cannot."""
+    (tmp_path / "a.bin").write_bytes(b" \n" * 8)
+    with pytest.raises(ImageMistake, match="empty") as refused:
+        load(tmp_path / "a.bin")
+    assert f"raw:{tmp_path / 'a.bin'}" in refused.value.hint
+    assert load_files([f"raw:{tmp_path / 'a.bin'}"])[0].segments == (Segment(0, b" \n" * 8),)
+    (tmp_path / "a.bin").write_bytes(b"")
+    with pytest.raises(ImageMistake, match="empty"):
+        load_files([f"raw:{tmp_path / 'a.bin'}"])
 
 
 def test_a_damaged_hex_file_names_its_line(tmp_path: Path) -> None:
@@ -118,6 +158,19 @@ def test_saving_by_another_name_writes_raw(tmp_path: Path) -> None:
     assert (tmp_path / "a.bin").read_bytes() == b"\x01\x0d\x0a"
     save(tmp_path / "b.hex", b"\x01", format=RAW)
     assert (tmp_path / "b.hex").read_bytes() == b"\x01"
+
+
+@pytest.mark.parametrize("name", ["a.s19", "a.s28", "a.s37", "a.SREC", "a.mot"])
+def test_saving_by_an_s_record_name_writes_them(tmp_path: Path, name: str) -> None:
+    """S-records keep the addresses; they end with a count and an end record."""
+    save(tmp_path / name, bytes(range(1, 7)), first=0x100)
+    assert (tmp_path / name).read_text() == "S0030000FC\nS1090100010203040506E0\nS5030001FB\nS9030000FC\n"
+
+
+@given(st.binary(min_size=64, max_size=400))
+def test_random_bytes_are_raw(data: bytes) -> None:
+    """Bytes as a chip holds them, with 00 and FF among them, are never refused or taken for records."""
+    assert tell_format(b"\xff\x00" + data, "a.bin") == RAW
 
 
 @given(st.binary(min_size=1, max_size=300))

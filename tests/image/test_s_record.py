@@ -9,6 +9,7 @@ from hypothesis import strategies as st
 from pulsewright.errors import ImageMistake
 from pulsewright.image.memory import Image, Segment
 from pulsewright.image.s_record import parse_s_records, write_s_records
+from tests.image.sparse import sparse_images
 
 # Records of outside-checks.md section 2, with the marks of their sources.
 GOOD = [
@@ -25,9 +26,14 @@ GOOD = [
     ),  # [T10]
     ("S008763330627567736D\nS1090100010203040506E0\nS9030000FC", {0x100: "010203040506"}),  # [T4]: S0 without address
     (
-        "S11F00007C0802A6900100049421FFF07C6C1B787C8C23783C6000003863000026\nS5030001FB\nS9030000FC",
-        {0: "7C0802A6900100049421FFF07C6C1B787C8C23783C60000038630000"},
-    ),  # from memory
+        "S11F00007C0802A6900100049421FFF07C6C1B787C8C23783C6000003863000026\nS1090100010203040506E0\n"
+        "S10D1000736F6D6520646174610074\nS5030003F9\nS9030000FC",
+        {
+            0: "7C0802A6900100049421FFF07C6C1B787C8C23783C60000038630000",
+            0x100: "010203040506",
+            0x1000: b"some data\0".hex(),
+        },
+    ),  # the first record, S5 and S9 from memory; the two that make the count 3 [T7] [T8]
 ]
 
 
@@ -47,12 +53,24 @@ BAD = [
     (f"{FIRST}\nS10201FC\n{END}", 2, "too short", ""),
     (f"{FIRST}\nS40301000000\n{END}", 2, "reserved", ""),
     (f"{FIRST}\nhello\n{END}", 2, "not a record", ""),
+    (f"{FIRST}\nS\xb2090100010203040506E0\n{END}", 2, "not a record", "S and a digit"),
+    (f"{FIRST}\nS\n{END}", 2, "not a record", "S and a digit"),
+    (f"{FIRST}\nS1\n{END}", 2, "too short", "03"),
+    (f"{FIRST}\n:00000001FF\n{END}", 2, "not a record", "S and a digit"),
+    ("\n\x1a", 0, "empty", "begin with S"),
     (FIRST, 1, "end record is missing", "S9"),
+    ("S20801000001020304EC", 1, "end record is missing", "S8"),
+    ("S309CAFE01100102030413", 1, "end record is missing", "S7"),
     (f"{FIRST}\n{END}\n{FIRST}", 3, "after the end record", ""),
     (f"{FIRST}\n{FIRST}\n{END}", 2, "given twice", "once"),
     (f"{FIRST}\nS5030002FA\n{END}", 2, "counts another number", "1"),
+    (f"{FIRST}\nS604000002F9\n{END}", 2, "counts another number", "1"),
+    (f"{FIRST}\nS504000101F9\n{END}", 2, "counts another number", "1"),
+    (f"{FIRST}\nS5030001FB\nS1042000AA31\n{END}", 3, "after the count record of line 2", "behind all"),
+    (f"{FIRST}\nS5030001FB\nS0030000FC\nS1042000AA31\nS5030001FB\n{END}", 4, "after the count record of line 2", ""),
     (f"{END}", 1, "holds no data", ""),
-    (f"S104FFFE00FE\nS105FFFF0102F9\n{END}", 2, "runs past address FFFF", "at most 1"),
+    ("S0030000FC\nS5030000FC\n", 2, "holds no data", ""),
+    ("S307FFFFFFFF0102F9\nS70500000000FA", 1, "runs past address FFFFFFFF", "at most 1"),
     (f"{FIRST}\nS9040000AA51", 2, "has data", ""),
 ]
 
@@ -70,17 +88,50 @@ def test_each_fault_is_told_with_its_line(text: str, line: int, what: str, wante
     assert error.hint
 
 
-@pytest.mark.parametrize("text", [f"{FIRST}\r\n\r\n{END}\r\n\x1a", f"  {FIRST.lower()}\n{END.lower()}\n"])
+@pytest.mark.parametrize(
+    "text",
+    [
+        f"{FIRST}\r\n\r\n{END}\r\n\x1a",
+        f"  {FIRST.lower()}\n{END.lower()}\n",
+        f"{FIRST}\r{END}\r",
+        f"{FIRST}\nS604000001FA\n{END}",
+        f"{FIRST}\nS5030001FB\nS5030001FB\n{END}",
+        f"{FIRST}\nS1030200FA\nS5030002FA\n{END}",
+    ],
+    ids=["crlf", "lower case", "cr alone", "a count of three bytes", "the count twice", "an empty data record counts"],
+)
 def test_harmless_variants_are_taken(text: str) -> None:
-    """Other line ends, blank lines, small letters, end-of-text padding."""
+    """Other line ends, blank lines, small letters, end-of-text padding, either count."""
     assert parse_s_records(text).segments == (Segment(0x100, bytes(range(1, 7))),)
 
 
 def test_a_count_at_the_end_shows_that_nothing_was_cut() -> None:
     """Some tools write no end record: the right count in its place is enough, and a wrong one is told."""
     assert parse_s_records(f"{FIRST}\nS5030001FB\n").size == 6
-    with pytest.raises(ImageMistake, match="end record is missing"):
-        parse_s_records(f"{FIRST}\nS5030001FB\nS1042000AA31\n")
+    with pytest.raises(ImageMistake, match="counts another number"):
+        parse_s_records(f"{FIRST}\nS5030002FA\n")
+
+
+@pytest.mark.parametrize("end", ["S9030000FC", "S804000000FB", "S70500000000FA", "S9031234B6"])
+def test_address_sizes_may_be_mixed(end: str) -> None:
+    """Every address is absolute, whatever its size, and any end ends the file, with a start address or without."""
+    image = parse_s_records(f"{FIRST}\nS205012000AA2F\nS306CAFE0110AB75\n{end}")
+    assert [(one.start, one.data.hex()) for one in image.segments] == [
+        (0x100, "010203040506"), (0x1_2000, "aa"), (0xCAFE_0110, "ab"),
+    ]  # fmt: skip
+
+
+@pytest.mark.parametrize(("record", "first"), [("S105FFFF0102F9", 0xFFFF), ("S206FFFFFF0102F9", 0xFF_FFFF)])
+def test_a_record_runs_on_past_the_reach_of_its_address(record: str, first: int) -> None:
+    """The bytes behind the last short address follow it, as srec_cat means it; nothing wraps."""
+    assert parse_s_records(f"{record}\n{END}").segments == (Segment(first, b"\x01\x02"),)
+
+
+def test_an_overlap_of_sizes_is_found() -> None:
+    """An S1 and an S3 record that reach one address are told with both lines and both bytes."""
+    with pytest.raises(ImageMistake, match="given twice, on lines 1 and 2") as refused:
+        parse_s_records(f"{FIRST}\nS30600000105AA49\n{END}")
+    assert refused.value.got == "06 on line 1, AA on line 2"
 
 
 def test_each_byte_knows_its_line() -> None:
@@ -89,22 +140,19 @@ def test_each_byte_knows_its_line() -> None:
     assert str(image.where(0x2000)) == "bell.s19:2"
 
 
-@st.composite
-def images(draw: st.DrawFn) -> Image:
-    """Sparse images at addresses of any length."""
-    top = draw(st.sampled_from([0xFF00, 0xFF_FF00, 0xFFFF_FF00]))
-    starts = draw(st.lists(st.integers(0, top), min_size=1, max_size=4, unique=True))
-    segments: list[Segment] = []
-    for start in sorted(starts):
-        if not segments or start > segments[-1].end:
-            segments.append(Segment(start, draw(st.binary(min_size=1, max_size=60))))
-    return Image(tuple(segments))
-
-
-@given(images())
+@given(sparse_images())
 def test_what_is_written_reads_back(image: Image) -> None:
     """Any image, at 16-, 24- and 32-bit addresses."""
     assert parse_s_records(write_s_records(image)) == image
+
+
+@pytest.mark.parametrize(("records", "count"), [(0xFFFF, "S503FFFFFE"), (0x1_0000, "S604010000FA")])
+def test_a_long_file_has_a_longer_count(records: int, count: str) -> None:
+    """S5 counts up to 65535 data records, S6 from there on; both are checked when read."""
+    image = Image((Segment(0, bytes(16 * records)),))
+    text = write_s_records(image)
+    assert text.splitlines()[-2] == count
+    assert parse_s_records(text) == image
 
 
 @given(st.data())

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import pytest
 
-from pulsewright.errors import ImageMistake, UsageMistake
+from pulsewright.errors import FileMistake, ImageMistake, UsageMistake
 from pulsewright.image.intel_hex import write_intel_hex
 from pulsewright.image.memory import Image, Segment, fit, image_of
 from pulsewright.image.several import load_files
@@ -68,6 +68,47 @@ def test_a_name_with_an_at_sign_is_that_file(tmp_path: Path) -> None:
     plain = made(tmp_path, "bell.bin", b"\x99")
     with pytest.raises(UsageMistake, match="is no address"):
         load_files([f"{plain}@tower"])
+    with pytest.raises(UsageMistake, match="is no address"):  # 100 or 0x100? never guessed
+        load_files([f"{plain}@0100"])
+    with pytest.raises(FileMistake, match="cannot read"):
+        load_files([str(tmp_path / "none@tower")])
+
+
+def test_raw_is_a_mark_only_where_no_file_bears_it(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The bytes as they are, at a place as well; a file whose own name begins so is that file."""
+    monkeypatch.chdir(tmp_path)
+    made(tmp_path, "bell.hex", b":00000001FF\n")
+    image, (file,) = load_files(["raw:bell.hex@0x20"])
+    assert (image.segments, file.format, file.name) == ((Segment(0x20, b":00000001FF\n"),), "raw", "bell.hex")
+    made(tmp_path, "raw:bell.hex", b"\x99")
+    assert load_files(["raw:bell.hex"])[0].segments == (Segment(0, b"\x99"),)
+
+
+def test_a_file_given_twice_is_an_overlap(tmp_path: Path) -> None:
+    """The same file at the same place is told, not taken once."""
+    bell = made(tmp_path, "bell.s19", b"S1090100010203040506E0\nS9030000FC\n")
+    with pytest.raises(ImageMistake, match="0100 is given twice"):
+        load_files([bell, bell])
+
+
+def test_a_gap_between_files_is_left_or_filled(tmp_path: Path) -> None:
+    """Between files, as between records: left alone, or the fill where one is given."""
+    low, high = made(tmp_path, "low.bin", b"\x01\x02"), made(tmp_path, "high.bin", b"\x03")
+    image, _ = load_files([high + "@5", low])
+    left, filled = fit(image, 8), fit(image, 8, fill=0x76)
+    assert (left.data, left.used) == (b"\x01\x02\xff\xff\xff\x03\xff\xff", b"\1\1\0\0\0\1\0\0")
+    assert (filled.data, filled.used) == (b"\x01\x02\x76\x76\x76\x03\x76\x76", b"\1" * 8)
+
+
+def test_a_byte_outside_the_chip_is_of_its_file(tmp_path: Path) -> None:
+    """Of several files, the one that reaches outside is named, with its line."""
+    low = made(tmp_path, "low.bin", b"\x01\x02")
+    bell = made(tmp_path, "bell.s19", b"S1090100010203040506E0\nS9030000FC\n")
+    with pytest.raises(ImageMistake) as refused:
+        fit(load_files([low, bell])[0], 0x102)
+    assert str(refused.value.where) == f"{bell}:1"
+    assert "0102" in refused.value.what
+    assert refused.value.hint
 
 
 def test_an_image_of_parts_is_its_bytes() -> None:

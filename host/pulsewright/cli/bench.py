@@ -38,7 +38,7 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
         "--contents",
         metavar="WHAT",
         default="blank",
-        help="blank (as it is without this), noise, noise:SEED, or an image file",
+        help="blank (as it is without this), noise, noise:SEED, or an image file as in `burn`",
     )
     new.add_argument("--fault", metavar="NAME[=...]", action="append", default=[], help="a fault, as often as wanted")
     new.add_argument("--model", metavar="FILE", help="a Python file with make_chip() -> ChipModel, instead of ours")
@@ -57,7 +57,7 @@ def add_commands(commands: argparse._SubParsersAction[Parser]) -> None:
         example="pulsewright bench show tower.bench --json",
     )
     show.add_argument("bench", metavar="BENCH", help="the bench's file")
-    show.add_argument("--save", metavar="FILE", help="write the chip's contents: .hex or .ihx, else raw binary")
+    show.add_argument("--save", metavar="FILE", help="write the chip's contents, as `read -o` does")
     serve = add(
         inner,
         "serve",
@@ -85,7 +85,7 @@ def _new(args: argparse.Namespace, desk: Desk) -> int:
 
     name = _chip_name(args.chip)
     contents: bytes | str = args.contents
-    if Path(args.contents).is_file():
+    if _is_image(args.contents):
         contents = _image(args, name)
     elif args.contents.partition(":")[0] not in ("blank", "noise"):
         raise UsageMistake(
@@ -117,13 +117,20 @@ def _chip_name(given: str) -> str:
     return load(given).name
 
 
+def _is_image(given: str) -> bool:
+    """Whether the words name a file: FILE, FILE@ADDR or raw:FILE."""
+    from pulsewright.image.load import RAW_MARK
+
+    return Path(given).is_file() or given.startswith(RAW_MARK) or Path(given.rpartition("@")[0]).is_file()
+
+
 def _image(args: argparse.Namespace, name: str) -> bytes:
-    from pulsewright.image.load import load as load_image
     from pulsewright.image.memory import fit
+    from pulsewright.image.several import load_files
     from pulsewright.virtual.bench import Bench
 
     chip = Bench(name, model=Path(args.model) if args.model else None, maker=args.maker).chip
-    return fit(load_image(args.contents), len(chip.cells), blank=chip.erased_word & 0xFF, name=name).data
+    return fit(load_files([args.contents])[0], len(chip.cells), blank=chip.erased_word & 0xFF, name=name).data
 
 
 def _show(args: argparse.Namespace, desk: Desk) -> int:

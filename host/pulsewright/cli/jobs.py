@@ -168,6 +168,12 @@ def add_commands(commands: Commands[Parser]) -> None:
     _changing(protecting)
 
 
+def _told(desk: Desk, fitted: Fitted) -> Fitted:
+    """Says what each file was taken for, once the rig is open: that no hardware is touched is to be the first line."""
+    desk.say(*(file.text() for file in fitted.files))
+    return fitted
+
+
 def _fitted(args: argparse.Namespace, definition: Definition) -> Fitted:
     from pulsewright.image.memory import fit
     from pulsewright.image.several import load_files
@@ -302,7 +308,7 @@ def _burn(args: argparse.Namespace, desk: Desk) -> int:
     fitted = _fitted(args, definition)
     if args.erase:
         check_erasable(definition)
-    return _answer(desk, _run(args, desk, definition, lambda context: burn(context, fitted)))
+    return _answer(desk, _run(args, desk, definition, lambda context: burn(context, _told(desk, fitted))))
 
 
 def _verify(args: argparse.Namespace, desk: Desk) -> int:
@@ -310,4 +316,4 @@ def _verify(args: argparse.Namespace, desk: Desk) -> int:
 
     definition = _definition(args)
     fitted = _fitted(args, definition)
-    return _answer(desk, _run(args, desk, definition, lambda context: verify(context, fitted)))
+    return _answer(desk, _run(args, desk, definition, lambda context: verify(context, _told(desk, fitted))))

@@ -8,10 +8,10 @@ first doubt with less than that, and knows nothing of an overlap's other line or
 from __future__ import annotations
 
 import io
-import re
 from dataclasses import dataclass, field
 
-from pulsewright.errors import ImageMistake, Where
+from pulsewright.errors import ImageMistake
+from pulsewright.image.lines import NOT_HEX, mistake, numbered_records, short
 from pulsewright.image.memory import Image, Piece, join_pieces
 
 DATA, END, SEGMENT_BASE, SEGMENT_START, LINEAR_BASE, LINEAR_START = range(6)
@@ -27,9 +27,6 @@ _NAMES = {
 _LENGTHS = {END: 0, SEGMENT_BASE: 2, SEGMENT_START: 4, LINEAR_BASE: 2, LINEAR_START: 4}
 _64K = 0x1_0000
 _4G = 0x1_0000_0000
-_NOT_HEX = re.compile(r"[^0-9A-Fa-f]")
-# Old disk systems filled the last block of a text file with this; it carries nothing.
-_PADDING = "\x1a"
 _RECORD_BYTES = 16
 
 
@@ -41,6 +38,7 @@ class _State:
     base: int = 0
     base_type: int | None = None
     base_line: int = 0
+    past_64k: ImageMistake | None = None  # held until the first base says whether addresses are linear
     end_line: int = 0
     last_line: int = 0
     pieces: list[Piece] = field(default_factory=list)
@@ -50,16 +48,24 @@ def parse_intel_hex(text: str, name: str = "") -> Image:
     """The image of an Intel HEX text; ImageMistake, with file, line and field, at the first fault.
 
     Lower-case digits, any line ends, blank lines and end-of-text padding are taken. Only data records use their
-    address field; that of the others is ignored, because old files put a start address or a base there.
+    address field; that of the others is ignored, because old files put a start address or a base there. What has one
+    reading only is taken: a change between base types 02 and 04 while the base is 0, as objcopy makes it, and a record
+    past FFFF in front of the first base, where that is a linear one.
     """
     state = _State(name)
-    for number, line in enumerate(text.split("\n"), start=1):
-        record = line.strip(" \t\r" + _PADDING)
-        if record:
-            state.last_line = number
-            _take(state, number, line, record)
+    for number, line, record in numbered_records(text):
+        state.last_line = number
+        _take(state, number, line, record)
     if not state.last_line:
-        raise _mistake(state, 0, "", "the image file is empty", wanted="records that begin with ':'", got="none")
+        raise _mistake(
+            state,
+            0,
+            "",
+            "the image file is empty",
+            wanted="records that begin with ':'",
+            got="none",
+            hint="get the file again; is it the right one?",
+        )
     if not state.end_line:
         raise _mistake(
             state,
@@ -70,10 +76,18 @@ def parse_intel_hex(text: str, name: str = "") -> Image:
             got=f"the file ends after line {state.last_line}",
             hint="get the file again; its last part may be lost",
         )
+    if state.past_64k:
+        raise state.past_64k
     image = join_pieces(state.pieces, name=name)
     if not image.segments:
         raise _mistake(
-            state, state.end_line, "", "the image file holds no data", wanted="at least one data record", got="none"
+            state,
+            state.end_line,
+            "",
+            "the image file holds no data",
+            wanted="at least one data record",
+            got="none",
+            hint="is it the right file?",
         )
     return image
 
@@ -87,8 +101,8 @@ def _take(state: _State, number: int, line: str, record: str) -> None:
             "",
             f"a record after the end record of line {state.end_line}",
             wanted="nothing after the end record",
-            got=_short(record),
-            hint="two files may have been put together: remove the first end record, and join them on purpose",
+            got=short(record),
+            hint="two files may have been put together: part them behind the end record, and give both to the command",
         )
     raw = _decode(state, number, line, record)
     kind = raw[3]
@@ -107,14 +121,26 @@ def _decode(state: _State, number: int, line: str, record: str) -> bytes:
     column = line.index(record[0]) + 1
     if record[0] != ":":
         raise _mistake(
-            state, number, f"column {column}", "a line that is not a record", wanted="':' first", got=_short(record)
+            state,
+            number,
+            f"column {column}",
+            "a line that is not a record",
+            wanted="':' first",
+            got=short(record),
+            hint="take the line out, if it is a remark; else compare it with another copy",
         )
     digits = record[1:]
-    strange = _NOT_HEX.search(digits)
+    strange = NOT_HEX.search(digits)
     if strange:
         at = column + 1 + strange.start()
         raise _mistake(
-            state, number, f"column {at}", "a character that is no hex digit", wanted="0-9, A-F", got=repr(strange[0])
+            state,
+            number,
+            f"column {at}",
+            "a character that is no hex digit",
+            wanted="0-9, A-F",
+            got=repr(strange[0]),
+            hint="get the file again, or compare the line with another copy",
         )
     if len(digits) % 2:
         raise _mistake(
@@ -124,6 +150,7 @@ def _decode(state: _State, number: int, line: str, record: str) -> bytes:
             "an odd number of hex digits: one is missing or one too many",
             wanted="two digits a byte",
             got=f"{len(digits)} digits",
+            hint="compare the line with another copy",
         )
     raw = bytes.fromhex(digits)
     if len(raw) < 5:
@@ -134,6 +161,7 @@ def _decode(state: _State, number: int, line: str, record: str) -> bytes:
             "the record is too short",
             wanted="at least 10 hex digits after the ':'",
             got=f"{len(digits)}",
+            hint="the line was cut: get the file again",
         )
     if len(raw) != raw[0] + 5:
         raise _mistake(
@@ -161,7 +189,13 @@ def _decode(state: _State, number: int, line: str, record: str) -> bytes:
 def _check_type(state: _State, number: int, kind: int, length: int) -> None:
     if kind not in _NAMES:
         raise _mistake(
-            state, number, "type", "a record type Intel HEX does not know", wanted="00 to 05", got=f"{kind:02X}"
+            state,
+            number,
+            "type",
+            "a record type Intel HEX does not know",
+            wanted="00 to 05",
+            got=f"{kind:02X}",
+            hint="make the file again as plain Intel HEX",
         )
     if length != _LENGTHS.get(kind, length):
         raise _mistake(
@@ -171,12 +205,16 @@ def _check_type(state: _State, number: int, kind: int, length: int) -> None:
             f"the {_NAMES[kind]} record (type {kind:02X}) has a wrong length",
             wanted=f"{_LENGTHS[kind]} data bytes",
             got=f"{length}",
+            hint="compare the line with another copy, or make the file again",
         )
 
 
 def _set_base(state: _State, number: int, kind: int, value: int) -> None:
-    """A base stays in force until the next one; the specification leaves a mixture of both kinds undefined."""
-    if state.base_type not in (None, kind):
+    """A base stays in force until the next one; the specification leaves a mixture of both kinds undefined.
+
+    With a base of 0 in force a change means the same whether the two replace each other or add up.
+    """
+    if state.base_type not in (None, kind) and state.base:
         raise _mistake(
             state,
             number,
@@ -186,7 +224,9 @@ def _set_base(state: _State, number: int, kind: int, value: int) -> None:
             got=f"type {kind:02X}, {_NAMES[kind]}",
             hint="make the file again with one kind of base",
         )
-    if state.base_type is None:
+    if state.base_type is None and kind == LINEAR_BASE:
+        state.past_64k = None
+    if state.base_type != kind:
         state.base_type, state.base_line = kind, number
     state.base = value << (4 if kind == SEGMENT_BASE else 16)
 
@@ -201,25 +241,22 @@ def _add_data(state: _State, number: int, offset: int, data: bytes) -> None:
         room = _4G - state.base - offset
         state.pieces.append(Piece(state.base + offset, data[:room], number))
         state.pieces.append(Piece(0, data[room:], number))
-    elif offset + len(data) > _64K:
-        raise _mistake(
+    else:
+        state.pieces.append(Piece(offset, data, number))
+    if state.base_type is None and offset + len(data) > _64K and not state.past_64k:
+        state.past_64k = _mistake(
             state,
             number,
             "address",
-            "a record runs past address FFFF before any base record says whether it wraps",
+            "a record runs past address FFFF, and no linear base record says that it may",
             wanted=f"at most {_64K - offset} data bytes from {offset:04X}",
             got=f"{len(data)} data bytes",
+            hint="make the file again with base records (type 04), which reach past 64K",
         )
-    else:
-        state.pieces.append(Piece(offset, data, number))
 
 
-def _short(record: str) -> str:
-    return repr(record if len(record) <= 24 else record[:24] + "...")
-
-
-def _mistake(state: _State, line: int, key: str, what: str, *, wanted: str, got: str, hint: str = "") -> ImageMistake:
-    return ImageMistake(what, where=Where(state.name, line, key), wanted=wanted, got=got, hint=hint)
+def _mistake(state: _State, line: int, key: str, what: str, *, wanted: str, got: str, hint: str) -> ImageMistake:
+    return mistake(state.name, line, key, what, wanted=wanted, got=got, hint=hint)
 
 
 def write_intel_hex(image: Image) -> str:

@@ -8,7 +8,7 @@ from dataclasses import dataclass, field
 from itertools import pairwise
 
 from pulsewright.errors import ImageMistake, UsageMistake, Where
-from pulsewright.units import show_address
+from pulsewright.units import show_address, show_count
 
 
 @dataclass(frozen=True)
@@ -136,6 +136,12 @@ class ImageFile:
     last: int
     size: int
     crc32: str
+
+    def text(self) -> str:
+        """One line for a person, so that a wrong guess of the format is seen."""
+        place = f"{self.first:04X} to {self.last:04X}"
+        gaps = "" if self.size == self.last - self.first + 1 else " with gaps"
+        return f"{self.name}: {self.format}, {show_count(self.size, 'byte')} at {place}{gaps}, CRC-32 {self.crc32}"
 
     def facts(self) -> dict[str, object]:
         """As JSON values."""

@@ -3,33 +3,35 @@
 Source: the record tables of TI SPRU513Z and of two notes on S19 files, as listed in the project's facts. The parser is
 our own for the reason `intel_hex` gives; the writer is a dozen lines, which no library is worth its dependencies for.
 An S0 header may have no address field at all, as some firmware writes it; its content is free text either way. Some
-tools write no end record where there is no start address: a file that counts its records is whole all the same.
+tools write no end record where there is no start address: a file that counts its records is whole all the same. Every
+address is absolute, so S1, S2 and S3 may stand in one file, and any of S7, S8 and S9 ends it: some tools shorten the
+addresses of low bytes, and write one kind of end whatever the data. A record may begin at its last short address and run
+on above it, as srec_cat makes them; no source knows of addresses that wrap.
 """
 
 from __future__ import annotations
 
-import re
 from dataclasses import dataclass, field
 
-from pulsewright.errors import ImageMistake, Where
+from pulsewright.errors import ImageMistake
+from pulsewright.image.lines import NOT_HEX, mistake, numbered_records, short
 from pulsewright.image.memory import Image, Piece, join_pieces
 
 _ADDRESS_BYTES = {1: 2, 2: 3, 3: 4, 5: 2, 6: 3, 7: 4, 8: 3, 9: 2}  # by type
 _DATA = (1, 2, 3)
 _COUNT = (5, 6)
 _END_OF = {1: 9, 2: 8, 3: 7}  # data type -> the end that belongs to it
-_NOT_HEX = re.compile(r"[^0-9A-Fa-f]")
-_PADDING = "\x1a"  # old disk systems filled the last block of a text file with this
+_DIGITS = tuple("0123456789")
 _RECORD_BYTES = 16
+_4G = 1 << 32
 
 
 @dataclass
 class _State:
     name: str
-    kind: int = 0  # of the data records so far
-    kind_line: int = 0
+    kind: int = 0  # the longest of the data records so far
     records: int = 0  # data records
-    counted: int = -1  # what the last count record says
+    count_line: int = 0
     end_line: int = 0
     last_line: int = 0
     pieces: list[Piece] = field(default_factory=list)
@@ -38,12 +40,15 @@ class _State:
 def parse_s_records(text: str, name: str = "") -> Image:
     """The image of a text of S-records; ImageMistake, with file, line and field, at the first fault."""
     state = _State(name)
-    for number, line in enumerate(text.split("\n"), start=1):
-        record = line.strip(" \t\r" + _PADDING)
-        if record:
-            state.last_line = number
-            _take(state, number, line, record)
-    if not (state.end_line or state.counted == state.records > 0):
+    for number, line, record in numbered_records(text):
+        state.last_line = number
+        _take(state, number, line, record)
+    if not state.last_line:
+        raise _mistake(
+            state, 0, "", "the image file is empty", wanted="records that begin with S", got="none",
+            hint="get the file again; is it the right one?",
+        )  # fmt: skip
+    if not (state.end_line or state.count_line):
         raise _mistake(
             state, state.last_line, "", "the end record is missing: the file may have been cut off",
             wanted=f"a count of the records, or an S{_END_OF.get(state.kind, 9)} record after the last one",
@@ -62,7 +67,7 @@ def _take(state: _State, number: int, line: str, record: str) -> None:
     if state.end_line:
         raise _mistake(
             state, number, "", f"a record after the end record of line {state.end_line}",
-            wanted="nothing after the end record", got=_short(record),
+            wanted="nothing after the end record", got=short(record),
             hint="two files may have been put together: give both files to the command instead",
         )  # fmt: skip
     kind, raw = _decode(state, number, line, record)
@@ -79,13 +84,13 @@ def _take(state: _State, number: int, line: str, record: str) -> None:
 def _decode(state: _State, number: int, line: str, record: str) -> tuple[int, bytes]:
     """Type and bytes of a record, from the count to the checksum; mark, digits, length and sum are right."""
     column = line.index(record[0]) + 1
-    if record[0] not in "Ss" or not record[1:2].isdigit():
+    if record[0] not in "Ss" or record[1:2] not in _DIGITS:
         raise _mistake(
             state, number, f"column {column}", "a line that is not a record", wanted="S and a digit first",
-            got=_short(record), hint="take it out, if it is a remark",
+            got=short(record), hint="take it out, if it is a remark",
         )  # fmt: skip
     kind, digits = int(record[1]), record[2:]
-    strange = _NOT_HEX.search(digits)
+    strange = NOT_HEX.search(digits)
     if strange:
         raise _mistake(
             state, number, f"column {column + 2 + strange.start()}", "a character that is no hex digit",
@@ -129,12 +134,17 @@ def _check_sum(state: _State, number: int, raw: bytes) -> None:
 
 
 def _add_data(state: _State, number: int, kind: int, address: int, data: bytes) -> None:
-    top = 1 << 8 * _ADDRESS_BYTES[kind]
-    if address + len(data) > top:
+    if state.count_line:
         raise _mistake(
-            state, number, "address", f"an S{kind} record runs past address {top - 1:X}",
-            wanted=f"at most {top - address} data bytes from {address:X}", got=f"{len(data)} data bytes",
-            hint="make the file again with longer addresses (S2 or S3)",
+            state, number, "type", f"a data record after the count record of line {state.count_line}",
+            wanted="the count behind all data records", got=f"S{kind} at address {address:04X}",
+            hint="two files may have been put together: part them, and give both to the command",
+        )  # fmt: skip
+    if address + len(data) > _4G:
+        raise _mistake(
+            state, number, "address", "a record runs past address FFFFFFFF",
+            wanted=f"at most {_4G - address} data bytes from {address:X}", got=f"{len(data)} data bytes",
+            hint="is it the right file? no chip lies so high",
         )  # fmt: skip
     state.kind = max(kind, state.kind)
     state.records += 1
@@ -148,7 +158,7 @@ def _check_count(state: _State, number: int, count: int, data: bytes) -> None:
             wanted=f"{state.records}, as counted here", got=f"{count}" + (" and data" if data else ""),
             hint="records are missing or doubled: get the file again",
         )  # fmt: skip
-    state.counted = count
+    state.count_line = number
 
 
 def _end(state: _State, number: int, kind: int, data: bytes) -> None:
@@ -160,12 +170,8 @@ def _end(state: _State, number: int, kind: int, data: bytes) -> None:
     state.end_line = number
 
 
-def _short(record: str) -> str:
-    return repr(record if len(record) <= 24 else record[:24] + "...")
-
-
 def _mistake(state: _State, line: int, key: str, what: str, *, wanted: str, got: str, hint: str) -> ImageMistake:
-    return ImageMistake(what, where=Where(state.name, line, key), wanted=wanted, got=got, hint=hint)
+    return mistake(state.name, line, key, what, wanted=wanted, got=got, hint=hint)
 
 
 def _record(kind: int, address: int, size: int, data: bytes = b"") -> str:
@@ -176,7 +182,7 @@ def _record(kind: int, address: int, size: int, data: bytes = b"") -> str:
 
 def write_s_records(image: Image) -> str:
     """The image as S-records of 16 bytes, with the shortest addresses that reach; ValueError past 4G or without any."""
-    if image.last >= 1 << 32:
+    if image.last >= _4G:
         raise ValueError(f"S-records end at FFFFFFFF, the image at {image.last:X}")
     kind = next(kind for kind in _DATA if image.last < 1 << 8 * _ADDRESS_BYTES[kind])
     size = _ADDRESS_BYTES[kind]

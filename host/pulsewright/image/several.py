@@ -9,7 +9,7 @@ from pathlib import Path
 
 from pulsewright.errors import ImageMistake, UsageMistake, Where
 from pulsewright.image.checksum import crc32
-from pulsewright.image.load import RAW, RAW_MARK, load, tell_format
+from pulsewright.image.load import RAW, RAW_MARK, load_told
 from pulsewright.image.memory import Image, ImageFile, Segment
 from pulsewright.units import UnitMistake, parse_address
 
@@ -32,8 +32,7 @@ def load_files(names: Sequence[str]) -> tuple[Image, tuple[ImageFile, ...]]:
 def _one(given: str) -> tuple[Image, str]:
     raw = given.startswith(RAW_MARK) and not Path(given).exists()
     name, at = _placed(given.removeprefix(RAW_MARK) if raw else given)
-    image = load(name, format=RAW if raw else None)
-    chosen = RAW if raw else tell_format(Path(name).read_bytes(), name)
+    image, chosen = load_told(name, format=RAW if raw else None)
     return _moved(image, at), chosen
 
 

@@ -75,10 +75,12 @@ def check_against(ctx: JobContext, fitted: Fitted) -> JobResult:
     """The verify job's work, without its record."""
     resolve_maker(ctx)
     crc = crc_text(fitted.data[ctx.first : ctx.last + 1])
+    images = [file.facts() for file in fitted.files]
     if ctx.record is not None:
-        ctx.record.content["image_crc32"] = crc
+        ctx.record.content |= {"image_crc32": crc, "images": images}
     lines, facts = verify_passes(ctx, fitted, ctx.first, ctx.last, _difference, proven=False)
-    return JobResult(tuple(lines), {**facts, "image_crc32": crc, "words": len(fitted.used) - fitted.used.count(0)})
+    used = len(fitted.used) - fitted.used.count(0)
+    return JobResult(tuple(lines), {**facts, "image_crc32": crc, "images": images, "words": used})
 
 
 def _difference(what: str, *, facts: list[str], did: str) -> PulsewrightError:
