@@ -194,7 +194,7 @@ def _bus(draw: st.DrawFn, family: str) -> Sheet:
     times["cycle"] = (0, 0, draw(st.sampled_from((15_000, 200_000, 1_000_000, 10_000_000))))
     times["after a cycle"] = (_time(draw, 100, 12_000), 0, 0)
     if pages:
-        gap = draw(st.sampled_from((30_000, 100_000, 150_000)))
+        gap = draw(st.sampled_from((50_000, 100_000, 150_000)))
         times["load gap"] = (draw(st.sampled_from((0, 100, 1_000, 9_000))), 0, gap)
         times["after a command"] = (_time(draw, 100, 3_000), 0, 0)
     else:
