@@ -20,9 +20,10 @@ from pulsewright.sequence.proof import prove
 from pulsewright.wire.ops import assemble, decode_program
 from tests.jobs.test_refusals import AT_RUN_TIME
 from tests.sequence import test_proof_bus, test_proof_corners, test_proof_gate, test_proof_rules, test_proof_vpp
+from tests.sequence.bend_case import Case, NoPlace
 from tests.sequence.mutate import labelled
 from tests.sequence.proof_bends import RIG, compiled, kinds_of, part_of
-from tests.sequence.rule_bends import BENDS, Bend, Case, NoPlace
+from tests.sequence.rule_bends import BENDS, Bend
 
 RULES = tuple(f"H{number}" for number in range(1, 12))
 OF_THE_PROOF = tuple(rule for rule in RULES if rule != "H10")

@@ -34,7 +34,8 @@ from pulsewright.wire.tables import Op, Outcome
 from tests.sequence.mutate import KINDS, Mutant, mutant, rewaited
 from tests.sequence.rig_errors import RIG, Errors, errors, rig_with
 from tests.sequence.sheet import FAMILIES, Sheet, sheets
-from tests.sequence.sheet_chip import CUT, chip_of
+from tests.sequence.sheet_bus import CUT
+from tests.sequence.sheet_chip import chip_of
 from tests.sequence.sheet_definition import definition_of
 
 DRAWS = int(os.environ.get("PULSEWRIGHT_DRAWS", "12"))  # sheets of each family
@@ -191,7 +192,7 @@ def whole_job(part: Definition, sheet: Sheet, how: Behaviour, off: Errors, image
 
 
 def test_a_definition_that_misreads_its_sheet_is_found(tmp_path: Path) -> None:
-    """The judge's limits are the sheet's: where a definition has its least times too short, accepted jobs are unclean."""
+    """The judge's limits are the sheet's: where a definition has its minima too short, a job is unclean."""
     found: Counter[str] = Counter()
 
     @DRAWN
