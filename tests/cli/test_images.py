@@ -56,6 +56,33 @@ def test_files_that_overlap_are_refused_before_the_rig_is_touched(bench: Bench) 
     assert seen_nothing(bench)
 
 
+def test_files_may_stand_on_both_sides_of_an_option(bench: Bench) -> None:
+    """All of them are images, in their order; a wrong option beside them is still told."""
+    bench.new("27e512")
+    tune, bell, strike = files(bench.folder)
+    answer = bench.job("verify", "27e512", tune, "--range", "0x30..0x33", bell, "--accept-shortfall", strike)
+    assert answer["facts"][0].startswith("a burn is missing")  # a blank chip: it came as far as to compare
+    record = bench.call("record", "show", "last")["record"]
+    assert [one["format"] for one in record["images"]] == ["intel-hex", "s-record", "raw"]
+    wrong = bench.job("verify", "27e512", tune, "--origni", bell)
+    assert (wrong["exit"], "--origni" in wrong["result"]) == (2, True)
+    outline = bench.call("sequence", "27e512", "burn", "--origin", "0", tune)
+    assert outline["exit"] == 0
+
+
+@pytest.mark.parametrize("job", [["read", "27e512", "-o", "out.bin"], ["verify", "27e512", "a.bin"]])
+@pytest.mark.parametrize("bounds", ["9..1", "0..0x10000", "5", "a..b"])
+def test_a_wrong_range_is_told_with_something_to_try(
+    bench: Bench, monkeypatch: pytest.MonkeyPatch, job: list[str], bounds: str
+) -> None:
+    """Whatever the job and the slip."""
+    monkeypatch.chdir(bench.folder)
+    (bench.folder / "a.bin").write_bytes(b"\x01")
+    bench.new("27e512")
+    answer = bench.job(*job, "--range", bounds)
+    assert (answer["exit"], bool(answer["hint"])) == (2, True)
+
+
 @pytest.mark.parametrize(
     ("name", "content", "what"),
     [

@@ -48,7 +48,9 @@ def main(argv: Sequence[str] | None = None) -> int:
     desk = Desk("--json" in words)
     try:
         args, unknown = make_parser().parse_known_args(words)
-        if unknown:
+        if unknown and "image" in args and not any(word.startswith("-") for word in unknown):
+            args.image += unknown  # argparse takes files in one place only; more of them may stand behind an option
+        elif unknown:
             args.parser.not_known(unknown)
         desk.as_json = args.json
         return int(args.handler(args, desk))

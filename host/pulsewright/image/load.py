@@ -24,10 +24,10 @@ RAW_MARK = "raw:"  # before a file's name: its bytes as they are, whatever they 
 _MARK_OF_UTF8 = b"\xef\xbb\xbf"
 _BLANKS = b" \t\r\n"
 _RECORD_START = re.compile(rb":[0-9A-Fa-f]{10}")
-_NOT_TEXT = re.compile(rb"[^\x20-\x7e\t\r\n\x1a]")
+_PLAIN_TEXT = bytes(range(0x20, 0x7F)) + b"\t\r\n\x1a"
 _S_START = re.compile(rb"[Ss][0-9][0-9A-Fa-f]{6}")
 _CONTROL = re.compile(rb"[\x00-\x08\x0e-\x1f\x7f]")  # line ends, tab, form feed and its like are text
-_UPPER_HALF = re.compile(rb"[\x80-\xff]")
+_UPPER_HALF = bytes(range(0x80, 0x100))
 _MARKS_OF_UTF16 = (b"\xff\xfe", b"\xfe\xff")
 # So many bytes that are all readable without one line's end are no chance: 16 random ones are so once in 5 million.
 _WORDS = 16
@@ -96,7 +96,7 @@ def _records(start: bytes, name: str) -> str:
     """The kind of records that the bytes are, damaged or not; "" for none."""
     suffix = Path(name).suffix.lower()
     named = INTEL_HEX if suffix in HEX_SUFFIXES else S_RECORD if suffix in S_SUFFIXES else ""
-    strange = len(_NOT_TEXT.findall(start))
+    strange = len(start.translate(None, _PLAIN_TEXT))
     readable = strange * 100 <= len(start)  # a few damaged bytes do not make raw data of a file of records
     if _RECORD_START.match(start) or (start.startswith(b":") and (named == INTEL_HEX or readable)):
         return INTEL_HEX
@@ -123,7 +123,10 @@ def _is_text(data: bytes) -> bool:
     A pattern of one or two values, such as a chip full of 55, is no text.
     """
     data = data.rstrip(b"\x1a")
-    if _CONTROL.search(data) or (len(_UPPER_HALF.findall(data)) * 10 > len(data) and not _is_utf8(data)):
+    if _CONTROL.search(data):
+        return False
+    foreign = len(data) - len(data.translate(None, _UPPER_HALF))
+    if foreign * 10 > len(data) and not _is_utf8(data):
         return False
     return b"\n" in data or b"\r" in data or (len(data) >= _WORDS and len(set(data)) > 2)
 
@@ -160,5 +163,6 @@ def format_for(path: Path | str) -> str:
 
 def _checked(wanted: str | None) -> str | None:
     if wanted is not None and wanted not in FORMATS:
-        raise UsageMistake("not an image format", wanted=" or ".join(FORMATS), got=wanted)
+        hint = "without a format, the content tells it"
+        raise UsageMistake("not an image format", wanted=" or ".join(FORMATS), got=wanted, hint=hint)
     return wanted

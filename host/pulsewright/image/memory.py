@@ -226,7 +226,7 @@ def _check_bounds(words: int, first: int, top: int, fill: int | None, name: str)
             f"the range does not lie in the chip{' ' + name if name else ''}",
             wanted=f"FIRST..LAST within 0000..{show_address(words - 1, words)}, FIRST not above LAST",
             got=f"{first:04X}..{top:04X}",
-            hint="--range 0x0000..LAST within the chip, or leave it away for the whole chip",
+            hint="without --range the whole chip is meant",
         )
     if fill is not None and not 0 <= fill <= 0xFF:
         raise UsageMistake(

@@ -5,8 +5,8 @@ our own for the reason `intel_hex` gives; the writer is a dozen lines, which no 
 An S0 header may have no address field at all, as some firmware writes it; its content is free text either way. Some
 tools write no end record where there is no start address: a file that counts its records is whole all the same. Every
 address is absolute, so S1, S2 and S3 may stand in one file, and any of S7, S8 and S9 ends it: some tools shorten the
-addresses of low bytes, and write one kind of end whatever the data. A record may begin at its last short address and run
-on above it, as srec_cat makes them; no source knows of addresses that wrap.
+addresses of low bytes, and write one kind of end whatever the data. A record may begin at its last short address and
+run on above it, as srec_cat makes them; no source knows of addresses that wrap.
 """
 
 from __future__ import annotations

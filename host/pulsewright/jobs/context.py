@@ -128,6 +128,7 @@ class JobContext:
                 f"the range does not lie in {self.definition.name}",
                 wanted=f"FIRST..LAST within {show_address(0, words)}..{show_address(top, words)}, FIRST not above LAST",
                 got=f"{show_address(self.options.first, words)}..{show_address(last, words)}",
+                hint="without --range the whole chip is meant",
             )
         return last
 

@@ -30,6 +30,7 @@ def outline(definition: Definition, rig: Rig, job: str, first: int, last: int, d
             f"the range does not lie in {definition.name}",
             wanted=f"FIRST..LAST within 0000..{show_address(definition.words - 1, definition.words)}",
             got=f"{show_address(first, definition.words)}..{show_address(last, definition.words)}",
+            hint="without --range the whole chip is meant",
         )
     if job == "identify":
         return [compile_identify(definition, rig)]
