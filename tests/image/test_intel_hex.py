@@ -142,6 +142,21 @@ def test_a_type_04_address_wraps_at_4g() -> None:
     assert segments(":02000004FFFFFC\n:04FFFE000102030AEF\n" + END) == {0: "030A", 0xFFFFFFFE: "0102"}
 
 
+@pytest.mark.parametrize("end", ["\n", "\r\n", "\r", "\r\r\n"])
+def test_lines_are_counted_as_an_editor_does(end: str) -> None:
+    """Each kind of line's end is one end, blank lines count, and the fault's line is the one a person finds."""
+    with pytest.raises(ImageMistake, match="checksum") as caught:
+        parse_intel_hex(end.join([":04003000902BB4FD60", "", ":00000001FE", ""]), "chime.hex")
+    assert str(caught.value.where) == "chime.hex:3 checksum"
+
+
+def test_the_first_record_past_64k_is_named() -> None:
+    """Of two, the one that stands first."""
+    with pytest.raises(ImageMistake, match="past address FFFF") as caught:
+        parse_intel_hex(":02FFFF000102FD\n:02FFFF000304F9\n" + END, "chime.hex")
+    assert str(caught.value.where) == "chime.hex:1 address"
+
+
 def test_a_base_of_0_may_change_its_kind() -> None:
     """As objcopy writes an image below and above 1M: 02 set to 0000 before the first 04, and so the other way."""
     below = ":020000021000EC\n:0100000001FE\n:020000020000FC\n:02000004001FDB\n:0100000002FD\n"

@@ -57,7 +57,7 @@ def test_the_content_tells_the_format(content: bytes, name: str, wanted: str) ->
         (b"S1 is not a record\n", "readable text"),
         (b"S1 is not a record", "readable text"),
         (b"[chip]\nname = 'x'\n", "readable text"),
-        (b"[chip]\rname = 'x'\r", "readable text"),
+        (b"a = 1\rb = 2\r", "readable text"),
         (b"[chip]\r\nname = 'x'\r\n\x1a\x1a", "readable text"),
         (b'{"format": 1, "chip": "27e512"}', "readable text"),
         (b"0000 3E 01\tLD A,1\n\x0c0002 C9\tRET\n", "readable text"),

@@ -97,8 +97,19 @@ def test_each_fault_is_told_with_its_line(text: str, line: int, what: str, wante
         f"{FIRST}\nS604000001FA\n{END}",
         f"{FIRST}\nS5030001FB\nS5030001FB\n{END}",
         f"{FIRST}\nS1030200FA\nS5030002FA\n{END}",
+        f"S001FE\n{FIRST}\n{END}",
+        f"S00256A7\n{FIRST}\n{END}",
     ],
-    ids=["crlf", "lower case", "cr alone", "a count of three bytes", "the count twice", "an empty data record counts"],
+    ids=[
+        "crlf",
+        "lower case",
+        "cr alone",
+        "a count of three bytes",
+        "the count twice",
+        "an empty data record counts",
+        "no header text",
+        "a header of one letter",
+    ],
 )
 def test_harmless_variants_are_taken(text: str) -> None:
     """Other line ends, blank lines, small letters, end-of-text padding, either count."""
@@ -153,6 +164,13 @@ def test_a_long_file_has_a_longer_count(records: int, count: str) -> None:
     text = write_s_records(image)
     assert text.splitlines()[-2] == count
     assert parse_s_records(text) == image
+
+
+def test_what_cannot_be_written_is_the_callers_mistake() -> None:
+    """Past 4G no address reaches; the last byte below it is written."""
+    assert parse_s_records(write_s_records(Image((Segment(0xFFFF_FFFF, b"\x01"),)))).first == 0xFFFF_FFFF
+    with pytest.raises(ValueError, match="FFFFFFFF"):
+        write_s_records(Image((Segment(0xFFFF_FFFF, b"\x01\x02"),)))
 
 
 @given(st.data())

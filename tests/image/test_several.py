@@ -59,6 +59,9 @@ def test_a_place_moves_records_too(tmp_path: Path) -> None:
     with pytest.raises(ImageMistake) as refused:
         fit(image, 0x1000)
     assert str(refused.value.where) == f"{tune}:1"
+    two = made(tmp_path, "two.hex", b":0100100001EE\n:0100200002DD\n:00000001FF\n")
+    moved, _ = load_files([f"{two}@16K"])
+    assert [str(moved.where(at)) for at in (0x4010, 0x4020)] == [f"{two}:1", f"{two}:2"]
 
 
 def test_a_name_with_an_at_sign_is_that_file(tmp_path: Path) -> None:
