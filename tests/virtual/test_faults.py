@@ -2,13 +2,19 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+from pathlib import Path
+
 import pytest
 
 from pulsewright.errors import UsageMistake
-from pulsewright.virtual.bad_contacts import LINE_UA, SHORT_UA, BadContacts
+from pulsewright.virtual.bad_contacts import LINE_UA, SHORT_UA, AtPins, BadContacts
 from pulsewright.virtual.bench import Bench
 from pulsewright.virtual.faults import FAULTS, parse_faults
-from tests.virtual.kit import PIN_CE, PIN_OE, PIN_VCC, PINS_A, PINS_D, PlainChip
+from pulsewright.virtual.judge import Judge
+from pulsewright.virtual.socket import Socket
+from pulsewright.wire.tables import Level, Range
+from tests.virtual.kit import PIN_A9, PIN_CE, PIN_OE, PIN_VCC, PINS_A, PINS_D, WIRING, PlainChip, limits
 
 
 def test_faults_mean_what_they_say() -> None:
@@ -28,6 +34,8 @@ def test_faults_mean_what_they_say() -> None:
     assert not faults.chip.protected
     assert rig.board == {"raised_offset_mv": -300, "vcc_offset_mv": 150, "fall_more_ticks": 640}
     assert (rig.lifted, rig.touching) == ((22, 3), ((1, 2),))
+    assert parse_faults(["vcc-slow-fall=1000"]).board == {"vcc_fall_more_ticks": 16_000}
+    assert parse_faults(["other=28c256"]).other == "28c256"
     assert weak == ((5, 0x80, 5_100, False), (6, 1, 4_400, True))
 
 
@@ -60,7 +68,7 @@ def test_an_unknown_fault_gets_the_nearest_name(text: str, word: str) -> None:
             "slow=5,0",
         ),
         *("slow=5", "stuck=1,2", "stuck=1,2,4", "stuck=-1,1,1", "rail-sag=x", "rail-sag", "rail-sag=-5", "lifted=0"),
-        *("lifted=A9", "short=4", "short=4,4", "vcc-offset=high", "weak=1,0,5000", "slow-fall=-1"),
+        *("lifted=A9", "short=4", "short=4,4", "vcc-offset=high", "weak=1,0,5000", "slow-fall=-1", "other"),
     ],
 )
 def test_wrong_arguments_are_refused_with_the_form(text: str) -> None:
@@ -90,6 +98,7 @@ def test_every_fault_has_a_sentence_and_is_known() -> None:
         "PIN,PIN": "=1,2",
         "ADDR,MASK,MV": "=1,1,1",
         "ADDR": "=1",
+        "PART": "=28c256",
         "": "",
     }
     for name, (form, about) in FAULTS.items():
@@ -131,12 +140,37 @@ def test_good_contacts_change_nothing() -> None:
     assert seen(BadContacts(PlainChip(b"\x5a"))) == (0xFF, 0x5A)
 
 
-@pytest.mark.parametrize("pin", [PIN_VCC, PIN_GND])
-def test_a_chip_without_a_supply_is_silent(pin: int) -> None:
-    """VCC or GND lifted: nothing driven, nothing taken."""
-    contacts = BadContacts(PlainChip(b"\x5a"), [pin])
-    assert seen(contacts)[0] == 0
+def test_a_chip_without_ground_lives_on_low_inputs() -> None:
+    """Fed through many lines that are low it reads right; through two, its own current lifts its ground too far."""
+    chip = PlainChip(b"\x5a".ljust(65_536, b"\x5a"))
+    contacts = BadContacts(chip, [PIN_GND])
+    chip.draw[PIN_VCC] = 20_000  # through 18 lines of 330 ohm 0.37 V, through two 3.3 V
+    high = {f"p{pin}": 5_000 for pin in PINS_A}
+    assert seen(contacts) == (0xFF, 0x5A)
+    assert seen(contacts, **high) == (0, 0)
+    sagging = {**high, f"p{PIN_VCC}": 5_250}
+    chip.draw[PIN_VCC] = 8_000  # 1.42 V and a diode: it works, and its low is no low for the rig
+    assert seen(contacts, **sagging) == (0xFF, 0xFF)
+    chip.draw[PIN_VCC] = 2_000
+    assert seen(contacts, **high) == (0xFF, 0x5A)
+    assert seen(contacts, **high, **{f"p{pin}": 5_000 for pin in (PIN_CE, PIN_OE)}) == (0, 0)
+
+
+def test_a_chip_without_vcc_lives_on_high_inputs() -> None:
+    """Fed through an input that is high it answers, as far as its current lets it; with all low it is silent."""
+    chip = PlainChip(b"\x5a".ljust(65_536, b"\x5a"))
+    contacts = BadContacts(chip, [PIN_VCC])
+    assert seen(contacts) == (0, 0)
+    assert seen(contacts, **{f"p{PINS_A[0]}": 5_000}) == (0xFF, 0x5A)
     assert contacts.draw_ua(0, PIN_VCC) == 0
+    chip.draw[PIN_VCC] = 20_000
+    assert seen(contacts, **{f"p{PINS_A[0]}": 5_000}) == (0, 0)
+
+
+def test_a_chip_without_either_is_silent() -> None:
+    """Nothing feeds it."""
+    contacts = BadContacts(PlainChip(b"\x5a"), [PIN_VCC, PIN_GND])
+    assert seen(contacts, **{f"p{PINS_A[0]}": 5_000}) == (0, 0)
 
 
 def test_a_lifted_output_reaches_nobody() -> None:
@@ -176,13 +210,90 @@ def test_inputs_that_touch_see_the_lower_level() -> None:
 
 
 def test_a_supply_that_is_short_is_asked_for_too_much() -> None:
-    """VCC at ground; VCC at a line that is low; a raised pin at one."""
+    """VCC at ground; VCC at a line that is low."""
     contacts = BadContacts(PlainChip(), touching=[(PIN_VCC, PIN_GND)])
     contacts.pins_changed(0, levels())
     assert contacts.draw_ua(0, PIN_VCC) == SHORT_UA
     contacts = BadContacts(PlainChip(), touching=[(PIN_VCC, 27)])
     contacts.pins_changed(0, levels())
     assert contacts.draw_ua(0, PIN_VCC) >= LINE_UA
+
+
+def test_a_raised_level_reaches_the_pin_beside_it() -> None:
+    """A line cannot hold a raised rail down: both pins stand at it, and the judge sees that; A9's limiter gives way."""
     contacts = BadContacts(PlainChip(), touching=[(PIN_OE, PIN_OE - 1)])
-    contacts.pins_changed(0, levels(**{f"p{PIN_OE}": 12_000}))
+    judge = Judge(limits(), misplaced=True)
+    raised = levels(**{f"p{PIN_OE}": 12_000})
+    contacts.pins_changed(0, raised)
+    AtPins(judge, contacts).edges(0, raised, (PIN_OE,))
+    assert contacts.at_pins(raised)[PIN_OE - 1] == 12_000
+    assert contacts.draw_ua(0, PIN_OE) == PlainChip().pulse_ua + LINE_UA
+    assert ("absolute maximum", PIN_OE - 1) in {(one.rule, one.pin) for one in judge.violations}
+
+    chip = PlainChip()
+    chip.limits = replace(limits(), identify_pin=PIN_A9)
+    limited = BadContacts(chip, touching=[(PIN_A9, PIN_A9 + 1)])
+    raised = levels(**{f"p{PIN_A9}": 12_000})
+    limited.pins_changed(0, raised)
+    assert limited.at_pins(raised)[PIN_A9] == 0
+    assert limited.draw_ua(0, PIN_A9) == SHORT_UA
+
+
+def test_a_raised_pin_at_ground_is_a_short() -> None:
+    """Ground holds against all."""
+    contacts = BadContacts(PlainChip(), touching=[(PIN_OE, PIN_GND)])
+    raised = levels(**{f"p{PIN_OE}": 12_000})
+    contacts.pins_changed(0, raised)
+    assert contacts.at_pins(raised)[PIN_OE] == 0
     assert contacts.draw_ua(0, PIN_OE) == SHORT_UA
+
+
+def test_three_pins_that_touch_are_one() -> None:
+    """Pairs that share a pin join: what stands at one end is at the other."""
+    contacts = BadContacts(PlainChip(), touching=[(PINS_A[0], PINS_A[1]), (PINS_A[1], PINS_A[2])])
+    given = {f"p{pin}": 5_000 for pin in PINS_A[:3]}
+    assert contacts.at_pins(levels(**{**given, f"p{PINS_A[2]}": 0}))[PINS_A[0]] == 0
+    assert contacts.at_pins(levels(**given))[PINS_A[0]] == 5_000
+
+
+def test_a_line_that_is_let_go_shows_its_neighbour() -> None:
+    """Its pull gives way to a neighbour that is held low; let go both, they stand up; at VCC it stands up unpulled."""
+    socket = Socket(BadContacts(PlainChip(), touching=[(PIN_OE, 21), (27, PIN_VCC)]), WIRING)
+    socket.touch([(PIN_OE, 21), (27, PIN_VCC)])
+    socket.set_rail(0, 5_000)
+    socket.set_range(0, Range.PROBE, (30,))
+    socket.end_ramps(1_000_000)
+    socket.set_lines(1_000_000, ((29, Level.RELEASED), (24, Level.RELEASED)))
+    assert (socket.line(1_000_000, 29), socket.line(1_000_000, 24)) == (1, 0)
+    socket.set_range(1_000_000, Range.FULL, (30,))
+    assert socket.line(1_000_000, 24) == 0
+    socket.set_lines(1_000_001, ((23, Level.RELEASED),))
+    assert socket.line(1_000_001, 24) == 1
+
+
+# ---- another chip, a slow supply -------------------------------------------------------------------------------------
+
+
+def test_another_part_sits_in_the_socket() -> None:
+    """The model is the other part's; a part that has none is told by its name; two chips do not fit."""
+    assert Bench.fresh("27c256", "blank", faults=["other=28c256"]).chip.name == "28c256"
+    with pytest.raises(UsageMistake, match="no model of the chip 28c257"):
+        Bench.fresh("27c256", "blank", faults=["other=28c257"])
+    with pytest.raises(UsageMistake, match="one other part"):
+        parse_faults(["other=28c256", "other=27e512"])
+    model = Path(__file__).parents[1] / "models" / "m2716.py"
+    with pytest.raises(UsageMistake, match="one chip sits"):
+        Bench("2716", faults=["other=28c256"], model=model)
+
+
+def test_vcc_falls_later() -> None:
+    """The fault adds to the board's own time, to the tick."""
+    ends = []
+    for faults in ([], ["vcc-slow-fall=1000"]):
+        socket = Bench.fresh("27e512", "blank", faults=faults).rig().socket
+        socket.set_rail(0, 5_000)
+        socket.set_range(0, Range.FULL, (30,))
+        socket.end_ramps(1_000_000)
+        socket.set_range(1_000_000, Range.OFF, (30,))
+        ends.append(socket.next_end)
+    assert ends[1] - ends[0] == 16_000

@@ -152,7 +152,7 @@ def _show_lines(bench: Bench, facts: dict[str, Any], saved: str | None) -> list[
 
     lines = [f"{_chip_text(bench)}, contents CRC-32 {facts['crc32'].upper()}"]
     lines.append(f"faults: {', '.join(bench.faults.texts) or 'none'}")
-    signals = _signals(bench.chip_name)
+    signals = _signals(bench.faults.other or bench.chip_name)
     rows = [[pin, signals.get(int(pin), ""), show_mv(seen["max_mv"])] for pin, seen in facts["pins"].items()]
     lines += table(["pin", "signal", "highest"], rows) if rows else ["its pins have seen nothing yet"]
     lines.append(f"limits of the data sheet broken: {facts.get('violation_count', len(facts['violations']))}")

@@ -17,7 +17,7 @@ from typing import Any
 
 from pulsewright.errors import FileMistake, Problem, RigFileMistake, UsageMistake, Where
 from pulsewright.files import read_whole, write_whole
-from pulsewright.virtual.bad_contacts import BadContacts
+from pulsewright.virtual.bad_contacts import AtPins, BadContacts
 from pulsewright.virtual.board import Board
 from pulsewright.virtual.faults import Faults, parse_faults
 from pulsewright.virtual.interface import ChipModel, PinHistory, Violation
@@ -128,9 +128,13 @@ class Bench:
         misplaced = bool(seat or self.faults.lifted or self.faults.touching)
         judge = self.judge = Judge(limits, misplaced=misplaced, busy=getattr(chip, "is_busy", None))
         board = replace(Board(button=self.jumper), **self.faults.board)
-        if self.faults.lifted or self.faults.touching:
-            chip = BadContacts(chip, self.faults.lifted, self.faults.touching)
-        return VirtualRig(Socket(chip, wiring(limits.package, seat), (judge,)), boot=self.boots, board=board)
+        positions = wiring(limits.package, seat)
+        if not (self.faults.lifted or self.faults.touching):
+            return VirtualRig(Socket(chip, positions, (judge,)), boot=self.boots, board=board)
+        contacts = BadContacts(chip, self.faults.lifted, self.faults.touching)
+        socket = Socket(contacts, positions, (AtPins(judge, contacts),))
+        socket.touch(self.faults.touching)
+        return VirtualRig(socket, boot=self.boots, board=board)
 
     def _check_pins(self) -> None:
         """UsageMistake for a fault of a pin that the chip does not have."""
@@ -143,7 +147,14 @@ class Bench:
 
     def _make(self) -> ChipModel:
         if self.model is None:
-            return make_model(self.chip_name, self.maker)
+            named = make_model(self.chip_name, self.maker)
+            return make_model(self.faults.other) if self.faults.other else named
+        if self.faults.other:
+            raise UsageMistake(
+                "one chip sits in the socket",
+                wanted="--fault other or --model",
+                got=f"--fault other={self.faults.other} and --model {self.model}",
+            )
         if self.maker:
             raise UsageMistake(
                 "a model of your own is of no other maker",

@@ -61,6 +61,7 @@ class Board:
     raised_offset_mv: int = 0  # what the rail stands above its nominal step; the fault "rail-offset"
     vcc_offset_mv: int = 0  # the same of VCC; the fault "vcc-offset"
     fall_more_ticks: int = 0  # the fault "slow-fall"
+    vcc_fall_more_ticks: int = 0  # the same of VCC; the fault "vcc-slow-fall"
     raised_ohm_tenths: int = 5  # a raised switch: 28 mV at 50 mA [sim]
     limiter_position: int = 26  # A9: mirror with limiter
     limiter_drop_mv: int = 91  # at no current [sim]

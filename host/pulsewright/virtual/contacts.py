@@ -57,6 +57,7 @@ class Contacts:
         self.vcc_at: frozenset[int] = frozenset()
         self.raised_rail = Ramp()
         self._raised: dict[int, Ramp] = {}
+        self._touching: dict[int, tuple[int, ...]] = {}  # position -> those it touches at the chip
         self.peak_mv = [0] * (POSITIONS + 1)  # highest level of each position that was raised or a supply
         # what follows from all that, kept at hand
         self.alive = False  # the chip's own VCC and GND pins have VCC and ground
@@ -118,8 +119,29 @@ class Contacts:
             return 0
         return self._high if state == HIGH else self._weak(position)
 
+    def touch(self, pairs: Iterable[tuple[int, int]]) -> None:
+        """These pins of the chip touch: a line that is let go shows what its neighbour is held at."""
+        for a, b in pairs:
+            one, other = self._position_of[a], self._position_of[b]
+            for position, mate in ((one, other), (other, one)):
+                self._touching[position] = (*self._touching.get(position, ()), mate)
+
+    def _touched(self, position: int) -> int | None:
+        """The level that the neighbours of a let-go line are held at; ground, then supplies, then low before high."""
+        held = []
+        for mate in self._touching.get(position, ()):
+            supply = mate in self._gnd or mate in self.vcc_at or mate in self._raised
+            if not supply and (mate in _DATA_BIT or self._line_state(mate) == RELEASED):
+                continue  # held weakly at most
+            level = self._resolve(mate)
+            if level is not None:
+                held.append((mate not in self._gnd, not supply, level))
+        return min(held)[2] if held else None
+
     def _weak(self, position: int) -> int | None:
         """The level of a position that the rig lets go."""
+        if self._touching and position not in _DATA_BIT and (held := self._touched(position)) is not None:
+            return held
         pin = self._pin_at[position]
         output = self._output_bit.get(pin) if pin else None
         if output is not None and self.alive and self._chip_mask >> output & 1:

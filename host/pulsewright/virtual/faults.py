@@ -1,8 +1,8 @@
 """Faults a bench can be given: what each does, how it is written, and its parsed form.
 
-Three kinds: how the chip sits in the socket (absent, reversed, shifted, lifted, short), what is wrong with the chip
-itself (wrong-id, slow, stuck, dead, weak, under-erased, protected), and what is wrong with the rig around it (rail-sag,
-rail-offset, vcc-offset, slow-fall).
+Three kinds: how the chip sits in the socket (absent, reversed, shifted, other, lifted, short), what is wrong with the
+chip itself (wrong-id, slow, stuck, dead, weak, under-erased, protected), and what is wrong with the rig around it
+(rail-sag, rail-offset, vcc-offset, slow-fall, vcc-slow-fall).
 """
 
 from __future__ import annotations
@@ -19,6 +19,7 @@ FAULTS: dict[str, tuple[str, str]] = {
     "absent": ("", "no chip in the socket"),
     "reversed": ("", "the chip turned round: pin 1 where the last pin belongs"),
     "shifted": ("", "the chip one row of contacts too far from the bottom of the socket"),
+    "other": ("PART", "a fresh chip of another part sits there; --contents fills that one, --maker is the named one's"),
     "lifted": ("PIN", "that pin of the chip has no contact"),
     "short": ("PIN,PIN", "those two pins of the chip touch"),
     "wrong-id": ("HEX,HEX", "the chip answers these ID bytes: manufacturer, device"),
@@ -32,6 +33,7 @@ FAULTS: dict[str, tuple[str, str]] = {
     "rail-offset": ("MV", "the raised rail stands so many millivolts off its step (-300: below)"),
     "vcc-offset": ("MV", "VCC stands so many millivolts off its step (-300: below)"),
     "slow-fall": ("US", "raised positions take so many microseconds more to fall"),
+    "vcc-slow-fall": ("US", "VCC takes so many microseconds more to fall"),
 }
 SEATS = ("absent", "reversed", "shifted")
 
@@ -69,6 +71,7 @@ class Faults:
 
     texts: tuple[str, ...] = ()
     seat: str = ""  # one of SEATS, or "" for a chip that sits as it should
+    other: str = ""  # the part that sits there instead of the one that is named
     chip: ChipFaults = field(default_factory=ChipFaults)
     board: Mapping[str, Any] = field(default_factory=dict)  # what of the Board is other, by its fields
     lifted: tuple[int, ...] = ()  # chip pins
@@ -81,13 +84,17 @@ _OF_BOARD = {
     "rail-offset": ("raised_offset_mv", 1),
     "vcc-offset": ("vcc_offset_mv", 1),
     "slow-fall": ("fall_more_ticks", 16),
+    "vcc-slow-fall": ("vcc_fall_more_ticks", 16),
 }
 
 
 def parse_faults(texts: Iterable[str]) -> Faults:
     """The meaning of texts such as "reversed" or "slow=5,3"; UsageMistake for an unknown name or wrong arguments."""
     given = tuple(texts)
-    parsed = [_parse_one(text) for text in given]
+    others = [text.partition("=")[2] for text in given if text.partition("=")[0] == "other"]
+    if others and (len(others) > 1 or not others[0]):
+        raise UsageMistake("one other part sits in the socket", wanted="other=PART, once", got=", ".join(given))
+    parsed = [_parse_one(text) for text in given if text.partition("=")[0] != "other"]
 
     def of(name: str) -> list[tuple[int, ...]]:
         return [numbers for one, numbers in parsed if one == name]
@@ -114,7 +121,8 @@ def parse_faults(texts: Iterable[str]) -> Faults:
     )
     board = {field: numbers[0] * unit for name, (field, unit) in _OF_BOARD.items() for numbers in of(name)}
     touching = tuple((a, b) for a, b in of("short"))
-    return Faults(given, seats[0] if seats else "", chip, board, tuple(pin for (pin,) in of("lifted")), touching)
+    lifted = tuple(pin for (pin,) in of("lifted"))
+    return Faults(given, seats[0] if seats else "", "".join(others), chip, board, lifted, touching)
 
 
 def _parse_one(text: str) -> tuple[str, tuple[int, ...]]:

@@ -48,7 +48,7 @@ class Supplied(Contacts):
         board = self.board
         before, self.range = self.range, which
         if which == Range.OFF:
-            self._ramp_vcc(t, 0, board.vcc_off_ticks)
+            self._ramp_vcc(t, 0, board.vcc_off_ticks + board.vcc_fall_more_ticks)
             return
         self.vcc_at = frozenset(positions)
         for position in self.vcc_at:
