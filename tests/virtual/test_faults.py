@@ -7,6 +7,7 @@ from pathlib import Path
 
 import pytest
 
+from pulsewright.cli.main import main
 from pulsewright.errors import UsageMistake
 from pulsewright.virtual.bad_contacts import LINE_UA, SHORT_UA, AtPins, BadContacts
 from pulsewright.virtual.bench import Bench
@@ -284,6 +285,16 @@ def test_another_part_sits_in_the_socket() -> None:
     model = Path(__file__).parents[1] / "models" / "m2716.py"
     with pytest.raises(UsageMistake, match="one chip sits"):
         Bench("2716", faults=["other=28c256"], model=model)
+
+
+def test_contents_are_fitted_to_the_chip_that_sits_there(tmp_path: Path) -> None:
+    """64 KB fit into the 27e512 that sits in a 27c256's place, and are all there."""
+    image = tmp_path / "image.bin"
+    image.write_bytes(bytes(range(256)) * 256)
+    bench = tmp_path / "tower.bench"
+    words = ["bench", "new", str(bench), "--chip", "27c256", "--contents", str(image), "--fault", "other=27e512"]
+    assert main(words) == 0
+    assert bytes(Bench.load(bench).chip.cells) == image.read_bytes()
 
 
 def test_vcc_falls_later() -> None:

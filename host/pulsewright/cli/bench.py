@@ -129,7 +129,8 @@ def _image(args: argparse.Namespace, name: str) -> bytes:
     from pulsewright.image.several import load_files
     from pulsewright.virtual.bench import Bench
 
-    chip = Bench(name, model=Path(args.model) if args.model else None, maker=args.maker).chip
+    other = [text for text in args.fault if text.startswith("other=")]
+    chip = Bench(name, model=Path(args.model) if args.model else None, maker=args.maker, faults=other).chip
     return fit(load_files([args.contents])[0], len(chip.cells), blank=chip.erased_word & 0xFF, name=name).data
 
 
