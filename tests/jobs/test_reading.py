@@ -8,6 +8,7 @@ import pytest
 
 from pulsewright.errors import Difference
 from pulsewright.jobs.blank import blank
+from pulsewright.jobs.erase import save_first
 from pulsewright.jobs.identify import identify
 from pulsewright.jobs.margins import Look, told, unsteady
 from pulsewright.jobs.read import read
@@ -112,3 +113,14 @@ def test_blank_check_tells_words_and_vcc() -> None:
     session.cells[0x8001] = 0xFE
     with pytest.raises(Difference, match="word 8001 reads FE"):
         blank(context(session))
+
+
+def test_a_burn_tells_the_same_doubts_before_it_writes() -> None:
+    """Half a chip twice, looked at before a burn: the address line with its pin, while it can still be stopped."""
+    half = bytes(noise(7)[: WORDS // 2])
+    session = FakeSession(bytearray(half + half))
+    looked = context(session)
+    _, _, lines = save_first(looked, 0, WORDS - 1)
+    assert any("A15 (pin 1)" in line for line in lines)
+    _, _, lines = save_first(context(session), 0, WORDS // 2 - 1)
+    assert not any("A15" in line for line in lines)

@@ -7,9 +7,8 @@ from pulsewright.errors import FileMistake, UsageMistake, Where
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.maker import check_maker, resolve_maker
-from pulsewright.jobs.plan import alike_data_lines
 from pulsewright.jobs.pulses import tries_of
-from pulsewright.jobs.read import alike_text, read_agreed
+from pulsewright.jobs.read import doubts_of, read_agreed
 from pulsewright.jobs.record import crc_text, save_dump
 from pulsewright.jobs.writing import KEEP, check_protect, write_sequences, write_words
 from pulsewright.link.results import RunResult
@@ -50,7 +49,8 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
     """
     result = read_agreed(ctx, "save" if ctx.options.save else "look", 2, first, last)
     facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
-    doubts = alike_text(ctx.definition, alike_data_lines(result.data, ctx.definition.width))
+    whole = last - first + 1 == ctx.definition.words
+    doubts = doubts_of(ctx.definition, result.data, whole=whole).text(ctx.definition)
     for doubt in doubts:
         ctx.progress.fact(doubt)
     if not ctx.options.save:

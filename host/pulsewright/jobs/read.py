@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
+
 from pulsewright.chip.model import Definition
 from pulsewright.errors import Difference
 from pulsewright.jobs.context import JobContext, JobResult, job
@@ -94,12 +96,41 @@ def _read_margins(ctx: JobContext, data: bytes) -> list[str]:
     return lines
 
 
-def alike_text(definition: Definition, pairs: list[tuple[int, int]]) -> list[str]:
-    """Data lines that always read alike, as lines of text."""
-    pins = definition.pins["D"]
-    return [
-        f"D{a} (pin {pins[a]}) and D{b} (pin {pins[b]}) read alike in every word: do the pins touch?" for a, b in pairs
-    ]
+@dataclass(frozen=True)
+class Doubts:
+    """What the data of a read says about the contacts: address bits and pairs, pairs of data bits."""
+
+    still: tuple[int, ...]
+    joined: tuple[tuple[int, int], ...]
+    alike: tuple[tuple[int, int], ...]
+
+    def text(self, definition: Definition) -> list[str]:
+        """As lines of text, each pin named."""
+        a, d = definition.pins["A"], definition.pins["D"]
+        lines = []
+        if self.still:
+            names = ", ".join(f"A{bit} (pin {a[bit]})" for bit in self.still)
+            lines.append(f"the data never changes with {names}: open pin or repeated image")
+        lines += [f"A{x} (pin {a[x]}) and A{y} (pin {a[y]}) act as one: do the pins touch?" for x, y in self.joined]
+        return lines + [
+            f"D{x} (pin {d[x]}) and D{y} (pin {d[y]}) read alike in every word: do the pins touch?"
+            for x, y in self.alike
+        ]
+
+    def facts(self) -> dict[str, object]:
+        """As JSON values."""
+        return {
+            "unchanging_lines": [f"A{bit}" for bit in self.still],
+            "joined_lines": [[f"A{bit}" for bit in pair] for pair in self.joined],
+            "alike_data_lines": [[f"D{bit}" for bit in pair] for pair in self.alike],
+        }
+
+
+def doubts_of(definition: Definition, data: bytes, *, whole: bool) -> Doubts:
+    """The doubts about contacts that data gives; of address lines only the whole chip tells."""
+    still = tuple(unchanging_lines(data)) if whole else ()
+    joined = tuple(joined_lines(data)) if whole else ()
+    return Doubts(still, joined, tuple(alike_data_lines(data, definition.width)))
 
 
 def _work(ctx: JobContext) -> JobResult:
@@ -116,25 +147,15 @@ def _work(ctx: JobContext) -> JobResult:
     lines += margins
     blank = data.count(definition.blank)
     lines.append(f"{blank} of them are {ctx.hex(definition.blank)}, the erased state")
-    still = unchanging_lines(data) if ctx.words == definition.words else []
-    if still:
-        names = ", ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in still)
-        lines.append(f"the data never changes with {names}: open pin or repeated image")
-    pairs = joined_lines(data) if ctx.words == definition.words else []
-    for pair in pairs:
-        pins = " and ".join(f"A{bit} (pin {definition.pins['A'][bit]})" for bit in pair)
-        lines.append(f"{pins} act as one: do the pins touch?")
-    alike = alike_data_lines(data, definition.width)
-    lines += alike_text(definition, alike)
+    doubts = doubts_of(definition, data, whole=ctx.words == definition.words)
+    lines += doubts.text(definition)
     facts: dict[str, object] = {
         **id_facts(definition, result),
         "words": len(data),
         "passes": ctx.options.passes,
         "crc32": crc_text(data),
         "blank_words": blank,
-        "unchanging_lines": [f"A{bit}" for bit in still],
-        "alike_data_lines": [[f"D{bit}" for bit in pair] for pair in alike],
-        "joined_lines": [[f"A{bit}" for bit in pair] for pair in pairs],
+        **doubts.facts(),
         "vcc_mv": step,
         "margins": margins,
     }
