@@ -9,15 +9,16 @@ from typing import Literal
 from pulsewright.link.transport import Timing, Transport
 
 Way = Literal["to rig", "from rig"]
-Kind = Literal["drop", "flip", "double", "stall", "cut"]
+Kind = Literal["drop", "flip", "zero", "double", "stall", "cut"]
 
 
 @dataclass(frozen=True)
 class Harm:
-    """What happens to byte number `at` (from 0) of one direction.
+    """What happens to byte number `at` (from 0) of one direction, counted from the beginning of a part (`begin_part`).
 
-    drop: it is lost. flip: the bits of `mask` are turned over. double: it arrives twice. stall: it and all behind it
-    wait for `for_us`. cut: it and all behind it are lost for good.
+    drop: it is lost. flip: the bits of `mask` are turned over. zero: it becomes a zero, the end of a frame; a zero
+    becomes FF. double: it arrives twice. stall: it and all behind it wait for `for_us`. cut: it and all behind it are
+    lost for good.
     """
 
     way: Way
@@ -25,26 +26,40 @@ class Harm:
     kind: Kind
     mask: int = 0x10
     for_us: int = 0
+    part: int = 0
 
 
 class Faulty:
-    """A transport around another one; the same harms always do the same. `passed` counts the bytes of each way."""
+    """A transport around another one; the same harms always do the same.
+
+    `passed` counts the bytes of each way, `struck` has the harms that met their byte.
+    """
 
     def __init__(self, inner: Transport, harms: Iterable[Harm]) -> None:
         self.name = inner.name
         self.passed: dict[Way, int] = {"to rig": 0, "from rig": 0}
         self._inner = inner
-        self._harms = {(harm.way, harm.at): harm for harm in harms}
+        self.struck: list[Harm] = []
+        self._harms = {(harm.part, harm.way, harm.at): harm for harm in harms}
+        self._part = 0
+        self._begun: dict[Way, int] = {"to rig": 0, "from rig": 0}
         self._cut: set[Way] = set()
         self._held: dict[Way, bytearray] = {"to rig": bytearray(), "from rig": bytearray()}
         self._until_us: dict[Way, int] = {"to rig": 0, "from rig": 0}
+
+    def begin_part(self) -> None:
+        """Harms of the next part count from here: what an earlier harm made longer moves none of them."""
+        self._part += 1
+        self._begun = dict(self.passed)
 
     def _through(self, way: Way, data: bytes) -> bytes:
         """What of `data` gets on now; the rest is lost or held."""
         now = bytearray()
         for byte in data:
-            harm = self._harms.get((way, self.passed[way]))
+            harm = self._harms.get((self._part, way, self.passed[way] - self._begun[way]))
             self.passed[way] += 1
+            if harm is not None:
+                self.struck.append(harm)
             if harm is not None and harm.kind == "cut":
                 self._cut.add(way)
             if way in self._cut:
@@ -56,6 +71,8 @@ class Faulty:
                 copies = 0 if harm.kind == "drop" else 2
             if harm is not None and harm.kind == "flip":
                 byte ^= harm.mask
+            if harm is not None and harm.kind == "zero":
+                byte = 0 if byte else 0xFF
             target = self._held[way] if self._inner.now_us() < self._until_us[way] else now
             target += bytes([byte]) * copies
         return bytes(now)

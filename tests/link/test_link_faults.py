@@ -1,0 +1,100 @@
+"""A whole burn over a line that does every kind of harm: done as if undisturbed, or exit 5, safe, and completed by a
+second run. The deep sweep, each byte in every way, is `python -m tests.link.deep_line_faults`.
+"""
+
+from __future__ import annotations
+
+from collections import defaultdict
+from collections.abc import Iterator
+from itertools import islice
+
+import pytest
+
+from tests.link.line_cases import (
+    ENDING,
+    MENDED,
+    TREATS,
+    Case,
+    bad_order,
+    cut_in_each_frame,
+    one_harm_a_part,
+    reset_at_each_frame,
+    reset_inside_pulses,
+    stale,
+    sweep,
+)
+from tests.link.line_map import bytes_of, stretches_of
+from tests.link.whole_job import OTHER, QUICK, SLOW, Work, small_blocks
+
+
+@pytest.fixture(autouse=True, scope="module")
+def small() -> Iterator[None]:
+    """Blocks of two words, so that a short job has more of them than the window holds."""
+    with small_blocks():
+        yield
+
+
+def _struck(work: Work, cases: list[Case]) -> tuple[set[tuple[int, str, int]], dict[tuple[str, str], set[object]]]:
+    """The bytes that cases harm, and by way and frame kind the harms it meets."""
+    kinds = {(part, way, at): kind for part, way, at, kind, _ in bytes_of(work)}
+    places, met = set(), defaultdict(set)
+    for harm in (harm for case in cases for harm in case.harms):
+        place = (harm.part, harm.way, harm.at)
+        places.add(place)
+        met[harm.way, kinds[place]].add((harm.kind, harm.mask, harm.for_us))
+    return places, met
+
+
+def test_the_sweep_strikes_every_byte_and_every_kind_of_frame_in_every_way() -> None:
+    """No byte of the job is left out, and no kind of frame meets less than all six harms that repeats mend."""
+    assert len(list(bytes_of(QUICK))) > 5_000
+    places, met = _struck(QUICK, list(one_harm_a_part(QUICK)))
+    assert places == {(part, way, at) for part, way, at, _, _ in bytes_of(QUICK)}
+    assert {pair: len(harms) for pair, harms in met.items()} == dict.fromkeys(met, len(MENDED))
+    _, met = _struck(QUICK, list(cut_in_each_frame(QUICK)))
+    assert {pair for pair, harms in met.items() if len(harms) == len(ENDING)} >= {
+        pair for pair in met if sum((one.way, one.kind) == pair for one in stretches_of(QUICK)) > 1
+    }
+
+
+def test_each_byte_harmed_burns_each_word_as_often_as_without() -> None:
+    """A byte lost, turned, made zero, doubled or late, anywhere in the job: the same result, the same pulses."""
+    tally = sweep(QUICK, one_harm_a_part(QUICK))
+    assert tally.wrong == []
+    assert set(tally.endings) == {"done"}
+
+
+def test_a_line_cut_in_any_frame_leaves_a_safe_rig_and_a_chip_that_a_second_run_completes() -> None:
+    """Cut for good, or still for longer than the dead-man's patience, somewhere in each frame of either way."""
+    tally = sweep(QUICK, cut_in_each_frame(QUICK))
+    assert tally.wrong == []
+    assert tally.endings.keys() >= {"done", "LinkFault", "Tripped", "RigSilent"}
+
+
+def test_frames_out_of_order_or_repeated_change_nothing() -> None:
+    """Each frame behind the next, twice, or once more later: at once, in three, or in a later sequence."""
+    cases = islice(bad_order(QUICK), 0, None, len(TREATS) - 1)  # the step wanders over the treats
+    tally = sweep(QUICK, cases)
+    assert tally.wrong == []
+    assert set(tally.endings) == {"done"}
+
+
+def test_frames_of_an_earlier_boot_do_no_harm() -> None:
+    """Before each frame one of another burn's, of the boot before, with other words: never a wrong one is burnt."""
+    tally = sweep(QUICK, stale(QUICK, OTHER, every=97))
+    assert tally.wrong == []
+
+
+def test_a_reset_at_any_frame_is_told_and_a_second_run_completes_the_chip() -> None:
+    """The rig reset behind each frame it sends, and as each that it is sent has arrived."""
+    tally = sweep(QUICK, reset_at_each_frame(QUICK))
+    assert tally.wrong == []
+    assert set(tally.endings) == {"done", "RigRestarted"}
+
+
+@pytest.mark.parametrize(("work", "every"), [(QUICK, 3), (SLOW, 4)])
+def test_a_reset_inside_a_pulse_is_told_and_a_second_run_completes_the_chip(work: Work, every: int) -> None:
+    """The rig reset at moments spread over pulses of 100 us and of 50 ms."""
+    tally = sweep(work, reset_inside_pulses(work, every, 5))
+    assert tally.wrong == []
+    assert set(tally.endings) == {"RigRestarted"}
