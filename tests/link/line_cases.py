@@ -1,4 +1,4 @@
-"""The cases of a bad line that a whole job is put through, as values: what is harmed, and which errors it may end in."""
+"""The cases of a bad line that a whole job is put through: what is harmed, and which errors it may end in."""
 
 from __future__ import annotations
 
@@ -69,7 +69,8 @@ class Case:
 
         def bad(line: Transport, rig: VirtualRig) -> Transport:
             lines.append(self._line(line, table))
-            return lines[0]
+            made: Transport = lines[0]
+            return made
 
         ending, found = faults_of(work, bad, self.wanted, table)
         struck = getattr(lines[0], "struck", [])
@@ -87,7 +88,7 @@ class Case:
         return FrameLine(line, self.wrongs) if self.wrongs else Faulty(line, self.harms)
 
 
-# ---- bytes ------------------------------------------------------------------------------------------------------------
+# ---- bytes ----------
 
 
 def _of_part(work: Work, part: int) -> list[tuple[Way, int]]:
@@ -130,7 +131,7 @@ def cut_in_each_frame(work: Work) -> Iterator[Case]:
         yield Case(title, harms=(how.at(one.part, one.way, at),), wanted=GONE)
 
 
-# ---- frames -----------------------------------------------------------------------------------------------------------
+# ---- frames ----------
 
 
 @dataclass(frozen=True)
@@ -166,7 +167,7 @@ def stale(work: Work, earlier: Work, every: int = 1) -> Iterator[Case]:
                 yield Case(title, wrongs=(wrong,), early_us=early_us, wanted=(RigFault,))
 
 
-# ---- resets -----------------------------------------------------------------------------------------------------------
+# ---- resets ----------
 
 
 def reset_at_each_frame(work: Work) -> Iterator[Case]:

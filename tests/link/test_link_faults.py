@@ -7,6 +7,7 @@ from __future__ import annotations
 from collections import defaultdict
 from collections.abc import Iterator
 from itertools import islice
+from typing import Any
 
 import pytest
 
@@ -24,7 +25,8 @@ from tests.link.line_cases import (
     sweep,
 )
 from tests.link.line_map import bytes_of, stretches_of
-from tests.link.whole_job import OTHER, QUICK, SLOW, Work, small_blocks
+from tests.link.small_blocks import small_blocks
+from tests.link.whole_job import OTHER, QUICK, SLOW, Work
 
 
 @pytest.fixture(autouse=True, scope="module")
@@ -34,10 +36,11 @@ def small() -> Iterator[None]:
         yield
 
 
-def _struck(work: Work, cases: list[Case]) -> tuple[set[tuple[int, str, int]], dict[tuple[str, str], set[object]]]:
+def _struck(work: Work, cases: list[Case]) -> tuple[set[Any], dict[Any, set[Any]]]:
     """The bytes that cases harm, and by way and frame kind the harms it meets."""
     kinds = {(part, way, at): kind for part, way, at, kind, _ in bytes_of(work)}
-    places, met = set(), defaultdict(set)
+    places: set[Any] = set()
+    met: dict[Any, set[Any]] = defaultdict(set)
     for harm in (harm for case in cases for harm in case.harms):
         place = (harm.part, harm.way, harm.at)
         places.add(place)

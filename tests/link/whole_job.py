@@ -9,20 +9,14 @@ from __future__ import annotations
 
 import functools
 from collections import Counter
-from collections.abc import Callable, Iterable, Iterator
-from contextlib import contextmanager
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
-import pytest
-
 from pulsewright.chip.load import load
 from pulsewright.errors import LinkFault, PulsewrightError, RigFault, RigRestarted, Tripped
 from pulsewright.image.memory import fit, image_of
-from pulsewright.jobs import burn as burn_module
-from pulsewright.jobs import context as context_module
-from pulsewright.jobs import plan, read, writing
 from pulsewright.jobs.burn import burn
 from pulsewright.jobs.context import JobContext, Options
 from pulsewright.link.inprocess import InProcess
@@ -56,7 +50,7 @@ class Work:
     before: bytes
     faults: tuple[str, ...] = ()
     vouch: str = ""
-    reset_tail_us: int = 0  # a reset inside a pulse may leave one so short on another word (design: active-high enables)
+    reset_tail_us: int = 0  # a reset inside a pulse may leave one so short on another word (active-high enables)
 
     @property
     def last(self) -> int:
@@ -228,7 +222,7 @@ class Table:
         found = [f"VCC stands at {vcc_mv} mV"] if vcc_mv >= 500 else []
         for position in RAISED_POSITIONS:
             mv = rig.socket.mv(rig.t, position)
-            if mv is not None and mv > vcc_mv + 300:
+            if mv > vcc_mv + 300:
                 found.append(f"position {position} stands at {mv} mV")
         if rig.machine is not None:
             found.append("a sequence is under way")
@@ -278,7 +272,7 @@ def pulses_us(work: Work) -> list[tuple[int, int]]:
     return [(begin // TICKS_PER_US, end // TICKS_PER_US) for begin, end in table.pulse_ticks]
 
 
-# ---- the verdict ------------------------------------------------------------------------------------------------------
+# ---- the verdict ----------
 
 LOST = (LinkFault,)
 RESET = (RigRestarted,)
@@ -336,7 +330,7 @@ def _faults_seen(table: Table) -> list[str]:
     hardware lets all lines go at once (H5: the word in hand is undefined), where that falls into a pulse.
     """
     seen = table.seen()
-    allowed = ("pulse width",)
+    allowed: tuple[str, ...] = ("pulse width",)
     if table.reset_in_pulse:
         allowed += ("data in pulse", "address in pulse", "raised hold")
         if table.work.reset_tail_us:
@@ -363,57 +357,6 @@ def _faults_of_second(table: Table, ended: Ended) -> list[str]:
         found.append(f"the second run is done with {again.cells.hex(' ')} in the chip")
     found += [f"the second run pulses word {at:04X}" for at in right if again.pulses[work.first + at]]
     return found
-
-
-# ---- the same job, cheaper ---------------------------------------------------------------------------------------------
-
-
-def _remembered(work: Callable[..., Any]) -> Callable[..., Any]:
-    """Pure functions of a job give the same answer each time: the job is run thousands of times here."""
-    known: dict[Any, Any] = {}
-
-    @functools.wraps(work)
-    def remembering(*args: Any, **named: Any) -> Any:
-        key = tuple(id(one) if type(one).__hash__ is None or not _plain(one) else one for one in args)
-        key += tuple(sorted((name, repr(value)) for name, value in named.items()))
-        if key not in known:
-            known[key] = (args, work(*args, **named))  # what is known by its id is kept, so that no other takes it
-        return known[key][1]
-
-    return remembering
-
-
-def _plain(value: Any) -> bool:
-    return isinstance(value, bytes | str | int)
-
-
-@contextmanager
-def small_blocks() -> Iterator[None]:
-    """Blocks of a few words, and pure functions computed once."""
-    with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(read, "BLOCK_WORDS", BLOCK_WORDS)
-        patch.setattr(writing, "write_blocks", functools.partial(plan.write_blocks, size=BLOCK_WORDS))
-        patch.setattr(context_module, "prove", _by_value(context_module.prove))
-        patch.setattr(read, "compile_read", _remembered(read.compile_read))
-        patch.setattr(writing, "compile_burn", _remembered(writing.compile_burn))
-        patch.setattr(burn_module, "change", functools.lru_cache(8)(burn_module.change))
-        patch.setattr(burn_module, "_target", _remembered(burn_module._target))
-        undisturbed.cache_clear()
-        yield
-    undisturbed.cache_clear()
-
-
-def _by_value(prove: Callable[..., Any]) -> Callable[..., Any]:
-    known: dict[Any, Any] = {}
-
-    @functools.wraps(prove)
-    def remembering(code: bytes, permit: Any, definition: Any, rig: Any) -> Any:
-        key = (code, permit, id(definition), id(rig))
-        if key not in known:
-            known[key] = prove(code, permit, definition, rig)
-        return known[key]
-
-    return remembering
 
 
 __all__ = ["CUT", "LOST", "QUICK", "RESET", "SLOW", "TICKS_PER_MS", "TICKS_PER_S", "Ended", "Hang", "Table", "Work"]
