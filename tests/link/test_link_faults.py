@@ -1,5 +1,5 @@
 """A whole burn over a line that does every kind of harm: done as if undisturbed, or exit 5, safe, and completed by a
-second run. The deep sweep, each byte in every way, is `python -m tests.link.deep_line_faults`.
+second run.
 """
 
 from __future__ import annotations
