@@ -18,7 +18,7 @@ class Wrong:
     """What happens to stretch `number` of a part and way; a stretch is what ends with a zero.
 
     swap: it comes behind the next one. again: twice. again later: once more, behind `later` further ones of its way,
-    whatever part they are in. before: `data` comes before it. lose: it does not come.
+    whatever part they are in. before: `data` comes before it. lose: it does not come, nor do the next `later` ones.
     """
 
     part: int
@@ -36,6 +36,7 @@ class _Flow:
     coming: bytearray = field(default_factory=bytearray)
     number: int = 0
     swapped: bytes = b""
+    losing: int = 0
     waiting: list[tuple[int, bytes]] = field(default_factory=list)  # (stretches still to pass, bytes)
 
 
@@ -94,7 +95,9 @@ class FrameLine:
             elif wrong.trick == "before":
                 pieces = [wrong.data, stretch]
             else:
-                pieces = []
+                flow.losing = wrong.later + 1
+        if flow.losing:
+            flow.losing, pieces = flow.losing - 1, []
         return [piece for piece in (*pieces, swapped, *late) if piece]
 
     def write(self, data: bytes) -> None:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections import Counter
 from collections.abc import Iterator
 from dataclasses import dataclass, field
+from random import Random
 from typing import Any
 
 from pulsewright.errors import LinkFault, RigFault, RigRestarted, Tripped
@@ -59,12 +60,13 @@ class Case:
     reset_us: int | None = None
     reset_behind: tuple[int, int] | None = None
     early_us: int = 0
+    boot: int = 1
     wanted: Errors = None
 
     def run(self, work: Work) -> tuple[str, list[str]]:
         """How the job ended, and what is wrong with that: nothing, if all is well."""
         lines: list[Any] = []
-        table = Table(work)
+        table = Table(work, self.boot)
         table.pass_time(self.early_us)
 
         def bad(line: Transport, rig: VirtualRig) -> Transport:
@@ -72,7 +74,10 @@ class Case:
             made: Transport = lines[0]
             return made
 
-        ending, found = faults_of(work, bad, self.wanted, table)
+        try:
+            ending, found = faults_of(work, bad, self.wanted, table)
+        except Exception as broken:  # noqa: BLE001  # a user would see a traceback; a Hang too
+            return "broken", [repr(broken)]
         struck = getattr(lines[0], "struck", [])
         missed = [harm for harm in (*self.harms, *self.wrongs) if harm not in struck]
         if missed and self.wanted is None:
@@ -88,7 +93,7 @@ class Case:
         return FrameLine(line, self.wrongs) if self.wrongs else Faulty(line, self.harms)
 
 
-# ---- bytes ----------
+# ---- bytes ----------------------------------------------------------------------------------------------------------
 
 
 def _of_part(work: Work, part: int) -> list[tuple[Way, int]]:
@@ -131,7 +136,20 @@ def cut_in_each_frame(work: Work) -> Iterator[Case]:
         yield Case(title, harms=(how.at(one.part, one.way, at),), wanted=GONE)
 
 
-# ---- frames ----------
+def many_harms(work: Work, seeds: range, one_in: int) -> Iterator[Case]:
+    """A line that harms one byte of so many, each in a way of its own, from the beginning to the end."""
+    for seed in seeds:
+        draw = Random(seed)
+        harms = [
+            draw.choice((*MENDED, *MENDED, *MENDED, ENDING[1])).at(part, way, at)
+            for part in parts_of(work)
+            for way, at in _of_part(work, part)
+            if draw.random() * one_in < 1
+        ]
+        yield Case(f"one byte of {one_in}, seed {seed}", harms=tuple(harms), wanted=(RigFault,))
+
+
+# ---- frames ---------------------------------------------------------------------------------------------------------
 
 
 @dataclass(frozen=True)
@@ -154,20 +172,34 @@ def bad_order(work: Work, treats: tuple[Treat, ...] = TREATS) -> Iterator[Case]:
             yield Case(title, wrongs=(wrong,))
 
 
-def stale(work: Work, earlier: Work, every: int = 1) -> Iterator[Case]:
-    """Before each stretch one of another burn's, of an earlier boot: each kind before each kind, over all cases."""
-    early_us = 3_000_000
+def bursts(work: Work) -> Iterator[Case]:
+    """Stretches lost in a row, so many that no reply of a whole window comes: from each on, two to six of one way.
+
+    Where that are all the host's for 500 ms, the dead-man ends the sequence.
+    """
+    for number, one in enumerate(stretches_of(work)):
+        more = 1 + number % 5
+        title = f"{more + 1} stretches lost from {one.number} of part {one.part} {one.way} ({one.kind}) on"
+        wanted: Errors = (Tripped,) if one.way == "to rig" else None
+        yield Case(title, wrongs=(Wrong(one.part, one.way, one.number, "lose", more),), wanted=wanted)
+
+
+def stale(work: Work, earlier: Work, every: int = 1, early_us: int = 3_000_000, then_us: int = 0) -> Iterator[Case]:
+    """Before each stretch one of another burn's, of an earlier boot: each kind before each kind, over all cases.
+
+    Indexes and permits are numbered by the host's clock: `early_us` is its time now, `then_us` was it then.
+    """
     for way in WAYS:
-        old = [one for one in stretches_of(earlier) if one.way == way and len(one.data) > 1]
+        old = [one for one in stretches_of(earlier, then_us) if one.way == way and len(one.data) > 1]
         for number, one in enumerate(one for one in stretches_of(work) if one.way == way):
             for step in range(0, len(old), every):
                 strange = old[(number * 17 + step) % len(old)]
                 wrong = Wrong(one.part, way, one.number, "before", data=strange.data)
                 title = f"{strange.kind} of an earlier boot before {one.kind} {one.number} of part {one.part} {way}"
-                yield Case(title, wrongs=(wrong,), early_us=early_us, wanted=(RigFault,))
+                yield Case(title, wrongs=(wrong,), early_us=early_us, boot=2, wanted=(RigFault,))
 
 
-# ---- resets ----------
+# ---- resets ---------------------------------------------------------------------------------------------------------
 
 
 def reset_at_each_frame(work: Work) -> Iterator[Case]:
@@ -210,6 +242,13 @@ class Tally:
         """One more."""
         self.endings[ending] = self.endings.get(ending, 0) + 1
         self.wrong += [f"{case.title}: {ending}: {text}" for text in found]
+
+
+    def add(self, other: Tally) -> None:
+        """Another sweep's as well."""
+        for ending, count in other.endings.items():
+            self.endings[ending] = self.endings.get(ending, 0) + count
+        self.wrong += other.wrong
 
 
 def sweep(work: Work, cases: Iterator[Case]) -> Tally:

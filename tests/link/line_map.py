@@ -85,22 +85,24 @@ class Recorder:
 
 
 @functools.cache
-def map_of(work: Work) -> Recorder:
-    """What passes in an undisturbed job."""
+def map_of(work: Work, early_us: int) -> Recorder:
+    """What passes in an undisturbed job that begins at this time of the rig's clock."""
     lines: list[Recorder] = []
 
     def recording(line: Transport, rig: VirtualRig) -> Transport:
         lines.append(Recorder(line))
         return lines[0]
 
-    ended = Table(work).run(recording)
+    table = Table(work)
+    table.pass_time(early_us)
+    ended = table.run(recording)
     assert ended.error is None
     return lines[0]
 
 
-def stretches_of(work: Work) -> tuple[Stretch, ...]:
+def stretches_of(work: Work, early_us: int = 0) -> tuple[Stretch, ...]:
     """Every stretch, in the order in which they ended."""
-    return tuple(map_of(work).stretches)
+    return tuple(map_of(work, early_us).stretches)
 
 
 def length_of(work: Work, part: int, way: Way) -> int:

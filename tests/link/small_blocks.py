@@ -10,10 +10,10 @@ from typing import Any
 import pytest
 
 from pulsewright.jobs import burn as burn_module
-from pulsewright.jobs.plan import change, write_blocks
+from pulsewright.jobs.plan import BLOCK_WORDS, change, write_blocks
 from pulsewright.sequence.compile import compile_burn, compile_read
 from pulsewright.sequence.proof import prove
-from tests.link.whole_job import BLOCK_WORDS, undisturbed
+from tests.link.whole_job import undisturbed
 
 
 def _remembered(work: Callable[..., Any]) -> Callable[..., Any]:
@@ -40,8 +40,9 @@ def small_blocks() -> Iterator[None]:
     """Blocks of a few words, and pure functions computed once."""
     with pytest.MonkeyPatch.context() as patch:
         jobs = "pulsewright.jobs"
-        patch.setattr(f"{jobs}.read.BLOCK_WORDS", BLOCK_WORDS)
-        patch.setattr(f"{jobs}.writing.write_blocks", functools.partial(write_blocks, size=BLOCK_WORDS))
+        patch.setattr(f"{jobs}.read.BLOCK_WORDS", BLOCK_WORDS)  # `Table.run` sets its own; undone in the end
+        patch.setattr(f"{jobs}.writing.write_blocks", write_blocks)
+        patch.setattr(f"{jobs}.context._kept", lambda *told: "kept")  # records are no matter of the line
         patch.setattr(f"{jobs}.context.prove", _by_value(prove))
         patch.setattr(f"{jobs}.read.compile_read", _remembered(compile_read))
         patch.setattr(f"{jobs}.writing.compile_burn", _remembered(compile_burn))

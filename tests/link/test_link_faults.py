@@ -1,5 +1,5 @@
 """A whole burn over a line that does every kind of harm: done as if undisturbed, or exit 5, safe, and completed by a
-second run.
+second run. The deep sweep, each byte in every way, is `python -m tests.link.deep_line_faults`.
 """
 
 from __future__ import annotations
@@ -17,13 +17,16 @@ from tests.link.line_cases import (
     TREATS,
     Case,
     bad_order,
+    bursts,
     cut_in_each_frame,
+    many_harms,
     one_harm_a_part,
     reset_at_each_frame,
     reset_inside_pulses,
     stale,
     sweep,
 )
+from tests.link.line_hosts import faults_after_death, stretches_at
 from tests.link.line_map import bytes_of, stretches_of
 from tests.link.small_blocks import small_blocks
 from tests.link.whole_job import OTHER, QUICK, SLOW, Work
@@ -82,15 +85,48 @@ def test_frames_out_of_order_or_repeated_change_nothing() -> None:
     assert set(tally.endings) == {"done"}
 
 
-def test_frames_of_an_earlier_boot_do_no_harm() -> None:
-    """Before each frame one of another burn's, of the boot before, with other words: never a wrong one is burnt."""
-    tally = sweep(QUICK, stale(QUICK, OTHER, every=97))
+def test_frames_lost_in_a_row_are_mended_or_end_by_the_dead_man() -> None:
+    """Two to six frames of one way lost, from every third on: more than the window holds, and no reply is missed."""
+    tally = sweep(QUICK, islice(bursts(QUICK), 0, None, 3))
     assert tally.wrong == []
+    assert tally.endings["done"] > 60
+
+
+@pytest.mark.parametrize("early_us", [0, 3_000_000])
+def test_frames_of_an_earlier_boot_do_no_harm(early_us: int) -> None:
+    """Before each frame one of another burn's, of the boot before, with other words, also where the host's clock began
+    anew: never a wrong one is burnt.
+    """
+    tally = sweep(QUICK, stale(QUICK, OTHER, every=597, early_us=early_us))
+    assert tally.wrong == []
+    assert tally.jobs > 100
+
+
+@pytest.mark.parametrize("work", [QUICK, SLOW])
+def test_a_line_that_harms_one_byte_of_eighty(work: Work) -> None:
+    """Harm upon harm: done as if undisturbed, or the rig's own trip, and completed by a second run."""
+    tally = sweep(work, many_harms(work, range(24), 80))
+    assert tally.wrong == []
+    assert tally.endings.keys() == {"done", "Tripped"}
+
+
+@pytest.mark.parametrize("fast", [True, False])
+@pytest.mark.parametrize("work", [QUICK, SLOW])
+def test_a_host_that_dies_leaves_a_chip_that_the_next_one_completes(work: Work, fast: bool) -> None:
+    """Killed behind any frame, and begun again at once, while the rig may still be at work: also at the rate of
+    greetings, where the rig hears the new host in the middle of the old one's sequence.
+    """
+    died = 0
+    for one in stretches_at(work, fast=fast)[::9]:
+        dead, found = faults_after_death(work, one, fast=fast)
+        assert found == [], one
+        died += dead
+    assert died > 15
 
 
 def test_a_reset_at_any_frame_is_told_and_a_second_run_completes_the_chip() -> None:
-    """The rig reset behind each frame it sends, and as each that it is sent has arrived."""
-    tally = sweep(QUICK, reset_at_each_frame(QUICK))
+    """The rig reset behind frames it sends, and as frames that it is sent have arrived: at every other one."""
+    tally = sweep(QUICK, islice(reset_at_each_frame(QUICK), 0, None, 2))
     assert tally.wrong == []
     assert set(tally.endings) == {"done", "RigRestarted"}
 

@@ -205,6 +205,22 @@ def test_a_greeting_begins_the_indexes_anew() -> None:
     assert host.ask(Frame.ECHO, data=b"two").fields["data"] == b"two"
 
 
+def test_a_greeting_while_a_sequence_runs_begins_the_indexes_anew_behind_it() -> None:
+    """The next session may come while the last one's sequence runs, and its indexes may be lower."""
+    host = Host()
+    for _ in range(3):
+        host.ask(Frame.STATUS)
+    host.start(READING)
+    host.pass_time(150 * MS)
+    host.rig.receive(HELLO_REQUEST, host.rig.t)
+    host.rig.run_to(host.rig.t + 600 * MS)  # past the dead-man
+    assert host.rig.state is State.SAFE
+    host.rig.take_output()
+    host.index = 0
+    host.heard.clear()
+    assert host.ask(Frame.ECHO, data=b"two").fields["data"] == b"two"
+
+
 def test_while_one_runs_other_commands_are_dropped() -> None:
     """Stop and wait: only keep-alives, blocks and the abort are heard."""
     host = Host()

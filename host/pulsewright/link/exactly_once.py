@@ -87,6 +87,10 @@ class Commands:
         # A rig may still keep the answer to the last command of another session: not the same index as that, please.
         self._index = line.transport.now_us() // 977 % 0xFFFF
 
+    def number_on(self, by: int) -> None:
+        """The next index is so many further on."""
+        self._index = (self._index + by) % 0xFFFF
+
     def begin(self, kind: Frame, under: int = 0, **fields: Any) -> Exchange:
         """Sends a command under the next index, carrying the number of the permit that is in force."""
         self._index = self._index % 0xFFFF + 1

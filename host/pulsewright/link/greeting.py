@@ -107,17 +107,19 @@ def hello_of(line: Line, look: Callable[[], None] = lambda: None, *, breaks: boo
     return hello
 
 
-def same_boot(commands: Commands, hello: Hello) -> None:
+def same_boot(commands: Commands, hello: Hello) -> Trouble | None:
     """RigRestarted when the rig is no longer in the boot that it greeted with; Silent if it does not answer.
 
-    A rig that was reset meanwhile answers questions for its tables all the same: only its boot number tells.
+    A rig that was reset meanwhile answers questions for its tables all the same: only its boot number tells. Gives the
+    fault that is latched now: a sequence of an earlier session may have been under way at the greeting.
     """
     answer = commands.ask(Frame.STATUS)
     if answer.fields["outcome"] != Outcome.DONE:
         raise RigFault("the rig does not tell its state", did="nothing", hint="flash the rig's firmware anew")
-    boot = int(unpack_from(BLOBS["status"], answer.fields["data"])[0]["boot"])
-    if boot != hello.boot:
-        raise diagnosis.restarted_early(hello.boot, boot)
+    status, end = unpack_from(BLOBS["status"], answer.fields["data"])
+    if status["boot"] != hello.boot:
+        raise diagnosis.restarted_early(hello.boot, int(status["boot"]))
+    return trouble_of(answer.fields["data"][end:])[0]
 
 
 def trouble_of(data: bytes) -> tuple[Trouble | None, bytes]:

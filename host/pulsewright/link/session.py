@@ -20,6 +20,9 @@ from pulsewright.wire.ops import Header, decode_program
 from pulsewright.wire.tables import ABORT_RUN, BLOBS, HELLO_BAUD, LOAD_BYTES, Fault, Flow, Frame, Outcome, State
 
 _REPEAT_ABORT_US = 100_000  # a heartbeat this long after the abort that still says "running": the abort was lost
+_BOOT_STRIDE = 25_717  # no divisor in common with 65535: a number comes again at the same clock 65535 boots later
+_OTHER_NUMBER = 4_099  # so far on from a permit's number that this boot has had, to one that it has not
+_NUMBERS_TRIED = 8
 _PERHAPS_RESTARTED = (Fault.WRONG_BOOT, Fault.WRONG_STATE, Fault.WRONG_PERMIT)
 
 
@@ -72,12 +75,16 @@ class Session:
     def connect(self) -> RigFacts:
         """Greets the rig, reads its tables, clears an old fault and raises the line's rate as far as it holds."""
         hello = greeting.hello_of(self._line, self._stop_between)
+        # A host's clock may begin anew with the rig: what is still under way from an earlier boot has other numbers.
+        self._permit_number = (self._permit_number + hello.boot * _BOOT_STRIDE) % 0xFFFF
+        self._commands.number_on(hello.boot * _BOOT_STRIDE)
         try:
             facts = greeting.facts_of(self._commands, hello, HELLO_BAUD)
             self._line.timing = self._transport.timing(facts.board)
             earlier = self._clear_latched() if hello.fault else None
             baud = greeting.step_up(self._line, self._commands, facts.top_baud)
-            greeting.same_boot(self._commands, hello)
+            if greeting.same_boot(self._commands, hello) is not None:
+                earlier = self._clear_latched()
         except Silent:
             raise self._lost("reading the rig's tables", hello.boot, running=False) from None
         self._facts = replace(facts, baud=baud, earlier=earlier)
@@ -105,10 +112,9 @@ class Session:
         header = decode_program(sequence.code).header
         self._stop_between()
         self._begun_us = self._transport.now_us()
-        self._permit_number = self._permit_number % 0xFFFF + 1
         stage, running = "sending the sequence", False
         try:
-            self._load(sequence, self._permit_number, boot)
+            self._load(sequence, boot)
             self._stop_between()
             stage, running = "running the sequence", True
             window = self._window(sequence, header, blocks)
@@ -129,14 +135,25 @@ class Session:
             blocks = requests(sequence.first, sequence.last, header.block_words)
         return Window(blocks or (), header, self._permit_number, self.facts.hello.window_blocks)
 
-    def _load(self, sequence: Sequence, number: int, boot: int) -> None:
-        permit = sequence.permit.sealed_for(number, boot).encode()
-        self._accepted("the permit", self._commands.ask(Frame.PERMIT, permit=permit))
+    def _load(self, sequence: Sequence, boot: int) -> None:
+        self._permit(sequence, boot)
         for at in range(0, len(sequence.code), LOAD_BYTES):
             code = sequence.code[at : at + LOAD_BYTES]
             self._accepted("the sequence", self._commands.ask(Frame.LOAD, offset=at, code=code))
             self._tell("load", None)
         self._accepted("the seal", self._commands.ask(Frame.SEAL))
+
+    def _permit(self, sequence: Sequence, boot: int) -> None:
+        """Gives the permit under a number that this boot has not had: an earlier session may have used the next one."""
+        for tried in range(1, _NUMBERS_TRIED + 1):
+            self._permit_number = self._permit_number % 0xFFFF + 1
+            permit = sequence.permit.sealed_for(self._permit_number, boot).encode()
+            answer = self._commands.ask(Frame.PERMIT, permit=permit)
+            trouble = greeting.trouble_of(answer.fields["data"])[0]
+            if trouble is None or trouble.code != Fault.WRONG_PERMIT or tried == _NUMBERS_TRIED:
+                self._accepted("the permit", answer)
+                return
+            self._permit_number += _OTHER_NUMBER
 
     def _work_or_abort(self, run: _Run) -> None:
         """`_work`; where anything but the link itself fails on this end, the rig is stopped before that goes on."""

@@ -67,6 +67,7 @@ class Commands:
         self._loaded: Loaded | None = None
         self._used: set[int] = set()
         self._last: int | None = None
+        self._greeted = False  # while a sequence ran: the next command may have any index
         self._kept = b""
         board = firmware.board
         self._nominal_vcc = tuple(count_of(mv, VCC_FULL_MV) for mv in VCC_STEPS_MV)
@@ -83,9 +84,11 @@ class Commands:
         }
 
     def new_session(self) -> None:
-        """A greeting was asked for: another session may begin, with indexes of its own."""
+        """A greeting was asked for: another session may begin, with indexes of its own, once nothing runs."""
         if self.running is None:
             self._last = None
+        else:
+            self._greeted = True
 
     # ---- frames ---------------------------------------------------------------------------------------------------
 
@@ -134,13 +137,13 @@ class Commands:
                 else:
                     self._rig.send(self._kept)
                 return
-            if ahead >= _WRAP // 2:
+            if ahead >= _WRAP // 2 and not self._greeted:
                 self.dropped += 1
                 return
         if self.running is not None:
             self.dropped += 1
             return
-        self._last = message.index
+        self._last, self._greeted = message.index, False
         if message.kind is Frame.RUN:
             self._run(message)
             return
