@@ -32,7 +32,7 @@ from pulsewright.virtual.board import RAISED_POSITIONS
 from pulsewright.virtual.rig import VirtualRig
 
 DEAD_MAN_US = 500_000
-_LONGEST_US = 60_000_000  # no job here, harmed or not, takes a minute of the rig's time
+_LONGEST_US = 40_000_000  # no job here, harmed or not, takes so much of the rig's time
 _MOST_READS = 50_000
 _MODELS = Path(__file__).parents[1] / "models"
 _PARTS = Path(__file__).parents[1] / "parts"
