@@ -117,9 +117,9 @@ def address_line_ideas(want: bytes, got: bytes, *, whole: bool) -> Iterator[Hypo
     lines = (len(want) - 1).bit_length()
     for line in range(lines):
         why = "an open or stuck address line"
-        for text, source in (("low", _forced_low), ("high", _forced_high)):
-            idea = partial(source, bits=1 << line)
-            yield Hypothesis("address line stuck", f"A{line} reads as if always {text}: {why}", source=idea)
+        for level, forced in (("low", _forced_low), ("high", _forced_high)):
+            text = f"A{line} reads as if always {level}: {why}"
+            yield Hypothesis("address line stuck", text, source=partial(forced, bits=1 << line))
         inverted = (
             "bytes look exchanged in pairs: the image may be for the other byte order"
             if line == 0
@@ -133,9 +133,9 @@ def address_line_ideas(want: bytes, got: bytes, *, whole: bool) -> Iterator[Hypo
         yield Hypothesis(
             "address lines exchanged", f"{pair} look exchanged", source=partial(_exchanged, low=low, high=high)
         )
-        for text, source in (("low", _joined_low), ("high", _joined_high)):
-            says = f"{pair} read as if both {text} where one is: shorted together"
-            yield Hypothesis("address lines shorted", says, source=partial(source, both=1 << low | 1 << high))
+        for level, joined in (("low", _joined_low), ("high", _joined_high)):
+            text = f"{pair} read as if both {level} where one is: shorted together"
+            yield Hypothesis("address lines shorted", text, source=partial(joined, both=1 << low | 1 << high))
     yield from _repeated(lines)
     if whole:
         yield from _scrambled_addresses(want, got, lines)
@@ -172,7 +172,7 @@ def _scrambled_addresses(want: bytes, got: bytes, lines: int) -> Iterator[Hypoth
 
 def moved_ideas(want: bytes, got: bytes, differing: list[int]) -> Iterator[Hypothesis]:
     """The image, but moved: by how much tells a piece of what was read that stands elsewhere in the image."""
-    tried = set()
+    tried: set[int] = set()
     for place in (len(differing) // 2, len(differing) // 4, len(differing) * 3 // 4):
         at = differing[place]
         piece = got[at : at + _PIECE]
