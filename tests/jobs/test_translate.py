@@ -191,6 +191,14 @@ def test_every_trip_of_the_wire_is_told(code: Fault) -> None:
     assert code.name.lower() not in error.what
 
 
+def test_a_trip_by_silence_is_no_matter_of_supply_or_chip() -> None:
+    """The dead-man speaks of the way to the rig; any other trip of the rails."""
+    silent = error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.DEAD_MAN))
+    assert "cable" in silent.hint
+    assert "supply" not in silent.hint
+    assert "supply" in error_of(IDENTIFY, result(Outcome.TRIPPED, Fault.VCC_OUTSIDE)).hint
+
+
 def test_a_refusal_and_an_answer_without_reason_are_rig_faults() -> None:
     """What the rig would not do is exit 5 and named; so is an end without a reason."""
     refused = error_of(IDENTIFY, result(Outcome.REFUSED, Fault.BAD_CRC))

@@ -354,5 +354,7 @@ def _tripped(story: Story) -> PulsewrightError:
         got=got,
         did=MADE_SAFE,
         facts=facts,
-        hint="look at supply and wiring; a short on the chip or in the socket pulls a rail down",
+        hint="check the cable to the rig, and that this computer did not sleep; then run the job again"
+        if code == Fault.DEAD_MAN
+        else "look at supply and wiring; a short on the chip or in the socket pulls a rail down",
     )
