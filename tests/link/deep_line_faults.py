@@ -28,6 +28,8 @@ SWEEPS: dict[str, tuple[Work, Callable[[], Iterator[Case]]]] = {
     "order, slow pulses": (SLOW, lambda: line_cases.bad_order(SLOW)),
     "bursts": (QUICK, lambda: line_cases.bursts(QUICK)),
     "bursts, slow pulses": (SLOW, lambda: line_cases.bursts(SLOW)),
+    "away": (QUICK, lambda: line_cases.away(QUICK)),
+    "away, slow pulses": (SLOW, lambda: line_cases.away(SLOW)),
     "stale": (QUICK, lambda: line_cases.stale(QUICK, OTHER, 7)),
     "stale, clock anew": (QUICK, lambda: line_cases.stale(QUICK, OTHER, 7, 0)),
     "stale, clock back": (QUICK, lambda: line_cases.stale(QUICK, OTHER, 31, 3_000_000, 40_000_000)),

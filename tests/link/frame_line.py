@@ -135,3 +135,35 @@ class Resetting:
             reset, self._reset = self._reset, None
             reset()
         return data
+
+
+class Blackout:
+    """A line that is away for a while: what comes in it, either way, is lost."""
+
+    def __init__(self, inner: Transport, from_us: int, for_us: int) -> None:
+        self._inner = inner
+        self._from_us = from_us
+        self._until_us = from_us + for_us
+
+    def __getattr__(self, name: str) -> Any:
+        return getattr(self._inner, name)
+
+    def _away(self) -> bool:
+        return self._from_us <= self._inner.now_us() < self._until_us
+
+    def write(self, data: bytes) -> None:
+        """On, or lost."""
+        if not self._away():
+            self._inner.write(data)
+
+    def send_break(self) -> None:
+        """On, or lost."""
+        if not self._away():
+            self._inner.send_break()
+
+    def read(self, until_us: int) -> bytes:
+        """What is not lost."""
+        while True:
+            data = self._inner.read(until_us)
+            if not data or not self._away():
+                return data

@@ -12,7 +12,7 @@ from pulsewright.errors import LinkFault, RigFault, RigRestarted, Tripped
 from pulsewright.link.faulty import Faulty, Harm, Kind, Way
 from pulsewright.link.transport import Transport
 from pulsewright.virtual.rig import VirtualRig
-from tests.link.frame_line import FrameLine, Resetting, Trick, Wrong
+from tests.link.frame_line import Blackout, FrameLine, Resetting, Trick, Wrong
 from tests.link.line_map import WAYS, Stretch, length_of, parts_of, stretches_of
 from tests.link.whole_job import DEAD_MAN_US, Table, Work, faults_of
 
@@ -51,7 +51,7 @@ class Case:
     """One job over one bad line. `wanted`: errors it may end with instead of done (None: none).
 
     `reset_us`: the rig is reset at that time of its clock; `reset_behind`: behind that stretch of the rig's.
-    `early_us`: the rig's clock runs so long before the job begins.
+    `away_us`: when the line goes away, and for how long. `early_us`: the rig's clock runs so long before the job.
     """
 
     title: str
@@ -59,6 +59,7 @@ class Case:
     wrongs: tuple[Wrong, ...] = ()
     reset_us: int | None = None
     reset_behind: tuple[int, int] | None = None
+    away_us: tuple[int, int] | None = None
     early_us: int = 0
     boot: int = 1
     wanted: Errors = None
@@ -90,6 +91,8 @@ class Case:
         if self.reset_behind is not None:
             behind = (self.reset_behind[0], "from rig", self.reset_behind[1])
             return FrameLine(line, at_boundary=lambda *at: table.reset() if at == behind else None)
+        if self.away_us is not None:
+            return Blackout(line, *self.away_us)
         return FrameLine(line, self.wrongs) if self.wrongs else Faulty(line, self.harms)
 
 
@@ -125,12 +128,17 @@ def each_harm_of_each_byte(work: Work) -> Iterator[Case]:
                 yield Case(title, harms=(how.at(part, way, at),), wanted=wanted)
 
 
-def cut_in_each_frame(work: Work) -> Iterator[Case]:
-    """The line cut, or still for longer than the dead-man waits, once in each stretch, at a byte that wanders."""
+def cut_in_frames(work: Work) -> Iterator[Case]:
+    """The line cut, or still for longer than the dead-man waits, in every other stretch of a kind, at a byte that
+    wanders. The first stretches of a kind are all taken, so that a rare one meets both.
+    """
     seen: Counter[tuple[Way, str]] = Counter()
     for number, one in enumerate(stretches_of(work)):
-        how = ENDING[seen[one.way, one.kind] % len(ENDING)]
+        turn = seen[one.way, one.kind]
         seen[one.way, one.kind] += 1
+        if turn >= 2 * len(ENDING) and turn % 2:
+            continue
+        how = ENDING[(turn if turn < 2 * len(ENDING) else turn // 2) % len(ENDING)]
         at = one.at + number * 5 % len(one.data)
         title = f"byte {at} of part {one.part} {one.way} ({one.kind}) {how.name}"
         yield Case(title, harms=(how.at(one.part, one.way, at),), wanted=GONE)
@@ -147,6 +155,18 @@ def many_harms(work: Work, seeds: range, one_in: int) -> Iterator[Case]:
             if draw.random() * one_in < 1
         ]
         yield Case(f"one byte of {one_in}, seed {seed}", harms=tuple(harms), wanted=(RigFault,))
+
+
+AWAY_US = (100_000, 400_000, 900_000, 4_000_000)
+
+
+def away(work: Work, lengths: tuple[int, ...] = AWAY_US) -> Iterator[Case]:
+    """The line away both ways, from the end of each stretch on: shorter and longer than dead-man and session wait."""
+    for one in stretches_of(work):
+        for for_us in lengths:
+            wanted = None if for_us < 200_000 else GONE
+            title = f"away for {for_us} us behind stretch {one.number} of part {one.part} {one.way} ({one.kind})"
+            yield Case(title, away_us=(one.us, for_us), wanted=wanted)
 
 
 # ---- frames ---------------------------------------------------------------------------------------------------------

@@ -11,14 +11,18 @@ from typing import Any
 
 import pytest
 
+from pulsewright.errors import LinkFault
+from tests.link.frame_line import Blackout
 from tests.link.line_cases import (
+    AWAY_US,
     ENDING,
     MENDED,
     TREATS,
     Case,
+    away,
     bad_order,
     bursts,
-    cut_in_each_frame,
+    cut_in_frames,
     many_harms,
     one_harm_a_part,
     reset_at_each_frame,
@@ -29,7 +33,7 @@ from tests.link.line_cases import (
 from tests.link.line_hosts import faults_after_death, stretches_at
 from tests.link.line_map import bytes_of, stretches_of
 from tests.link.small_blocks import small_blocks
-from tests.link.whole_job import OTHER, QUICK, SLOW, Work
+from tests.link.whole_job import OTHER, QUICK, SLOW, Table, Work, pulses_us
 
 
 @pytest.fixture(autouse=True, scope="module")
@@ -57,7 +61,7 @@ def test_the_sweep_strikes_every_byte_and_every_kind_of_frame_in_every_way() -> 
     places, met = _struck(QUICK, list(one_harm_a_part(QUICK)))
     assert places == {(part, way, at) for part, way, at, _, _ in bytes_of(QUICK)}
     assert {pair: len(harms) for pair, harms in met.items()} == dict.fromkeys(met, len(MENDED))
-    _, met = _struck(QUICK, list(cut_in_each_frame(QUICK)))
+    _, met = _struck(QUICK, list(cut_in_frames(QUICK)))
     assert {pair for pair, harms in met.items() if len(harms) == len(ENDING)} >= {
         pair for pair in met if sum((one.way, one.kind) == pair for one in stretches_of(QUICK)) > 1
     }
@@ -70,11 +74,32 @@ def test_each_byte_harmed_burns_each_word_as_often_as_without() -> None:
     assert set(tally.endings) == {"done"}
 
 
-def test_a_line_cut_in_any_frame_leaves_a_safe_rig_and_a_chip_that_a_second_run_completes() -> None:
-    """Cut for good, or still for longer than the dead-man's patience, somewhere in each frame of either way."""
-    tally = sweep(QUICK, cut_in_each_frame(QUICK))
+def test_a_line_cut_in_a_frame_leaves_a_safe_rig_and_a_chip_that_a_second_run_completes() -> None:
+    """Cut for good, or still for longer than the dead-man's patience, in frames of every kind, of either way."""
+    tally = sweep(QUICK, cut_in_frames(QUICK))
     assert tally.wrong == []
     assert tally.endings.keys() >= {"done", "LinkFault", "Tripped", "RigSilent"}
+
+
+@pytest.mark.parametrize("work", [QUICK, SLOW])
+def test_a_line_that_is_away_for_a_while_mends_or_tells_the_word_that_was_cut(work: Work) -> None:
+    """Away both ways from behind every other frame on, for 0.1 to 4 s: healed, tripped, or lost and the rig asked."""
+    tally = sweep(work, islice(away(work), 0, None, 2 * len(AWAY_US) + 1))
+    assert tally.wrong == []
+    assert tally.endings.keys() >= {"done", "LinkFault", "Tripped"}
+
+
+def test_a_word_whose_pulse_was_cut_while_the_line_was_away_is_told() -> None:
+    """The rig greets again after the session gave up: its own fault names the word, and the counters are both ends'."""
+    table = Table(SLOW)
+    begin, end = pulses_us(SLOW)[9]
+    ended = table.run(lambda line, rig: Blackout(line, (begin + end) // 2 - 500_000, 4_000_000))
+    assert isinstance(ended.error, LinkFault)
+    assert ended.error.did.startswith("answers greetings again")
+    assert [fact for fact in ended.error.facts if "undefined" in fact] == [
+        f"word {SLOW.first + 9:04X} is undefined: its pulse was cut"
+    ]
+    assert any(fact.startswith("frames at the rig: ") and "not known" not in fact for fact in ended.error.facts)
 
 
 def test_frames_out_of_order_or_repeated_change_nothing() -> None:

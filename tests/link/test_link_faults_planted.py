@@ -22,7 +22,7 @@ from tests.link.frame_line import Wrong
 from tests.link.line_cases import (
     Case,
     bad_order,
-    cut_in_each_frame,
+    cut_in_frames,
     many_harms,
     one_harm_a_part,
     reset_inside_pulses,
@@ -208,8 +208,8 @@ PLANTED: dict[Plant, tuple[Work, Callable[[], Iterable[Case]]]] = {
     commands_not_repeated: (QUICK, _every(one_harm_a_part, 5)),
     refusals_ignored: (QUICK, _many(30)),
     oldest_block_not_repeated: (QUICK, _many()),
-    no_dead_man: (QUICK, _every(cut_in_each_frame, 1, 60)),
-    switches_left_closed: (SLOW, _every(cut_in_each_frame, 3, 105, SLOW)),
+    no_dead_man: (QUICK, _every(cut_in_frames, 1, 30)),
+    switches_left_closed: (SLOW, _every(cut_in_frames, 2, 80, SLOW)),
     boot_does_not_count: (QUICK, lambda: reset_inside_pulses(QUICK, 3, 1)),
 }
 

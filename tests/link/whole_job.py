@@ -344,6 +344,10 @@ def _faults_of_error(table: Table, ended: Ended, clean: Ended) -> list[str]:
     found = []
     if not ended.error.did:
         found.append("does not say what the rig did")
+    latched = table.rig.commands.latched
+    if ended.error.did.startswith("answers") and latched and latched["pulsing"]:
+        word = f"word {latched['address']:04X} is undefined: its pulse was cut"
+        found += [] if word in ended.error.facts else [f"does not say: {word}"]
     if ended.error.did.startswith("not known"):
         table.pass_time(DEAD_MAN_US + 50_000)
     found += table.standing() + table.touched_outside() + _faults_seen(table)

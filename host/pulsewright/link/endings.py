@@ -42,13 +42,19 @@ def result_of(outcome: Outcome, trouble: Trouble | None, rest: bytes, window: Wi
     )
 
 
+def _undefined(trouble: Trouble | None, kind: str) -> list[str]:
+    """What a pulse that was cut in a sequence of this kind has left undefined."""
+    if trouble is None or not trouble.pulsing:
+        return []
+    what = "the whole chip" if kind == "erase" else f"word {trouble.address:04X}"
+    return [f"{what} is undefined: its pulse was cut"]
+
+
 def interrupted(result: RunResult, kind: str) -> Interrupted:
     """What the operator is told after Ctrl-C in a sequence of this kind; the rig has said that it is safe."""
     facts = [f"{sum(block.words for block in result.blocks)} words were answered for"]
     trouble = result.trouble
-    if trouble is not None and trouble.pulsing:
-        what = "the whole chip" if kind == "erase" else f"word {trouble.address:04X}"
-        facts.append(f"{what} is undefined: its pulse was cut")
+    facts += _undefined(trouble, kind)
     if trouble is not None and trouble.code not in (Fault.ABORTED, Fault.NONE):
         facts.append(f"the rig also says {trouble.name.replace('_', ' ')} ({trouble.numbers()})")
     did = SAFE if result.outcome is not Outcome.DONE else "had just ended the sequence, and is safe"
@@ -70,8 +76,11 @@ def restarted(boot: int, now: int, counters: Counters, *, running: bool = True) 
     )
 
 
-def lost(stage: str, running: bool, hello: Hello | None, counters: Counters, waited_us: int) -> LinkFault:
-    """Nothing valid came for too long."""
+def lost(
+    stage: str, running: bool, hello: Hello | None, latched: Trouble | None, kind: str, counters: Counters,
+    waited_us: int,
+) -> LinkFault:
+    """Nothing valid came for too long. `latched`: what the rig tells of it since, where it greets again."""
     facts = list(counters.facts())
     if not running:
         did = NOTHING_RAISED
@@ -82,6 +91,7 @@ def lost(stage: str, running: bool, hello: Hello | None, counters: Counters, wai
         if hello.fault:
             name = Fault(hello.fault).name.lower() if hello.fault in Fault._value2member_map_ else str(hello.fault)
             facts.append(f"its latched fault: {name.replace('_', ' ')}, op {hello.fault_op:02X} at {hello.fault_pc}")
+            facts += _undefined(latched, kind)
     return LinkFault(
         f"the link was lost while {stage}",
         wanted=f"a valid frame within {waited_us / 1_000_000:g} s",

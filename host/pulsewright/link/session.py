@@ -124,7 +124,8 @@ class Session:
             stage, running = "asking for the rig's state", False
             return self._finish(run, sequence.kind)
         except Silent:
-            raise self._lost(f"{stage} ({sequence.title})", boot, running=running) from None
+            kind = sequence.kind if running else ""
+            raise self._lost(f"{stage} ({sequence.title})", boot, running=running, kind=kind) from None
         except LinkFault as fault:
             fault.facts = (*fault.facts, *self._counters().facts())
             fault.did = fault.did or endings.UNKNOWN
@@ -293,9 +294,12 @@ class Session:
             facts=self._counters().facts(),
         )
 
-    def _lost(self, stage: str, boot: int, *, running: bool) -> LinkFault | RigRestarted:
-        """The rig was not heard for too long: stop it by every means there is, then see whether it still greets."""
-        hello = None
+    def _lost(self, stage: str, boot: int, *, running: bool, kind: str = "") -> LinkFault | RigRestarted:
+        """The rig was not heard for too long: stop it by every means there is, then see whether it still greets.
+
+        Where it does, it tells what it was doing when the link went. `kind`: of the sequence that ran.
+        """
+        hello = latched = None
         self._rig_counters = None
         try:
             self._line.write(bytes(ABORT_RUN))
@@ -306,4 +310,8 @@ class Session:
             pass  # the line itself is gone, which is what is about to be said
         if hello is not None and hello.boot != boot:
             return endings.restarted(boot, hello.boot, self._counters(), running=running)
-        return endings.lost(stage, running, hello, self._counters(), self._line.timing.give_up_us)
+        if hello is not None:
+            with suppress(Silent, RigFault):  # what it does not tell now, the next session reads
+                _, latched = self._ask_state()
+        waited_us = self._line.timing.give_up_us
+        return endings.lost(stage, running, hello, latched, kind, self._counters(), waited_us)
