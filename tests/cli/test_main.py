@@ -89,7 +89,7 @@ def test_jobs_warn_in_their_help(command: str, capsys: pytest.CaptureFixture[str
         (["identify", "27e512", "--range", "0x10"], "FIRST..LAST"),
         (["identify", "27e512", "--range", "x..y"], "an address"),
         (["burn", "27e512", "a.hex", "--fill", "0x100"], "not a byte"),
-        (["read", "27e512", "-o", "x", "--passes", "0"], "1 to 100"),
+        (["read", "27e512", "-o", "x", "--passes", "0"], "1 to 1000"),
         (["identify", "27e512", "--ri", "virtual"], "--ri"),
         (["burn", "27e512", "a.hex", "--rig", "virtual", "--erasee"], "try: --erase, or pulsewright burn --help"),
         (["burn", "27e512", "--rig", "virtual"], "IMAGE is missing"),

@@ -47,4 +47,4 @@ def test_verify_says_what_a_mismatch_looks_like(bench: Bench) -> None:
     assert answer["exit"] == 1
     facts = "\n".join(answer["facts"])
     assert "a burn is missing (chip 1, image 0) in" in facts
-    assert "A13 reads as if always high" in facts
+    assert "A13 (pin 26) reads as if always high" in facts

@@ -10,7 +10,6 @@ from pulsewright.errors import Difference
 from pulsewright.jobs.blank import blank
 from pulsewright.jobs.erase import save_first
 from pulsewright.jobs.identify import identify
-from pulsewright.jobs.margins import Look, told, unsteady
 from pulsewright.jobs.read import read
 from pulsewright.link.results import RunResult
 from pulsewright.sequence.types import Sequence
@@ -56,46 +55,6 @@ def test_passes_that_disagree_are_listed() -> None:
     changes = f"1234: {old:02X} (1x)/{old ^ 0x80:02X} (1x) at 5.0 V: changes at one VCC: contact, supply or noise"
     assert changes in found.value.facts
     assert found.value.more["unsteady_bytes"] == 1
-
-
-def test_margins_name_the_bytes_that_change_with_vcc() -> None:
-    """A 0 that reads 1 at a margin: Difference, the byte with both values, and what that direction says."""
-    session = FakeSession(noise())
-    assert any("the same at VCC 5.0 V" in line for line in read(context(session, margins=True)).lines)
-
-
-LOW, USUAL, HIGH = 4_500, 5_000, 5_500
-
-
-def kinds(usual: bytes, *margins: tuple[int, bytes]) -> dict[int, str]:
-    """Address -> kind of the bytes that change between the usual VCC and margins."""
-    looks = [Look(USUAL, (usual,)), *(Look(vcc_mv, (data,)) for vcc_mv, data in margins)]
-    return {one.address: one.kind for one in unsteady(looks, 0)}
-
-
-def test_the_direction_of_a_change_tells_fading_from_under_erased() -> None:
-    """A 0 that reads 1 at a high VCC fades; a 1 that reads 0 at a low VCC is under-erased or slow; else it is noise."""
-    assert kinds(b"\x00\xff", (HIGH, b"\x01\xff")) == {0: "fading"}
-    assert kinds(b"\x00\xff", (LOW, b"\x00\x7f")) == {1: "under-erased"}
-    assert kinds(b"\x00\xff", (LOW, b"\x00\x7f"), (HIGH, b"\x01\xff")) == {0: "fading", 1: "under-erased"}
-    assert kinds(b"\x00\xff", (HIGH, b"\x00\x7f")) == {1: "against"}
-    assert kinds(b"\x00\xff", (LOW, b"\x01\xff")) == {0: "against"}
-    assert kinds(b"\x00\xff", (LOW, b"\x00\xff")) == {}
-
-
-def test_a_change_at_one_vcc_is_no_matter_of_margins() -> None:
-    """Two looks at the same VCC are passes of one: only such bytes may be voted on."""
-    assert kinds(b"\x00", (USUAL, b"\x01")) == {0: "unsteady"}
-    found = unsteady([Look(USUAL, (b"\x00", b"\x01", b"\x00"))], 0x40)
-    assert found[0].text(0x100) == "0040: 00 (2x)/01 (1x) at 5.0 V: changes at one VCC: contact, supply or noise"
-
-
-def test_a_long_list_is_cut_and_counted() -> None:
-    """The first sixteen, how many more, and how many of each kind."""
-    lines = told(unsteady([Look(USUAL, (bytes(40),)), Look(HIGH, (b"\x01" * 40,))], 0), 40)
-    assert lines[0].startswith("40 bytes: a 0 that fades")
-    assert lines[-1] == "and 24 more"
-    assert len(lines) == 18
 
 
 def test_an_address_line_that_changes_nothing_is_told() -> None:

@@ -174,8 +174,8 @@ def address_range(text: str) -> tuple[int, int]:
 
 def count(text: str) -> int:
     """A number from 1 up."""
-    if not text.isdigit() or not 1 <= int(text) <= 100:
-        raise argparse.ArgumentTypeError(f"{text!r} is not a number from 1 to 100")
+    if not (text.isascii() and text.isdigit()) or len(text) > 4 or not 1 <= int(text) <= 1_000:
+        raise argparse.ArgumentTypeError(f"{text!r} is not a number from 1 to 1000")
     return int(text)
 
 

@@ -107,7 +107,14 @@ def add_commands(commands: Commands[Parser]) -> None:
         return parser
 
     one("identify", _identify, "seating check and ID bytes", "identify 27e512 --rig virtual")
-    reading = one("read", _read, "read a chip into a file", "read 27e512 --rig virtual --passes 2 -o saved.bin")
+    reading = one(
+        "read",
+        _read,
+        "read a chip into a file",
+        "read 27e512 --rig virtual --passes 2 -o saved.bin",
+        "Where the passes, or the margins of VCC, do not agree, FILE is not written: the bytes are listed with their\n"
+        "values at each VCC and what that means, and every reading is kept in a file that the answer names.",
+    )
     reading.add_argument(
         "-o",
         metavar="FILE",
@@ -116,7 +123,12 @@ def add_commands(commands: Commands[Parser]) -> None:
         help="the file: .hex .ihx Intel HEX; .s19 .s28 .s37 .srec .mot S-records; else raw binary",
     )
     reading.add_argument("--passes", metavar="N", type=count, default=1, help="read so often, and compare (default 1)")
-    reading.add_argument("--margins", action="store_true", help="read at the margins of VCC too, and compare")
+    reading.add_argument(
+        "--margins",
+        action="store_true",
+        help="read at the margins of VCC too, those of the definition's [verify] or the rig's lowest and highest "
+        "step within VCC.read, and compare",
+    )
     one("blank-check", _blank, "is every word in the erased state", "blank-check 27e512 --rig virtual")
     erasing = one(
         "erase",

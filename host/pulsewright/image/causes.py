@@ -30,13 +30,17 @@ _MOST_AGAINST_PERCENT = 5  # right bytes that speak against it, counted against 
 
 @dataclass(frozen=True)
 class Cause:
-    """A likely cause: `explained` of `of` differing bytes are as it would have them, `against` right ones are not."""
+    """A likely cause: `explained` of `of` differing bytes are as it would have them, `against` right ones are not.
+
+    It says nothing of `beyond` further differing bytes: what they would be lies outside the image.
+    """
 
     kind: str
     text: str
     explained: int
     of: int
     against: int = 0
+    beyond: int = 0
 
     @property
     def full(self) -> bool:
@@ -49,7 +53,8 @@ class Cause:
         against = "; 1 byte that is right speaks against it" if self.against == 1 else ""
         if self.against > 1:
             against = f"; {self.against} bytes that are right speak against it"
-        return f"{self.text} (explains {share} differing bytes{against})"
+        beyond = f" that it says anything of; {self.beyond} more differ" if self.beyond else ""
+        return f"{self.text} (explains {share} differing bytes{beyond}{against})"
 
     def facts(self) -> dict[str, object]:
         """As JSON values."""
@@ -59,6 +64,7 @@ class Cause:
             "explained": self.explained,
             "differing": self.of,
             "against": self.against,
+            "beyond": self.beyond,
         }
 
 
@@ -126,7 +132,7 @@ class _Judge:
         enough = of >= EVIDENCE and explained * 100 >= of * _LEAST_PERCENT
         if not enough or against * 100 > explained * _MOST_AGAINST_PERCENT:
             return None
-        return Cause(idea.kind, idea.text, explained, of, against)
+        return Cause(idea.kind, idea.text, explained, of, against, len(self._differing) - of)
 
     def _foretold(self, idea: Hypothesis, at: int) -> int | None:
         """What would be read at an address; None where that is not known."""

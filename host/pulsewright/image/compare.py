@@ -42,6 +42,10 @@ class Comparison:
 
     def lines(self) -> list[str]:
         """The result as lines of text, facts before guesses."""
+        return self.counted() + [cause.line() for cause in self.causes]
+
+    def counted(self) -> list[str]:
+        """The facts alone as lines of text: how many differ, of which class, the first of them."""
         if self.equal:
             return [f"{self.compared} bytes compared, all equal"]
         text = [
@@ -52,7 +56,7 @@ class Comparison:
         text += [f"{show_address(m.address, self.size)}: wanted {m.want:02X}, got {m.got:02X}" for m in self.first]
         if self.differing > len(self.first):
             text.append(f"and {self.differing - len(self.first)} more")
-        return text + [cause.line() for cause in self.causes]
+        return text
 
     def facts(self) -> dict[str, object]:
         """As JSON values."""

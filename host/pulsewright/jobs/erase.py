@@ -49,8 +49,7 @@ def save_first(ctx: JobContext, first: int, last: int) -> tuple[RunResult, dict[
     """
     result = read_agreed(ctx, "save" if ctx.options.save else "look", 2, first, last)
     facts: dict[str, object] = {"before_crc32": crc_text(result.data)}
-    whole = last - first + 1 == ctx.definition.words
-    doubts = doubts_of(ctx.definition, result.data, whole=whole).text(ctx.definition)
+    doubts = doubts_of(ctx.definition, result.data, first).text(ctx.definition)
     for doubt in doubts:
         ctx.progress.fact(doubt)
     if not ctx.options.save:

@@ -133,20 +133,34 @@ def _inside_read(definition: Definition, rig: Rig) -> list[RailStep]:
     return sorted(steps, key=lambda step: step.mv)
 
 
-def unchanging_lines(data: bytes) -> list[int]:
+_ENOUGH_WORDS = 64  # fewer words can read alike by chance
+
+
+def unchanging_lines(data: bytes, first: int = 0, words: int | None = None) -> list[int]:
     """Address bits that never change the data: a pin that is open, or an image that repeats; [] for uniform data.
 
-    Only for a whole chip, a power of two of words.
+    `data` begins at address `first` of a chip of so many `words` (None: it is the whole chip). A part of a chip tells
+    of the bits that change within it: where 32 words or more, not all the same, have their partner in it.
     """
-    size = len(data)
-    if size < 2 or size & (size - 1) or len(set(data)) == 1:
+    if len(set(data)) < 2:
         return []
-    found = []
-    for bit in range(size.bit_length() - 1):
-        half = 1 << bit
-        if all(data[at : at + half] == data[at + half : at + 2 * half] for at in range(0, size, 2 * half)):
-            found.append(bit)
-    return found
+    end = first + len(data)
+    least = 1 if words is None or len(data) == words else _ENOUGH_WORDS // 2
+    return [bit for bit in range((end - 1).bit_length()) if _never_changes(data, first, 1 << bit, least)]
+
+
+def _never_changes(data: bytes, first: int, half: int, least: int) -> bool:
+    pairs, values = 0, set[int]()
+    for block in range(first - first % (2 * half), first + len(data), 2 * half):
+        low, high = max(block, first) - first, min(block + half, first + len(data) - half) - first
+        if low >= high:
+            continue
+        part = data[low:high]
+        if part != data[low + half : high + half]:
+            return False
+        pairs += high - low
+        values |= set(part)
+    return pairs >= least and len(values) > 1
 
 
 def joined_lines(data: bytes) -> list[tuple[int, int]]:
@@ -172,9 +186,6 @@ def _act_as_one(data: bytes, low: int, high: int) -> bool:
                 data[one | a] == data[one | b] == data[one | a | b] for one in range(len(data)) if not one & (a | b)
             )
     return True
-
-
-_ENOUGH_WORDS = 64  # fewer words can read alike by chance
 
 
 def alike_data_lines(data: bytes, width: int = 8) -> list[tuple[int, int]]:

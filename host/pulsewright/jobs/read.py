@@ -2,30 +2,35 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
 
 from pulsewright.chip.model import Definition
-from pulsewright.errors import Difference
+from pulsewright.errors import Difference, FileMistake
 from pulsewright.jobs.context import JobContext, JobResult, job
 from pulsewright.jobs.identify import id_facts
 from pulsewright.jobs.maker import resolve_maker
-from pulsewright.jobs.margins import Look, as_facts, told, unsteady
+from pulsewright.jobs.margins import Look, Unsteady, as_facts, by_vcc, told, unsteady, voted, what_to_try
 from pulsewright.jobs.plan import (
     BLOCK_WORDS,
     VerifyStep,
     alike_data_lines,
     joined_lines,
+    shortfalls,
     unchanging_lines,
     vcc_of,
     verify_steps,
 )
-from pulsewright.jobs.record import crc_text
+from pulsewright.jobs.record import crc_text, save_dump
 from pulsewright.link.blocks import requests
 from pulsewright.link.results import RunResult
 from pulsewright.rig.model import RailStep
 from pulsewright.sequence.compile import compile_read
 from pulsewright.sequence.levels import choose_vcc
-from pulsewright.units import show_count
+from pulsewright.units import show_count, show_mv
+
+KEPT_READINGS = 4  # of one VCC that do not agree; the record lists the bytes
+NO_FILE = "VCC off; the file that was asked for is not written"
 
 
 def read_once(
@@ -37,16 +42,25 @@ def read_once(
     return ctx.run(sequence, requests(first, last, BLOCK_WORDS))
 
 
-def _passes(ctx: JobContext, why: str, passes: int, first: int, last: int, step: VerifyStep | None) -> list[RunResult]:
-    """A range read so often at one VCC."""
-    results = []
-    for number in range(passes):
-        title = f"{why}, pass {number + 1} of {passes}" if passes > 1 else why
+def _look(
+    ctx: JobContext, why: str, passes: int, first: int, last: int, step: VerifyStep | None
+) -> tuple[Look, RunResult]:
+    """A range read so often at one VCC, and the last result; readings that are equal are kept once."""
+    known: dict[bytes, bytes] = {}
+
+    def once(number: int) -> RunResult:
+        title = f"{why}, pass {number} of {passes}" if passes > 1 else why
         if step is None:
-            results.append(read_once(ctx, title, first, last))
-        else:
-            results.append(read_once(ctx, title, first, last, mode=step.mode, rail_step=step.rail_step))
-    return results
+            return read_once(ctx, title, first, last)
+        return read_once(ctx, title, first, last, mode=step.mode, rail_step=step.rail_step)
+
+    result = once(1)
+    readings = [known.setdefault(result.data, result.data)]
+    for number in range(2, passes + 1):
+        result = once(number)
+        readings.append(known.setdefault(result.data, result.data))
+    vcc_mv = usual_mv(ctx) if step is None else vcc_of(ctx.definition, ctx.rig, step)
+    return Look(vcc_mv, tuple(readings)), result
 
 
 def usual_mv(ctx: JobContext) -> int:
@@ -56,44 +70,80 @@ def usual_mv(ctx: JobContext) -> int:
 
 def read_agreed(ctx: JobContext, why: str, passes: int, first: int, last: int) -> RunResult:
     """A range read in so many passes that all agree; Difference lists the bytes where they do not."""
-    results = _passes(ctx, why, passes, first, last, None)
-    _all_agree(ctx, [Look(usual_mv(ctx), tuple(result.data for result in results))], first)
-    return results[-1]
+    look, result = _look(ctx, why, passes, first, last, None)
+    _all_agree(ctx, [look], first, "VCC off; the chip is as it was")
+    return result
 
 
-def _all_agree(ctx: JobContext, looks: list[Look], first: int) -> None:
-    """Difference with every byte that is not the same in every pass at every VCC."""
+def _all_agree(ctx: JobContext, looks: list[Look], first: int, did: str) -> None:
+    """Difference with every byte that is not the same in every pass at every VCC; what was read is kept."""
     found = unsteady(looks, first)
     if not found:
         return
     passes = len(looks[0].passes)
-    where = "at every VCC" if len(looks) > 1 else "in every pass"
-    what = f"{passes} passes do not agree" if len(looks) == 1 else "the chip does not read the same at every VCC"
-    if ctx.record is not None:
-        ctx.record.content.update(as_facts(found))
-    steady = all(one.kind != "unsteady" for one in found)
+    turns = any(one.kind != "unsteady" for one in found)
+    what = "the chip does not read the same at every VCC" if turns else f"{passes} passes do not agree"
+    kept, lines = _kept(ctx, looks, first, found)
     raise Difference(
         f"{what}: {show_count(len(found), 'byte')}",
-        wanted=f"the same bytes {where}",
-        facts=told(found, ctx.definition.words),
-        did="VCC off; no file was written",
-        hint="bytes that turn with VCC: read only the VCC at which they are right (--range helps to find them)"
-        if steady
-        else "clean the contacts, seat the chip again, and read again",
-        more=as_facts(found),
+        wanted=f"the same bytes {'at every VCC' if turns else 'in every pass'}",
+        facts=[*told(found, ctx.definition.words), *lines],
+        did=did,
+        hint=what_to_try(found),
+        more={**as_facts(found), "readings": kept},
     )
 
 
-def _read_margins(ctx: JobContext, data: bytes) -> list[str]:
-    """The range read again at each margin of VCC; Difference lists the bytes that change, and what that says."""
-    usual = Look(usual_mv(ctx), (data,))
-    looks, lines = [usual], []
-    for step in verify_steps(ctx.definition, ctx.rig):
-        results = _passes(ctx, f"read at {step.text}", ctx.options.passes, ctx.first, ctx.last, step)
-        looks.append(Look(vcc_of(ctx.definition, ctx.rig, step), tuple(result.data for result in results)))
-        lines.append(f"the same at {step.text}")
-    _all_agree(ctx, looks, ctx.first)
-    return lines
+def _kept(
+    ctx: JobContext, looks: list[Look], first: int, found: Sequence[Unsteady]
+) -> tuple[list[dict[str, object]], list[str]]:
+    """What was read is never lost: a file for each reading, at each VCC, and for what may be voted; facts, lines."""
+    readings: list[tuple[int, str, bytes]] = []
+    for look in by_vcc(looks):
+        distinct = list(dict.fromkeys(look.passes))
+        readings += [
+            (look.vcc_mv, f"pass {look.passes.index(data) + 1} of {len(look.passes)}", data)
+            for data in distinct[:KEPT_READINGS]
+        ]
+        vote = voted(look.passes) if len(distinct) > 1 and all(one.kind == "unsteady" for one in found) else None
+        if vote is not None and vote not in distinct[:KEPT_READINGS]:
+            readings.append((look.vcc_mv, "each byte as most passes read it", vote))
+    facts: list[dict[str, object]] = []
+    lines: list[str] = []
+    for vcc_mv, what, data in readings:
+        try:
+            path = str(save_dump(ctx.definition, data, first, f"{vcc_mv}mV"))
+        except FileMistake as mistake:
+            return facts, [*lines, f"a reading could not be kept: {mistake.what}"]
+        facts.append({"vcc_mv": vcc_mv, "what": what, "crc32": crc_text(data), "file": path})
+        lines.append(f"read at {show_mv(vcc_mv)}, {what}: kept in {path}")
+    return facts, lines
+
+
+def _margin_steps(ctx: JobContext) -> tuple[list[VerifyStep], list[str]]:
+    """The margins a read may go to, and lines on those it cannot: the definition's own, else the rig's in VCC.read.
+
+    Where the definition's own are all at the usual VCC, which tells no more than one pass more, the rig's as well. A
+    pass that raises a level is no read.
+    """
+    definition, rig, usual = ctx.definition, ctx.rig, usual_mv(ctx)
+    lines = [f"not read: {reason}" for reason in shortfalls(definition, rig)]
+    steps: list[VerifyStep] = []
+    for step in (*verify_steps(definition, rig), *verify_steps(replace(definition, verify=()), rig)):
+        if step.rail_step is not None and steps:
+            break
+        sequence = compile_read(definition, rig, ctx.first, ctx.last, mode=step.mode, rail_step=step.rail_step)
+        if sequence.permit.raised:
+            lines.append(f"not read: {step.text}, which raises a level")
+        elif vcc_of(definition, rig, step) != usual:
+            steps.append(step)
+    if not steps:
+        window = definition.supplies["VCC.read"]
+        lines.append(
+            f"no margin was read: of {rig.name} no VCC step besides {show_mv(usual)} lies with its error within "
+            f"VCC.read, {show_mv(window.min_mv)} to {show_mv(window.max_mv)}"
+        )
+    return steps, lines
 
 
 @dataclass(frozen=True)
@@ -126,38 +176,40 @@ class Doubts:
         }
 
 
-def doubts_of(definition: Definition, data: bytes, *, whole: bool) -> Doubts:
-    """The doubts about contacts that data gives; of address lines only the whole chip tells."""
-    still = tuple(unchanging_lines(data)) if whole else ()
+def doubts_of(definition: Definition, data: bytes, first: int = 0) -> Doubts:
+    """The doubts about contacts that data from `first` on gives; of joined address lines only the whole chip tells."""
+    whole = len(data) == definition.words
     joined = tuple(joined_lines(data)) if whole else ()
+    still = tuple(unchanging_lines(data, first, definition.words))
     return Doubts(still, joined, tuple(alike_data_lines(data, definition.width)))
 
 
 def _work(ctx: JobContext) -> JobResult:
     maker = resolve_maker(ctx) if ctx.options.margins else ()  # a maker's own margins
-    definition = ctx.definition
-    result = read_agreed(ctx, "read", ctx.options.passes, ctx.first, ctx.last)
+    definition, passes = ctx.definition, ctx.options.passes
+    steps, margins = _margin_steps(ctx) if ctx.options.margins else ([], [])
+    usual, result = _look(ctx, "read", passes, ctx.first, ctx.last, None)
     data = result.data
-    margins = _read_margins(ctx, data) if ctx.options.margins else []
-    step = definition.supplies["VCC.read"].typ_mv
+    looks = [usual, *(_look(ctx, f"read at {step.text}", passes, ctx.first, ctx.last, step)[0] for step in steps)]
+    _all_agree(ctx, looks, ctx.first, NO_FILE)
+    margins = [*(f"the same at {step.text}" for step in steps), *margins]
     lines = [
-        f"{len(data)} words read, {ctx.span()}, {ctx.options.passes} "
-        f"{'passes, all agree' if ctx.options.passes > 1 else 'pass'}; CRC-32 {crc_text(data)}"
+        f"{len(data)} words read, {ctx.span()}, {passes} "
+        f"{'passes, all agree' if passes > 1 else 'pass'}; CRC-32 {crc_text(data)}"
     ]
-    lines += margins
     blank = data.count(definition.blank)
-    lines.append(f"{blank} of them are {ctx.hex(definition.blank)}, the erased state")
-    doubts = doubts_of(definition, data, whole=ctx.words == definition.words)
-    lines += doubts.text(definition)
+    doubts = doubts_of(definition, data, ctx.first)
+    lines += [f"{blank} of them are {ctx.hex(definition.blank)}, the erased state", *margins, *doubts.text(definition)]
     facts: dict[str, object] = {
         **id_facts(definition, result),
         "words": len(data),
-        "passes": ctx.options.passes,
+        "passes": passes,
         "crc32": crc_text(data),
         "blank_words": blank,
         **doubts.facts(),
-        "vcc_mv": step,
+        "vcc_mv": usual.vcc_mv,
         "margins": margins,
+        "margins_vcc_mv": [look.vcc_mv for look in looks[1:]],
     }
     return JobResult((*lines, *maker), facts, data)
 

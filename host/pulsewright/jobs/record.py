@@ -91,14 +91,14 @@ def safe_name(name: str) -> str:
     return "".join(letter if letter.isalnum() or letter in "-_" else "_" for letter in name) or "chip"
 
 
-def save_dump(definition: Definition, data: bytes, first: int) -> Path:
-    """Keep what a chip held, under its name, the time and its CRC; FileMistake if that fails.
+def save_dump(definition: Definition, data: bytes, first: int, note: str = "") -> Path:
+    """Keep what a chip held, under its name, the time, its CRC and a note; FileMistake if that fails.
 
     Raw for a whole chip; what begins above address 0 as Intel HEX, so that it lands where it was when it is burnt back.
     """
     folder = made(data_folder("saved"))
     stamp = datetime.now(UTC).strftime("%Y%m%dT%H%M%SZ")
-    part = f"-from-{first:X}.hex" if first else ".bin"
+    part = (f"-{note}" if note else "") + (f"-from-{first:X}.hex" if first else ".bin")
     path = folder / f"{safe_name(definition.name)}-{stamp}-{crc_text(data)}{part}"
     save(path, data, first=first)
     return path
