@@ -19,6 +19,18 @@ def test_a_fresh_virtual_chip_is_the_makers(maker: str, bench: Bench) -> None:
     assert answer["maker"].lower() == maker.lower()
 
 
+def test_a_burn_goes_by_the_makers_own_row(bench: Bench) -> None:
+    """A fresh Atmel chip is seated and burnt as Atmel says, and another maker's chip is refused by its ID."""
+    zeros = bench.folder / "zeros.bin"
+    zeros.write_bytes(bytes(40))
+    words = ("burn", "27c256", str(zeros), "--range", "0..39")
+    answer = bench.call(*words, "--rig", "virtual", "--maker", "ATMEL")
+    assert (answer["exit"], answer["id"], answer["burnt_words"]) == (0, "1E 8C", 40)
+    bench.new("27c256", options=("--maker", "ST"))
+    answer = bench.job(*words, "--maker", "atmel")
+    assert (answer["exit"], answer["error"]) == (3, "IdentityRefused")
+
+
 def test_sequences_that_differ_by_maker_want_one(bench: Bench) -> None:
     """`sequence 27c256 burn` without a maker is told to name one; with it every sequence is accepted by the proof."""
     answer = bench.call("sequence", "27c256", "burn")
