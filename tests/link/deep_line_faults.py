@@ -8,6 +8,7 @@ Prints how many jobs each sweep ran and how they ended, and everything that is w
 from __future__ import annotations
 
 import argparse
+import functools
 import os
 import sys
 import tempfile
@@ -19,7 +20,7 @@ from tests.link import line_cases
 from tests.link.line_cases import Case, Tally, sweep
 from tests.link.line_hosts import faults_after_death, stretches_at
 from tests.link.small_blocks import small_blocks
-from tests.link.whole_job import OTHER, QUICK, SLOW, Work
+from tests.link.whole_job import OTHER, QUICK, SLOW, TWICE, TWICE_ONE, Work
 
 SWEEPS: dict[str, tuple[Work, Callable[[], Iterator[Case]]]] = {
     "bytes": (QUICK, lambda: line_cases.each_harm_of_each_byte(QUICK)),
@@ -40,6 +41,15 @@ SWEEPS: dict[str, tuple[Work, Callable[[], Iterator[Case]]]] = {
     "many harms": (QUICK, lambda: line_cases.many_harms(QUICK, range(1_000), 80)),
     "many harms, slow pulses": (SLOW, lambda: line_cases.many_harms(SLOW, range(500), 80)),
 }
+for _title, _work in (("two passes", TWICE), ("two passes of a block", TWICE_ONE)):
+    SWEEPS |= {
+        f"bytes, {_title}": (_work, functools.partial(line_cases.each_harm_of_each_byte, _work)),
+        f"order, {_title}": (_work, functools.partial(line_cases.bad_order, _work)),
+        f"bursts, {_title}": (_work, functools.partial(line_cases.bursts, _work)),
+        f"away, {_title}": (_work, functools.partial(line_cases.away, _work)),
+        f"resets, {_title}": (_work, functools.partial(line_cases.reset_at_each_frame, _work)),
+        f"many harms, {_title}": (_work, functools.partial(line_cases.many_harms, _work, range(500), 80)),
+    }
 _HOSTS = "hosts that die"
 
 

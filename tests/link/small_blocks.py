@@ -9,6 +9,7 @@ from typing import Any
 
 import pytest
 
+from pulsewright.chip.load import load
 from pulsewright.jobs import burn as burn_module
 from pulsewright.jobs.plan import BLOCK_WORDS, change, write_blocks
 from pulsewright.sequence.compile import compile_burn, compile_read
@@ -43,6 +44,7 @@ def small_blocks() -> Iterator[None]:
         patch.setattr(f"{jobs}.read.BLOCK_WORDS", BLOCK_WORDS)  # `Table.run` sets its own; undone in the end
         patch.setattr(f"{jobs}.writing.write_blocks", write_blocks)
         patch.setattr(f"{jobs}.context._kept", lambda *told: "kept")  # records are no matter of the line
+        patch.setattr(f"{jobs}.maker.load", _remembered(load))
         patch.setattr(f"{jobs}.context.prove", _by_value(prove))
         patch.setattr(f"{jobs}.read.compile_read", _remembered(compile_read))
         patch.setattr(f"{jobs}.writing.compile_burn", _remembered(compile_burn))

@@ -33,7 +33,7 @@ from tests.link.line_cases import (
 from tests.link.line_hosts import faults_after_death, stretches_at
 from tests.link.line_map import bytes_of, stretches_of
 from tests.link.small_blocks import small_blocks
-from tests.link.whole_job import OTHER, QUICK, SLOW, Table, Work, pulses_us
+from tests.link.whole_job import OTHER, QUICK, SLOW, TWICE, TWICE_ONE, Table, Work, pulses_us
 
 
 @pytest.fixture(autouse=True, scope="module")
@@ -115,6 +115,19 @@ def test_frames_lost_in_a_row_are_mended_or_end_by_the_dead_man() -> None:
     tally = sweep(QUICK, islice(bursts(QUICK), 0, None, 3))
     assert tally.wrong == []
     assert tally.endings["done"] > 60
+
+
+def test_data_taken_twice_is_burnt_as_often_as_without_harm() -> None:
+    """A part whose method takes the data in two passes: a byte harmed in each part of a job, frames lost in a row, and
+    harm upon harm, also where a pass is one block and nothing behind it tells that it is missing.
+    """
+    mended = sweep(TWICE_ONE, islice(one_harm_a_part(TWICE_ONE), 0, None, 23))
+    assert mended.wrong == []
+    assert set(mended.endings) == {"done"}
+    lost = sweep(TWICE, islice(bursts(TWICE), 0, None, 9))
+    assert lost.wrong == []
+    many = sweep(TWICE_ONE, many_harms(TWICE_ONE, range(8), 80))
+    assert many.wrong == []
 
 
 @pytest.mark.parametrize("early_us", [0, 3_000_000])

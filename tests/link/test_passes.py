@@ -59,6 +59,16 @@ def test_a_lost_end_of_data_is_sent_again() -> None:
     assert sent(again) == [(2, 0, 0), (3, 0, 2), (4, 4, 2)]
 
 
+def test_what_is_overdue_behind_an_end_of_data_is_sent_again_with_it() -> None:
+    """An end has no answer: where none comes, the block behind it may be lost, with nothing after it."""
+    window = Window(BLOCKS[:1], TWICE, 9, 2)
+    window.due()
+    window.beat()
+    window.replied(done(0))
+    assert sent(window.due()) == [(1, 0, 0), (2, 0, 2)]
+    assert [sent(window.beat()) for _ in range(3)] == [[], [], [(1, 0, 0), (2, 0, 2)]]
+
+
 def test_no_data_is_as_many_ends() -> None:
     """Without blocks each pass is its end alone."""
     window = Window([], TWICE, 9, 2)

@@ -10,12 +10,12 @@ from __future__ import annotations
 import functools
 from collections import Counter
 from collections.abc import Callable, Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
 from pulsewright.chip.load import load
-from pulsewright.errors import LinkFault, PulsewrightError, RigFault, RigRestarted, Tripped
+from pulsewright.errors import PulsewrightError, RigFault
 from pulsewright.image.memory import fit, image_of
 from pulsewright.jobs import plan, read, writing
 from pulsewright.jobs.burn import burn
@@ -26,7 +26,7 @@ from pulsewright.link.session import Session
 from pulsewright.link.transport import Transport
 from pulsewright.rig.file import load_rig
 from pulsewright.sequence.types import Sequence
-from pulsewright.units import TICKS_PER_MS, TICKS_PER_S, TICKS_PER_US
+from pulsewright.units import TICKS_PER_US
 from pulsewright.virtual.bench import Bench
 from pulsewright.virtual.board import RAISED_POSITIONS
 from pulsewright.virtual.rig import VirtualRig
@@ -52,6 +52,7 @@ class Work:
     image: bytes
     before: bytes
     faults: tuple[str, ...] = ()
+    maker: str = ""
     vouch: str = ""
     block_words: int = 2
     reset_tail_us: int = 0  # an enable that is high by its pull: a reset may leave a pulse so short on another word
@@ -69,7 +70,7 @@ class Work:
     def bench(self) -> Bench:
         """A bench with the chip as it is before the job."""
         model = None if self.shipped else _MODELS / f"m{self.part}.py"
-        bench = Bench(self.part, faults=self.faults, model=model)
+        bench = Bench(self.part, faults=self.faults, model=model, maker=self.maker)
         bench.jumper = bool(self.vouch)
         bench.chip.cells[self.first : self.last + 1] = self.before
         bench._take_faults()
@@ -90,6 +91,12 @@ OTHER = Work(QUICK.part, QUICK.first, bytes(word ^ 0x2D for word in QUICK.image)
 SLOW = Work(
     "2716", 0x1F8, bytes(range(0x30, 0x3E)), b"\xff" * 14, vouch="M2716-1F1 chime 3", block_words=8, reset_tail_us=100
 )
+# Ten words in two passes over the data, the first of them blind: an end of data between blocks.
+TWICE = Work(
+    "27c256", 0x05E0, bytes.fromhex("00 13 FE 7F 55 A0 0B 3C 99 01"), b"\xff" * 10, ("slow=40,3",), maker="atmel"
+)
+# The same with one block a pass, as a job of up to 256 words has it.
+TWICE_ONE = replace(TWICE, block_words=16)
 
 
 class Hang(AssertionError):
@@ -302,10 +309,6 @@ def pulses_us(work: Work) -> list[tuple[int, int]]:
 
 # ---- the verdict ----------------------------------------------------------------------------------------------------
 
-LOST = (LinkFault,)
-RESET = (RigRestarted,)
-CUT = (LinkFault, Tripped)
-
 
 def faults_of(
     work: Work, harming: Harming, wanted: tuple[type[RigFault], ...] | None, table: Table | None = None
@@ -390,6 +393,3 @@ def faults_of_second(table: Table, cells: bytes, *, at_once: bool = False) -> li
     elif table.bench.report()["violation_count"] > before:
         found.append(f"the judge saw {table.seen()}")
     return [f"the second run: {text}" for text in found]
-
-
-__all__ = ["CUT", "LOST", "QUICK", "RESET", "SLOW", "TICKS_PER_MS", "TICKS_PER_S", "Ended", "Hang", "Table", "Work"]

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections import deque
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
+from itertools import islice
 
 from pulsewright.errors import RigFault
 from pulsewright.link.results import Block, BlockDone
@@ -178,7 +179,8 @@ class Window:
     def beat(self) -> list[Message]:
         """At each heartbeat: the oldest block again when two passed without an answer, then at the 4th, 8th, 16th ...
 
-        The rig may just be slow: then it has the block and drops the copy.
+        The rig may just be slow: then it has the block and drops the copy. An end of data before it goes with it: it
+        has no answer of its own, so nothing tells whether it or the block behind it was lost.
         """
         if self._answered_ever != self._answered_before or not self._sent:
             self._answered_before = self._answered_ever
@@ -189,4 +191,5 @@ class Window:
         if turn == 1 or (turn & (turn - 1) and turn % _LONGEST_BACK_OFF):
             return []
         self._round = None
-        return [self._sent[0].frame]
+        blocks = [at for at, sent in enumerate(self._sent) if sent.block.words]
+        return [sent.frame for sent in islice(self._sent, blocks[0] + 1 if blocks else None)]
