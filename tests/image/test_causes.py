@@ -125,6 +125,33 @@ def test_a_cause_is_told_when_only_part_is_compared() -> None:
     assert texts(WANT, read_from(lambda at: at & ~0x10), mask) == (f"A4 reads as if always low: {OPEN_A}",)
 
 
+def test_bytes_that_the_image_does_not_give_foretell_nothing() -> None:
+    """A line that reaches into them is judged by the others, and how many it says nothing of is told."""
+    want, mask = WANT[:600] + b"\xff" * 424, b"\x01" * 600 + bytes(424)
+    (cause,) = compare(want, read_from(lambda at: at | 0x200), mask).causes
+    assert cause.text == f"A9 reads as if always high: {OPEN_A}"
+    assert (cause.full, cause.of <= 88, cause.beyond > 400) == (True, True, True)
+
+
+def test_causes_that_explain_as_much_are_told_both() -> None:
+    """55 and AA in turn, read the other way round: inverted, or exchanged in pairs; nothing tells which."""
+    kinds = [cause.kind for cause in compare(b"\x55\xaa" * 64, b"\xaa\x55" * 64).causes]
+    assert {"data inverted", "bytes swapped"} <= set(kinds)
+
+
+@pytest.mark.parametrize("share", [2, 3, 5])
+def test_what_explains_too_little_is_not_told(share: int) -> None:
+    """Every third byte or so through a stuck line: the same share of those that differ is otherwise wrong."""
+    got = bytes(v | 8 if at % share else v ^ 0x42 for at, v in enumerate(WANT))
+    assert texts(WANT, got) == ()
+
+
+def test_what_right_bytes_speak_against_is_not_told() -> None:
+    """A stuck line explains every byte that differs, in one part of the chip; the rest of it is right."""
+    got = bytes(v | 8 if at < 256 else v for at, v in enumerate(WANT))
+    assert texts(WANT, got) == ()
+
+
 def test_a_burn_that_was_cut_is_told_with_its_place() -> None:
     """A quarter is right and the rest blank: not a blank chip, but one that is not burnt from there on."""
     (cause,) = compare(WANT, WANT[:256] + b"\xff" * 768).causes

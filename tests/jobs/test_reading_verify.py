@@ -10,14 +10,15 @@ from typing import Any
 import pytest
 
 from pulsewright.chip.load import load
-from pulsewright.errors import ChipFault, Difference, Interrupted
+from pulsewright.errors import ChipFault, Difference, Interrupted, PulsewrightError
 from pulsewright.image.memory import Fitted
 from pulsewright.jobs.blank import blank
 from pulsewright.jobs.burn import burn
 from pulsewright.jobs.plan import unchanging_lines
 from pulsewright.jobs.verify import verify, with_pins
-from pulsewright.link.results import RunResult
+from pulsewright.link.results import RunResult, Trouble
 from pulsewright.sequence.types import Sequence
+from pulsewright.wire.tables import Fault, Outcome
 from tests.jobs.fake import FakeSession, context
 
 PART = load("28c256")  # its margins on the reference rig: 5.0 V and 5.25 V
@@ -81,8 +82,22 @@ def test_a_word_that_is_wrong_at_one_vcc_only_is_told_by_physics() -> None:
     assert any(fact == "at VCC 5.0 V (±0.034 V): all 32768 words equal" for fact in error.facts)
 
 
+def test_the_image_says_what_a_word_that_turns_should_be() -> None:
+    """0 at the first VCC and 1 at the higher one, in the place of a 1: under-erased or slow, and no fading 0."""
+    session = holding(GOOD)
+    at = GOOD.index(0xFF)
+
+    def high(sequence: Sequence, turn: int) -> RunResult | None:
+        session.cells[at] = 0xFE if turn == 1 else 0xFF
+        return None
+
+    session.before = high
+    _, more = failed(session, image(GOOD))
+    assert [(one["address"], one["kind"]) for one in more["unsteady"]] == [(at, "under-erased")]
+
+
 def test_words_that_the_image_does_not_give_are_no_mismatch() -> None:
-    """A byte outside the image that turns with VCC is not told by a verify of it."""
+    """A byte outside the image that turns with VCC is not told by a verify of it, be the rest right or wrong."""
     session = holding(GOOD)
 
     def high(sequence: Sequence, turn: int) -> RunResult | None:
@@ -91,6 +106,9 @@ def test_words_that_the_image_does_not_give_are_no_mismatch() -> None:
 
     session.before = high
     assert verify(context(session, definition=PART), image(GOOD, used=0x200)).lines[0].startswith("512 words verified")
+    session.cells[0] ^= 1
+    _, more = failed(session, image(GOOD, used=0x200))
+    assert (more["mismatch"]["differing"], more["unsteady_bytes"]) == (1, 0)
 
 
 @pytest.mark.parametrize(
@@ -184,20 +202,23 @@ def test_a_word_that_reads_blank_the_second_time_is_noise() -> None:
     assert "contacts" in found.value.hint
 
 
-def test_not_blank_stands_when_the_read_for_it_fails() -> None:
-    """A read that fails leaves exit 1 and says that the number is unknown; an interrupt is one."""
+@pytest.mark.parametrize(
+    ("outcome", "fault", "error"),
+    [(Outcome.TRIPPED, Fault.VCC_OUTSIDE, Difference), (Outcome.ABORTED, Fault.ABORTED, Interrupted)],
+)
+def test_not_blank_stands_when_the_read_for_it_fails(
+    outcome: Outcome, fault: Fault, error: type[PulsewrightError]
+) -> None:
+    """A read that trips leaves exit 1 and says that the number is unknown; an interrupt is one."""
     session = FakeSession()
     session.cells[5] = 0
+    trouble = Trouble(int(fault), fault.name.lower())
 
     def fail(sequence: Sequence, turn: int) -> RunResult | None:
-        return session.failed(2, 0, 0) if turn == 2 else None  # type: ignore[arg-type]  # any fail code will do
+        return replace(session.done(), outcome=outcome, trouble=trouble) if turn == 2 else None
 
     session.before = fail
-    with pytest.raises(Difference) as found:
+    with pytest.raises(error) as found:
         blank(context(session))
-    assert any("how many are not is unknown" in fact for fact in found.value.facts)
-    session = FakeSession()
-    session.cells[5] = 0
-    stopped = replace(context(session), interrupted=lambda: len(session.kinds))
-    with pytest.raises(Interrupted):
-        blank(stopped)
+    unknown = any("how many are not is unknown" in fact for fact in found.value.facts)
+    assert unknown == (error is Difference)
